@@ -8,3 +8,5 @@ pub mod diag;
 pub mod expr;
 pub mod waiver;
 pub mod declared;
+pub mod deck;
+pub mod catalogue;
