@@ -26,7 +26,10 @@ fn class(checker: &mut Checker, entry: &Entry) -> Option<Class> {
         checker.error_with_help(
             entry.place,
             format!("class `{}` has no `kind`", entry.key),
-            format!("say what it is: {}; or mind the spelling, if it is meant to change a class of another deck", kinds()),
+            format!(
+                "say what it is: {}; or mind the spelling, if it is meant to change a class of another deck",
+                kinds()
+            ),
         );
         return None;
     };
@@ -120,7 +123,10 @@ fn pins(checker: &mut Checker, entry: &Entry, fields: &Fields, kind: Kind) -> Op
     let (needed, usual) = pins_of(kind);
     let Some(node) = fields.get("pins") else {
         if usual.is_empty() {
-            checker.error(entry.place, format!("class `{}` lists no pins: write `pins: [in, out, vss]`, in netlist order", entry.key));
+            checker.error(
+                entry.place,
+                format!("class `{}` lists no pins: write `pins: [in, out, vss]`, in netlist order", entry.key),
+            );
             return None;
         }
         return Some((usual.iter().map(|pin| pin.to_string()).collect(), None));
@@ -144,7 +150,10 @@ fn pins(checker: &mut Checker, entry: &Entry, fields: &Fields, kind: Kind) -> Op
         checker.error_with_help(
             node.span,
             format!("a class of kind {word} lacks pin {}", missing.join(" and pin ")),
-            format!("the pins of a {word} are called {}, in the order of the netlist, others have free names", needed.join(" ")),
+            format!(
+                "the pins of a {word} are called {}, in the order of the netlist, others have free names",
+                needed.join(" ")
+            ),
         );
         return None;
     }
@@ -283,7 +292,8 @@ fn target(checker: &mut Checker, name: &str, place: Span, pin: usize, pins: &Pin
     }
     match pins.names.iter().position(|known| known.eq_ignore_ascii_case(name)) {
         Some(target) if target == pin => {
-            checker.error(place, format!("pin `{name}` shares its own net always: another pin or a rail is needed here"));
+            checker
+                .error(place, format!("pin `{name}` shares its own net always: another pin or a rail is needed here"));
             None
         }
         Some(target) => Some(TieTarget::Pin(target)),

@@ -160,8 +160,9 @@ impl Loader<'_> {
                 let file = self.sources.add(name, String::from_utf8_lossy(error.as_bytes()));
                 let place = Span::new(file, at as u32, at as u32);
                 self.complaints.push(
-                    Diagnostic::error("deck", place, format!("byte {byte:#04x} here is no UTF-8 text"))
-                        .with_help("save the deck as UTF-8 (without that letter, if the file is meant to be plain ASCII)"),
+                    Diagnostic::error("deck", place, format!("byte {byte:#04x} here is no UTF-8 text")).with_help(
+                        "save the deck as UTF-8 (without that letter, if the file is meant to be plain ASCII)",
+                    ),
                 );
                 None
             }
@@ -220,8 +221,9 @@ impl Loader<'_> {
     fn circle(&mut self, name: &str, asked: Option<Span>) {
         let Some(place) = asked else { return };
         let from = self.chain.iter().position(|(open, _)| open == name).unwrap_or(0);
-        let mut error = Diagnostic::error("deck", place, format!("these decks use one another in a circle, back to `{name}`"))
-            .with_help("a deck may use another only one way: move what both need into a third one");
+        let mut error =
+            Diagnostic::error("deck", place, format!("these decks use one another in a circle, back to `{name}`"))
+                .with_help("a deck may use another only one way: move what both need into a third one");
         for (open, place) in &self.chain[from + 1..] {
             if let Some(place) = place {
                 error = error.with_place(*place, format!("`{open}` is used here"));

@@ -82,12 +82,14 @@ fn check(checker: &mut Checker, loaded: &Loaded, vocabularies: Vocabularies) -> 
     let rails = fields.get("rails").map(|node| rail::rails(checker, node)).unwrap_or_default();
     let modes = fields.get("modes").map(|node| operation::modes(checker, node)).unwrap_or_default();
     ring::complain_of_rings(&rails, &modes, checker.complaints);
-    let transitions = fields.get("transitions").map(|node| operation::transitions(checker, node, &modes)).unwrap_or_default();
+    let transitions =
+        fields.get("transitions").map(|node| operation::transitions(checker, node, &modes)).unwrap_or_default();
     let (into, through) = fields.get("currents").map(|node| operation::currents(checker, node)).unwrap_or_default();
     let rules = fields.get("rules").map(|node| rule::rules(checker, node, &classes, vocabularies)).unwrap_or_default();
     let ids = rule_names(&fields);
     let waivers = fields.get("waivers").map(|node| accepted::waivers(checker, node, &ids)).unwrap_or_default();
-    let (include_roots, include_skips) = fields.get("includes").map(|node| includes(checker, node, loaded)).unwrap_or_default();
+    let (include_roots, include_skips) =
+        fields.get("includes").map(|node| includes(checker, node, loaded)).unwrap_or_default();
     Deck {
         netlists: fields.get("netlists").map(|node| paths(checker, node, loaded)).unwrap_or_default(),
         top: fields.get("top").and_then(|node| Some((checker.text(node)?.to_string(), node.span))),

@@ -112,18 +112,39 @@ fn options() -> Options {
     }
 }
 
+/// What the YAML library says, by a piece of its words, and what a designer should read.
+const SAID: [(&str, &str); 14] = [
+    ("tabs disallowed", "a tab stands in the indentation, where YAML wants blanks"),
+    ("unclosed quote", "a quote is opened and never closed"),
+    ("mapping values are not allowed", "a second `: ` in one value: it needs quotes, or a line of its own"),
+    ("expected ',' or '}'", "a `{` before this place is not closed, or a comma is missing"),
+    ("expected ',' or ']'", "a `[` before this place is not closed, or a comma is missing"),
+    ("implicit flow mapping", "a value is missing between two commas, or a bracket before this place is not closed"),
+    ("unexpected character", "a value cannot begin with this sign: put it in quotes"),
+    ("unknown anchor", "no `&` before this place has the name that `*` asks for"),
+    ("multiple YAML documents", "a second document begins with `---`, and a deck is one document"),
+    ("alias replay", "aliases repeat one another too often to be read"),
+    ("recursive reference", "an alias stands inside what it repeats"),
+    ("recursion limit", "maps and lists stand too deep in one another"),
+    ("budget", "the deck is too large, or maps and lists stand too deep in one another"),
+    ("expected '-' indicator", "a list's lines begin with `-`, and this one does not: mind the indentation"),
+];
+
 fn unsound(sources: &SourceMap, file: FileId, error: &serde_saphyr::Error) -> Diagnostic {
     let place = error.location().map_or(0, |location| offset(sources.text(file), location));
-    let words = error.to_string();
-    // The library opens its message with a line and column of its own; ours has a place already.
-    let words = words.rsplit_once(" column ").map_or(words.as_str(), |(_, rest)| rest.split_once(": ").map_or(rest, |(_, rest)| rest));
-    let words = words.lines().next().unwrap_or_default();
-    Diagnostic::error("deck", Span::new(file, place, place), format!("this is not sound YAML: {words}"))
-        .with_help("check the indentation, the quotes and the brackets before this place; a value that holds `: `, ` #` or begins with one of `*&!|>%@{[` needs quotes")
+    let place = Span::new(file, place, place);
+    let said = error.to_string();
+    if let Some((_, words)) = SAID.iter().find(|(piece, _)| said.contains(piece)) {
+        return Diagnostic::error("deck", place, format!("this is not sound YAML: {words}"));
+    }
+    let words = said.rsplit_once(" at line ").map_or(said.as_str(), |(words, _)| words);
+    Diagnostic::error("deck", place, format!("this is not sound YAML: {words}"))
+        .with_help("look at the indentation, the quotes and the brackets before this place")
 }
 
 fn offset(text: &str, location: Location) -> u32 {
-    let line_start: usize = text.split_inclusive('\n').take(location.line().saturating_sub(1) as usize).map(str::len).sum();
+    let line_start: usize =
+        text.split_inclusive('\n').take(location.line().saturating_sub(1) as usize).map(str::len).sum();
     let line = &text[line_start..];
     let inside = line.char_indices().nth(location.column().saturating_sub(1) as usize).map_or(line.len(), |(at, _)| at);
     (line_start + inside) as u32

@@ -9,11 +9,8 @@ use crate::declared::{DeclaredCurrent, Mode, Transition};
 /// The modes of a map, in its order.
 pub(crate) fn modes(checker: &mut Checker, node: &Node) -> Vec<Mode> {
     let entries = checker.map(node, "a list of modes");
-    let mode = |entry: &Entry| Mode {
-        name: entry.key.clone(),
-        rails: rails(checker, &entry.value),
-        place: entry.place,
-    };
+    let mode =
+        |entry: &Entry| Mode { name: entry.key.clone(), rails: rails(checker, &entry.value), place: entry.place };
     entries.iter().map(mode).collect()
 }
 
@@ -31,7 +28,8 @@ fn transition(checker: &mut Checker, node: &Node, modes: &[Mode]) -> Option<Tran
     if !matches!(node.shape, Shape::Map(_)) {
         return None;
     }
-    let missing: Vec<&str> = TRANSITION.keys.iter().map(|(key, _)| *key).filter(|key| fields.get(key).is_none()).collect();
+    let missing: Vec<&str> =
+        TRANSITION.keys.iter().map(|(key, _)| *key).filter(|key| fields.get(key).is_none()).collect();
     if !missing.is_empty() {
         checker.error(node.span, format!("this transition lacks {}", missing.join(" and ")));
     }
@@ -41,7 +39,10 @@ fn transition(checker: &mut Checker, node: &Node, modes: &[Mode]) -> Option<Tran
     let rate = fields.get("rate").and_then(|node| checker.quantity(node, RATE));
     let (from, to, takes, rate) = (from?, to?, takes?, rate?);
     if from == to {
-        checker.error(node.span, format!("a transition leads from one mode to another, this one stays in {}", modes[from].name));
+        checker.error(
+            node.span,
+            format!("a transition leads from one mode to another, this one stays in {}", modes[from].name),
+        );
         return None;
     }
     Some(Transition { from, to, takes, rate, place: node.span })

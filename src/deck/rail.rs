@@ -31,7 +31,11 @@ fn rail(checker: &mut Checker, entry: &Entry) -> Option<Rail> {
         }
         Some(Dots::Glued(dots)) => {
             let place = checker.part(&entry.value, dots..dots + 2);
-            checker.error_with_help(place, "`..` needs spaces around it where an end is a net", "write `SW .. SW + 5V`");
+            checker.error_with_help(
+                place,
+                "`..` needs spaces around it where an end is a net",
+                "write `SW .. SW + 5V`",
+            );
             return None;
         }
         None => {
@@ -180,10 +184,14 @@ fn net_name(text: &str) -> Result<&str, Option<String>> {
         return Err(None);
     }
     if text.contains(char::is_whitespace) {
-        return Err(Some(format!("an end is a voltage, a net, or a net give or take a voltage: `VIN + 1V`; a net with a blank in its name is written net(\"{text}\")")));
+        return Err(Some(format!(
+            "an end is a voltage, a net, or a net give or take a voltage: `VIN + 1V`; a net with a blank in its name is written net(\"{text}\")"
+        )));
     }
     if text.contains(['*', '?']) {
-        return Err(Some(format!("an end names one net, so globs have no place here; a net called so is written net(\"{text}\")")));
+        return Err(Some(format!(
+            "an end names one net, so globs have no place here; a net called so is written net(\"{text}\")"
+        )));
     }
     if text.ends_with(['+', '-']) {
         return Err(Some(format!("a net whose name ends in + or - is written net(\"{text}\")")));
@@ -194,7 +202,9 @@ fn net_name(text: &str) -> Result<&str, Option<String>> {
         let (net, sign, amount) = (&text[..at], &text[at..=at], &text[at + 1..]);
         return Err(Some(format!("write spaces, `{net} {sign} {amount}`; or net(\"{text}\") if a net is called so")));
     }
-    if text.starts_with(|letter: char| letter.is_ascii_digit() || letter == '+' || letter == '-') && looks_like_number(text) {
+    if text.starts_with(|letter: char| letter.is_ascii_digit() || letter == '+' || letter == '-')
+        && looks_like_number(text)
+    {
         return Err(None);
     }
     Ok(text)
@@ -203,13 +213,16 @@ fn net_name(text: &str) -> Result<&str, Option<String>> {
 /// Whether a text is so close to a number with a unit that it is a slip rather than a net's name: `5.5v`, `-3 V`, `1,5V`.
 fn looks_like_number(text: &str) -> bool {
     let unit = text.trim_start_matches(|letter: char| letter.is_ascii_digit() || matches!(letter, '+' | '-' | '.'));
-    unit.len() < text.len() && (unit.eq_ignore_ascii_case("v") || unit.eq_ignore_ascii_case("mv") || unit.eq_ignore_ascii_case("kv"))
+    unit.len() < text.len()
+        && (unit.eq_ignore_ascii_case("v") || unit.eq_ignore_ascii_case("mv") || unit.eq_ignore_ascii_case("kv"))
 }
 
 fn upright(checker: &mut Checker, node: &Node, ends: &(End, End)) -> Option<()> {
     let upside_down = match ends {
         (End::Volts(low), End::Volts(high)) => low > high,
-        (End::Net { net: a, offset: low }, End::Net { net: b, offset: high }) => a.eq_ignore_ascii_case(b) && low > high,
+        (End::Net { net: a, offset: low }, End::Net { net: b, offset: high }) => {
+            a.eq_ignore_ascii_case(b) && low > high
+        }
         _ => false,
     };
     if !upside_down {

@@ -23,7 +23,8 @@ const SEVERITIES: [(Severity, &str); 4] = [
 pub(crate) fn rules(checker: &mut Checker, node: &Node, classes: &[Class], vocabularies: Vocabularies) -> Vec<Rule> {
     let entries = checker.map(node, "a list of rules");
     let in_force: Vec<&Entry> = entries.iter().filter(|entry| !is_cleared(&entry.value)).collect();
-    let whole: Vec<&str> = in_force.iter().filter(|entry| has_subject(&entry.value)).map(|entry| entry.key.as_str()).collect();
+    let whole: Vec<&str> =
+        in_force.iter().filter(|entry| has_subject(&entry.value)).map(|entry| entry.key.as_str()).collect();
     let mut rules: Vec<Rule> =
         in_force.iter().filter_map(|entry| rule(checker, entry, &whole, classes, vocabularies)).collect();
     rules.sort_by(|a, b| a.id.cmp(&b.id));
@@ -96,7 +97,10 @@ fn well_named(checker: &mut Checker, entry: &Entry) -> Option<()> {
     if entry.key.bytes().all(plain) && !entry.key.is_empty() {
         return Some(());
     }
-    checker.error(entry.place, format!("`{}` is no name for a rule: lower case letters, digits and hyphens make one", entry.key));
+    checker.error(
+        entry.place,
+        format!("`{}` is no name for a rule: lower case letters, digits and hyphens make one", entry.key),
+    );
     None
 }
 

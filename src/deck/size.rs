@@ -40,7 +40,10 @@ fn defaults(checker: &mut Checker, node: &Node) -> Vec<(String, f64)> {
 fn default(checker: &mut Checker, entry: &Entry) -> Option<(String, f64)> {
     let text = checker.text(&entry.value)?;
     let Some(value) = parse_spice(text) else {
-        checker.error(entry.value.span, format!("a number as in the netlist is needed here, such as 1 or 0.5u, not `{text}`"));
+        checker.error(
+            entry.value.span,
+            format!("a number as in the netlist is needed here, such as 1 or 0.5u, not `{text}`"),
+        );
         return None;
     };
     Some((entry.key.to_ascii_lowercase(), value))

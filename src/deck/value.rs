@@ -83,7 +83,13 @@ impl Checker<'_> {
     }
 
     /// Adds an error about an unknown name, and offers the nearest of those that are known.
-    pub(crate) fn unknown<'n>(&mut self, place: Span, message: String, word: &str, known: impl IntoIterator<Item = &'n str>) {
+    pub(crate) fn unknown<'n>(
+        &mut self,
+        place: Span,
+        message: String,
+        word: &str,
+        known: impl IntoIterator<Item = &'n str>,
+    ) {
         let known: Vec<&str> = known.into_iter().collect();
         let error = Diagnostic::error("deck", place, message);
         let help = match nearest(word, known.iter().copied()) {
@@ -233,7 +239,11 @@ impl Checker<'_> {
 
     /// The error for a range whose lower end is the higher one.
     pub(crate) fn upside_down(&mut self, place: Span, low: &str, high: &str) {
-        self.error_with_help(place, format!("this range is upside down: {low} is above {high}"), format!("write {high}..{low}"));
+        self.error_with_help(
+            place,
+            format!("this range is upside down: {low} is above {high}"),
+            format!("write {high}..{low}"),
+        );
     }
 
     fn end(&mut self, node: &Node, part: std::ops::Range<usize>, wanted: Wanted) -> Option<f64> {
