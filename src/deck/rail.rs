@@ -4,7 +4,7 @@ use super::node::{Entry, Node, Shape};
 use super::value::{Checker, VOLTAGE, misfit, number_in};
 use crate::declared::{End, Rail};
 use crate::names::Glob;
-use crate::quantity::parse_quantity;
+use crate::quantity::{Dim, parse_quantity};
 use std::ops::Range;
 
 /// How a net's name is written where it could be taken for something else.
@@ -125,17 +125,16 @@ fn end(checker: &mut Checker, node: &Node, part: Range<usize>, what: &str) -> Op
     if let Some(volts) = number_in(end, VOLTAGE) {
         return Some(End::Volts(volts));
     }
-    match parse_quantity(end) {
-        Ok((0.0, dim)) if dim == crate::quantity::Dim::NONE => return Some(End::Volts(0.0)),
-        Ok((_, dim)) if dim == crate::quantity::Dim::NONE => {
+    if let Ok(number) = parse_quantity(end) {
+        if number.dim == Dim::NONE && number.value == 0.0 {
+            return Some(End::Volts(0.0));
+        }
+        if number.dim == Dim::NONE {
             checker.error(place, format!("is this {end} V or a net called {end}? write {end}V, or net(\"{end}\")"));
-            return None;
+        } else {
+            checker.error_with_help(place, misfit(end, VOLTAGE), format!("a net called so is written net(\"{end}\")"));
         }
-        Ok(_) => {
-            checker.error(place, misfit(end, VOLTAGE));
-            return None;
-        }
-        Err(_) => {}
+        return None;
     }
     let (net, offset) = match signed(end) {
         Some((net, sign, amount, at)) => match number_in(amount, VOLTAGE) {
@@ -202,19 +201,17 @@ fn net_name(text: &str) -> Result<&str, Option<String>> {
         let (net, sign, amount) = (&text[..at], &text[at..=at], &text[at + 1..]);
         return Err(Some(format!("write spaces, `{net} {sign} {amount}`; or net(\"{text}\") if a net is called so")));
     }
-    if text.starts_with(|letter: char| letter.is_ascii_digit() || letter == '+' || letter == '-')
-        && looks_like_number(text)
-    {
+    if looks_like_number(text) {
         return Err(None);
     }
     Ok(text)
 }
 
-/// Whether a text is so close to a number with a unit that it is a slip rather than a net's name: `5.5v`, `-3 V`, `1,5V`.
+/// Whether a text is so close to a quantity that it is a slip rather than a net's name: `5v`, `-3Volt`, `5u`.
 fn looks_like_number(text: &str) -> bool {
-    let unit = text.trim_start_matches(|letter: char| letter.is_ascii_digit() || matches!(letter, '+' | '-' | '.'));
-    unit.len() < text.len()
-        && (unit.eq_ignore_ascii_case("v") || unit.eq_ignore_ascii_case("mv") || unit.eq_ignore_ascii_case("kv"))
+    let unsigned = text.trim_start_matches(['+', '-']);
+    let unit = unsigned.trim_start_matches(|letter: char| letter.is_ascii_digit() || letter == '.');
+    unit.len() < unsigned.len() && unit.chars().count() <= 5 && unit.chars().all(char::is_alphabetic)
 }
 
 fn upright(checker: &mut Checker, node: &Node, ends: &(End, End)) -> Option<()> {

@@ -4,7 +4,7 @@ use super::keys::SIZE;
 use super::node::{Entry, Node};
 use super::value::{Checker, LENGTH, number_in};
 use crate::declared::Size;
-use crate::quantity::parse_spice;
+use crate::quantity::spice_number;
 
 /// The `size` of a class.
 pub(crate) fn size(checker: &mut Checker, node: &Node) -> Size {
@@ -39,7 +39,9 @@ fn defaults(checker: &mut Checker, node: &Node) -> Vec<(String, f64)> {
 
 fn default(checker: &mut Checker, entry: &Entry) -> Option<(String, f64)> {
     let text = checker.text(&entry.value)?;
-    let Some(value) = parse_spice(text) else {
+    let number =
+        spice_number(text, false).filter(|number| text[number.rest..].bytes().all(|byte| byte.is_ascii_alphabetic()));
+    let Some(value) = number.map(|number| number.value).filter(|value| value.is_finite()) else {
         checker.error(
             entry.value.span,
             format!("a number as in the netlist is needed here, such as 1 or 0.5u, not `{text}`"),

@@ -225,7 +225,7 @@ fn rails_are_voltages_or_nets() {
     check(
         r#"rails:
   A: 5uA
-#    ^^^ a voltage is needed here, 5uA is a current
+#    ^^^ a voltage is needed here, 5uA is a current => a net called so is written net("5uA")
   B: 5
 #    ^ is this 5 V or a net called 5? write 5V, or net("5")
   C: 6V..5V
@@ -251,7 +251,10 @@ fn rails_are_voltages_or_nets() {
   M:
 # ^ rail `M` has no voltage: write `M: 0V..5V`
   N: 5v
-#    ^^ a voltage is needed here, such as 5.5V; `5v` is none
+#    ^^ a voltage is needed here: `v` is no unit: capitals count in a deck, so write 5V
+  P: 0V .. 3V3
+#          ^^^ a voltage is needed here, 3V3 is something in V³ => a net called so is written net("3V3")
+  Q: 0V .. 24V_IN
   O: net("x
 #    ^^^^^^ `net("x` is no voltage and no net => write net("…") around the name of the net
 "#,
@@ -537,3 +540,61 @@ fn every_page_is_whole_and_its_examples_have_sound_decks() {
         }
     }
 }
+
+proptest::proptest! {
+    /// Whatever a deck holds, reading it ends, and every complaint lies in its text.
+    #[test]
+    fn any_deck_is_harmless(parts in proptest::collection::vec(proptest::sample::select(PARTS.to_vec()), 0..40), tail in "\\PC{0,12}") {
+        let text = parts.concat() + &tail;
+        let mut sources = SourceMap::new();
+        let (_, complaints) = load(&[("deck.yaml", &text), ("process.yaml", PROCESS)], &["deck.yaml"], &mut sources);
+        for complaint in complaints {
+            let length = sources.text(complaint.span.file).len();
+            assert!(complaint.span.start <= complaint.span.end && complaint.span.end as usize <= length);
+            assert!(sources.text(complaint.span.file).get(complaint.span.range()).is_some(), "on character boundaries");
+        }
+    }
+}
+
+const PARTS: [&str; 40] = [
+    "rails:",
+    "classes:",
+    "modes:",
+    "rules:",
+    "waivers:",
+    "currents:",
+    "transitions:",
+    "use: [process.yaml]",
+    "top:",
+    "includes:",
+    "\n",
+    "\n  ",
+    "\n    ",
+    "\n- ",
+    "{",
+    "}",
+    "[",
+    "]",
+    ", ",
+    ": ",
+    "VSS",
+    "0V",
+    "5uA",
+    "a..b",
+    " .. ",
+    " + 1V",
+    "net(\"",
+    "\")",
+    "'",
+    "\"",
+    ">-\n  ",
+    "|\n  ",
+    "&x ",
+    "*x",
+    "kind: nmos",
+    "pins: [d, g, s, b]",
+    "µ",
+    "ratings: {vds: ",
+    "# c\n",
+    "for: device",
+];

@@ -51,24 +51,24 @@ pub(crate) const POWER: Wanted = Wanted { dim: Dim::WATT, words: "a power", exam
 pub(crate) const DENSITY: Wanted = Wanted { dim: Dim::DENSITY, words: "a current per width", example: "3uA/um" };
 pub(crate) const DOPING: Wanted = Wanted { dim: Dim::DOPING, words: "a doping", example: "1e16/cm3" };
 pub(crate) const SHARE: Wanted = Wanted { dim: Dim::NONE, words: "a share of time", example: "1%" };
-const ALL: [Wanted; 9] = [VOLTAGE, CURRENT, LENGTH, TIME, RATE, POWER, DENSITY, DOPING, SHARE];
 
 /// Why a text is not the quantity that its place asks for.
 pub(crate) fn misfit(text: &str, wanted: Wanted) -> String {
     let Wanted { words, example, .. } = wanted;
+    let starts_number = text.trim_start_matches(['+', '-', '.']).starts_with(|letter: char| letter.is_ascii_digit());
     match parse_quantity(text) {
-        Ok((_, dim)) if dim == Dim::NONE => format!("{words} is needed here, {text} has no unit (such as {example})"),
-        Ok((_, dim)) => match ALL.iter().find(|known| known.dim == dim) {
-            Some(known) => format!("{words} is needed here, {text} is {}", known.words),
-            None => format!("{words} is needed here, such as {example}, {text} is something else"),
-        },
-        Err(_) => format!("{words} is needed here, such as {example}; `{text}` is none"),
+        Ok(other) if other.dim == Dim::NONE => {
+            format!("{words} is needed here, {text} has no unit (such as {example})")
+        }
+        Ok(other) if other.dim != wanted.dim => format!("{words} is needed here, {text} is {}", other.dim.in_words()),
+        Err(why) if starts_number => format!("{words} is needed here: {why}"),
+        _ => format!("{words} is needed here, such as {example}; `{text}` is none"),
     }
 }
 
 /// The number that a text is in the wanted dimension, in base units.
 pub(crate) fn number_in(text: &str, wanted: Wanted) -> Option<f64> {
-    parse_quantity(text).ok().filter(|&(value, dim)| dim == wanted.dim && value.is_finite()).map(|(value, _)| value)
+    parse_quantity(text).ok().filter(|quantity| quantity.dim == wanted.dim).map(|quantity| quantity.value)
 }
 
 impl Checker<'_> {
