@@ -598,3 +598,36 @@ const PARTS: [&str; 40] = [
     "# c\n",
     "for: device",
 ];
+
+#[test]
+fn expressions_are_checked_where_they_stand() {
+    check(
+        r#"classes:
+  n5:
+    kind: nmos
+    size: {width: w *, length: "mox(l, 1)", fingers: 'nf + (', copies: "(m>1)*max(m, mult)"}
+#                   ^ a value is missing behind `*`
+#                               ^^^ there is no function `mox` here => did you mean `max`?
+#                                                          ^ a value is missing behind `(`
+rules:
+  too-wide:
+    for: device
+    where: class.kind == nmoss and class.high_voltage
+#                        ^^^^^ `nmoss` is none of the words that can stand here => did you mean `nmos`? The words are nmos, pmos, npn, diode
+    require: width <= 40uA
+#            ^^^^^^^^^^^^^ a length cannot be compared with a current
+    say: "{name} is {widht} wide"
+#                    ^^^^^ there is no name `widht` here => did you mean `width`?
+  folded:
+    for: device
+    require: >-
+      fingers > 1 and
+      (finger >= 5um)
+#      ^^^^^^ there is no name `finger` here => did you mean `fingers`?
+    say: "{name}"
+  flat: {for: device, require: width, say: "{name"}
+#                              ^^^^^ a condition is needed here, which is true or false => compare it with something, as in `width <= 2000um`
+#                                           ^ this { is not closed => write {{ for the sign itself
+"#,
+    );
+}
