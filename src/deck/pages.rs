@@ -21,11 +21,15 @@ macro_rules! pages {
 /// All pages, ordered by id. A file in `rules/` must be listed here; a test holds this list against the folder.
 pub const PAGES: &[Page] = pages! {
     "body-off-source"
+    "drain-source-swapped"
     "finger-count"
     "finger-width"
+    "gate-floats"
     "length-off"
     "missing-include"
     "no-high-voltage"
+    "on-state-overlap"
+    "over-rating"
     "pin-count"
     "pin-off-tie"
     "rail-unmatched"
