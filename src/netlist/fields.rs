@@ -75,32 +75,45 @@ impl Reader<'_> {
 
     /// The common case: words and simple pairs with one blank between them.
     fn plain(&mut self) -> Result<(), Complaint> {
+        let bytes = self.bytes;
+        let mut at = self.at;
         loop {
-            let word = self.bare();
-            if byte(self.bytes, self.at) == b'=' && !self.out.words.is_empty() {
-                self.at += 1;
-                match simple_value_end(self.bytes, self.at) {
-                    Some(end) => self.simple_pair(word, end),
-                    None => return self.pair(word),
+            let end = run_end(bytes, at);
+            let word = Word { start: at as u32, end: end as u32, quoted: false };
+            match byte(bytes, end) {
+                b'=' if !self.out.words.is_empty() => match simple_value_end(bytes, end + 1) {
+                    Some(past) => {
+                        let value = Word { start: end as u32 + 1, end: past as u32, quoted: false };
+                        self.out.params.push((word, value));
+                        self.out.end = value.end;
+                        self.last = Last::Value;
+                        at = past;
+                    }
+                    None => {
+                        self.at = end + 1;
+                        return self.pair(word);
+                    }
+                },
+                b'\\' => {
+                    self.at = at;
+                    let word = self.bare();
+                    self.push(word);
+                    self.last = Last::Bare(word);
+                    return Ok(());
                 }
-            } else {
-                self.push(word);
-                self.last = Last::Bare(word);
+                _ => {
+                    self.push(word);
+                    self.last = Last::Bare(word);
+                    at = end;
+                }
             }
-            let one_blank = byte(self.bytes, self.at) == b' ' && class(byte(self.bytes, self.at + 1)) == Class::Plain;
+            let one_blank = byte(bytes, at) == b' ' && class(byte(bytes, at + 1)) == Class::Plain;
             if !one_blank {
+                self.at = at;
                 return Ok(());
             }
-            self.at += 1;
+            at += 1;
         }
-    }
-
-    fn simple_pair(&mut self, key: Word, end: usize) {
-        let value = Word { start: self.at as u32, end: end as u32, quoted: false };
-        self.at = end;
-        self.out.params.push((key, value));
-        self.out.end = value.end;
-        self.last = Last::Value;
     }
 
     fn word(&mut self, first: u8) -> Result<(), Complaint> {
