@@ -45,7 +45,9 @@ impl<'a> Decimal<'a> {
     pub(super) fn times(&self, factor: u64, shift: i32) -> f64 {
         let exponent = self.exponent + i64::from(shift);
         match self.mantissa.checked_mul(factor) {
-            Some(mantissa) if self.whole => exact(mantissa, exponent).unwrap_or_else(|| parse_parts(mantissa, exponent)),
+            Some(mantissa) if self.whole => {
+                exact(mantissa, exponent).unwrap_or_else(|| parse_parts(mantissa, exponent))
+            }
             _ => self.parse_digits(exponent) * factor as f64,
         }
     }

@@ -92,7 +92,7 @@ fn finish(number: &Decimal<'_>, exponent: i32, text: &str) -> Result<f64, String
 }
 
 /// Where a unit glued to a number ends. A `/` belongs to it only if a unit with letters follows at once and before any
-/// blank: `3uA/um`, but `12V/2`. A `%` is a unit only if no operand can follow: `1%`, but `7%3`.
+/// blank: `3uA/um`, `1e16/cm3`, but `12V/2`, `6V/s.width`, `6/m`. A `%` is a unit only if no operand can follow: `1%`, but `7%3`.
 fn unit_length(text: &str) -> usize {
     let starts_operand = |c: char| c.is_alphanumeric() || matches!(c, '.' | '(' | '_' | '"' | '\'');
     if let Some(after) = text.strip_prefix('%') {
@@ -107,13 +107,14 @@ fn unit_length(text: &str) -> usize {
     };
     let mut length = word(text);
     loop {
-        let Some(slash) = text[length..].chars().next().filter(|&c| c == '/' || c == '·') else { return length };
-        let next = &text[length + slash.len_utf8()..];
+        let Some(joint) = text[length..].chars().next().filter(|&c| c == '/' || c == '·') else { return length };
+        let next = &text[length + joint.len_utf8()..];
         let more = word(next);
-        if more == 0 || unit(&next[..more]).is_none_or(|found| found.length < more) {
+        let is_name = next[more..].starts_with(['.', '(']) || (length == 0 && !next[..more].ends_with(is_power));
+        if more == 0 || is_name || unit(&next[..more]).is_none_or(|found| found.length < more) {
             return length;
         }
-        length += slash.len_utf8() + more;
+        length += joint.len_utf8() + more;
     }
 }
 
@@ -326,7 +327,10 @@ mod tests {
             ("1MHz<2", "1MHz"),
             ("12V/width", "12V"),
             ("1e16/cm3", "1e16/cm3"),
-            ("6/s.width", "6/s"),
+            ("6V/s.width", "6V"),
+            ("6/m", "6"),
+            ("6V/s", "6V/s"),
+            ("2m/f(x)", "2m"),
             ("2*3", "2"),
         ];
         for (text, taken) in table {
