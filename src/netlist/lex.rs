@@ -32,7 +32,6 @@ const fn classes() -> [Class; 256] {
         table[byte] = Class::Blank;
         byte += 1;
     }
-    table[127] = Class::Blank;
     table[b'\'' as usize] = Class::Special;
     table[b'"' as usize] = Class::Special;
     table[b'{' as usize] = Class::Special;
@@ -75,13 +74,7 @@ const fn marks(chunk: u64, wanted: u8) -> u64 {
 const fn word_ends(chunk: u64) -> u64 {
     let blanks = chunk.wrapping_sub(ONES * 0x21) & !chunk & HIGHS;
     let brackets = marks(chunk & (ONES * 0xfe), b'(');
-    blanks
-        | brackets
-        | marks(chunk, b',')
-        | marks(chunk, b'=')
-        | marks(chunk, b';')
-        | marks(chunk, b'\\')
-        | marks(chunk, 127)
+    blanks | brackets | marks(chunk, b',') | marks(chunk, b'=') | marks(chunk, b';') | marks(chunk, b'\\')
 }
 
 /// Marks quotes, braces and slashes.
@@ -91,6 +84,7 @@ const fn formula_marks(chunk: u64) -> u64 {
 
 /// The first byte at or after `at` that cannot stand in a word, or is a backslash. Eight bytes at a time: words are short,
 /// and where one ends cannot be foreseen.
+#[inline]
 pub(super) fn run_end(bytes: &[u8], mut at: usize) -> usize {
     while let Some(chunk) = bytes.get(at..).and_then(|rest| rest.first_chunk::<8>()) {
         let found = word_ends(u64::from_le_bytes(*chunk));
@@ -107,6 +101,7 @@ pub(super) fn run_end(bytes: &[u8], mut at: usize) -> usize {
 
 /// Where a value ends that is no more than a number or a name: at a blank, line end, comma or closing bracket. None where
 /// it is a formula, which takes more care.
+#[inline]
 pub(super) fn simple_value_end(bytes: &[u8], start: usize) -> Option<usize> {
     let mut at = start;
     while let Some(chunk) = bytes.get(at..).and_then(|rest| rest.first_chunk::<8>()) {

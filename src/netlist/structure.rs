@@ -10,7 +10,7 @@ use super::tree::{CellIx, Fields, GuardIx, Named, Tree};
 use crate::diag::Diagnostic;
 use crate::names::{Names, Sym};
 use crate::source::{FileId, SourceMap, Span};
-use std::collections::HashMap;
+use std::collections::{HashMap, HashSet};
 
 /// How a text is to be read.
 #[derive(Clone, Debug, PartialEq)]
@@ -188,6 +188,8 @@ impl<'n> Builder<'n> {
     pub fn finish(mut self, sources: &SourceMap) -> (Tree, Vec<Diagnostic>) {
         self.settle_duplicates(sources);
         self.tree.cells[0].closed = true;
+        let mut seen = HashSet::new();
+        self.tree.interface.retain(|pin| seen.insert(pin.name));
         let elements: u64 = self.tree.cells.iter().map(|cell| cell.cards.len() as u64).sum();
         self.tree.card_count += elements;
         (self.tree, self.diagnostics)
@@ -586,7 +588,7 @@ R9 a b 1
     /// As circuit description and schematic exports of open processes write them.
     #[test]
     fn comments_that_say_something() {
-        let text = "t\n**.subckt top A B<1>\n*.ipin C\n*.PININFO D:I E:B F<0>:O\n*+ G:I\n*.GLOBAL vdd!:P gnd!\n*.EQUIV n60=N60X\n*.MEGA\n.subckt s a\n*.PININFO a:I\n.ends\n**.ends\n* plain .ipin\n**** .subckt no\n";
+        let text = "t\n**.subckt top A B<1>\n*.ipin C\n*.iopin a\n*.PININFO D:I E:B F<0>:O\n*+ G:I\n*.GLOBAL vdd!:P gnd!\n*.EQUIV n60=N60X\n*.MEGA\n.subckt s a\n*.PININFO a:I\n.ends\n**.ends\n* plain .ipin\n**** .subckt no\n";
         let (tree, diagnostics, names, _) = read(text);
         assert!(diagnostics.is_empty(), "{diagnostics:#?}");
         let interface: Vec<_> = tree.interface.iter().map(|pin| names.text(pin.name)).collect();

@@ -30,7 +30,7 @@ pub struct Named {
 pub struct Operand {
     /// The text of the expression, without quotes or braces; `expr.places` count from `span.start`.
     pub span: Span,
-    /// The expression; none where it could not be read (that has been reported).
+    /// The expression; none where it could not be read (that has been reported), or is a text in double quotes.
     pub expr: Option<Expr>,
 }
 

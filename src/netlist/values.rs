@@ -94,3 +94,81 @@ pub fn number(text: &str, word: Word, mega: bool) -> Option<f64> {
     let decoration = |byte: &u8| byte.is_ascii_alphanumeric() || *byte >= 0x80;
     raw.as_bytes()[number.rest..].iter().all(decoration).then_some(number.value)
 }
+
+#[cfg(test)]
+mod tests {
+    use super::super::carets::check;
+    use super::super::fields::read_fields;
+    use super::super::tree::Fields;
+    use super::*;
+    use crate::expr::Node;
+    use proptest::prelude::*;
+
+    /// The expression of the first pair of a card, as an operand and as text.
+    fn first(text: &str) -> (Operand, &str) {
+        let mut fields = Fields::default();
+        assert_eq!(read_fields(text, 0, &mut fields), None);
+        let word = fields.params[0].1;
+        (operand(text, word, FileId(0), false).unwrap(), word.of(text))
+    }
+
+    #[test]
+    fn expressions_over_lines_keep_their_places() {
+        let text = "R1 a b r='max(x, ; why\n* no ' here\n+ y)'\n";
+        let (operand, _) = first(text);
+        let expr = operand.expr.unwrap();
+        let place = expr.nodes.iter().position(|node| *node == Node::Name("y".to_owned())).unwrap();
+        let start = operand.span.start + expr.places[place].start;
+        assert_eq!(&text[start as usize..start as usize + 1], "y");
+        assert_eq!(expr.nodes.len(), 3);
+    }
+
+    #[test]
+    fn braces_and_quotes_inside_are_brackets() {
+        for (text, nodes) in [
+            ("M1 d g s b n w={a}*2", 3),
+            ("M1 d g s b n w='2*{a+1}'", 5),
+            ("M1 d g s b n w=2*'a'", 3),
+            ("M1 d g s b n w=-(1+2)", 4),
+        ] {
+            assert_eq!(first(text).0.expr.unwrap().nodes.len(), nodes, "{text}");
+        }
+    }
+
+    #[test]
+    fn faults_point_into_the_card() {
+        let text = "M1 d g s b n w='2 + * 3'";
+        let mut fields = Fields::default();
+        assert_eq!(read_fields(text, 0, &mut fields), None);
+        let complaint = operand(text, fields.params[0].1, FileId(0), false).unwrap_err();
+        assert!(text[complaint.start as usize..].starts_with('*'), "{complaint:?}");
+        check("t\n.param a=2 b='1 + )' c=\"some text\"\n*                 ^ a value is missing\n");
+    }
+
+    /// Ngspice User's Manual, version 39, section 2.1.4, table 2.2 and its examples; `*.MEGA` as circuit descriptions have it.
+    #[test]
+    fn plain_numbers_need_no_expression() {
+        let value = |text: &str, mega| number(text, Word { start: 0, end: text.len() as u32, quoted: false }, mega);
+        assert_eq!(value("1kHz", false), Some(1e3));
+        assert_eq!(value("1MEGOHM", false), Some(1e6));
+        assert_eq!(value("1M", false), Some(1e-3));
+        assert_eq!(value("1M", true), Some(1e6));
+        assert_eq!(value("2.2\u{b5}", false), Some(2.2e-6));
+        for formula in ["2*3", "w", "1+", "(1)", ""] {
+            assert_eq!(value(formula, false), None, "{formula}");
+        }
+    }
+
+    proptest! {
+        #[test]
+        fn never_panics(text in "[ab1 +*(){}'\"\n;$µ]{0,40}") {
+            let word = Word { start: 0, end: text.len() as u32, quoted: true };
+            match expression(&text, word, false) {
+                Ok(expr) => prop_assert!(!expr.nodes.is_empty()),
+                Err(complaint) => prop_assert!(text.get(complaint.start as usize..complaint.end as usize).is_some()),
+            }
+            number(&text, word, false);
+            whole(&text, word);
+        }
+    }
+}
