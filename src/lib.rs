@@ -6,7 +6,8 @@
 //! accepted. Decks declare classes, rails and rules ([`declared`]); netlists say what is connected ([`netlist`]), read by [`load`]
 //! and elaborated by [`design`] into a hierarchy whose surroundings [`graph`] tells apart. [`reach`] works out which voltages each
 //! net can have. Rules ask all of that through [`facts`], and stand in decks ([`deck`], [`catalogue`]); [`engine`] asks them.
-//! [`pipeline`] is the whole program as one function.
+//! [`pipeline`] is the whole program as one function; [`survey`], [`tracing`], [`init`] and [`reference`] are what the other
+//! commands show, [`cli`] the command line.
 //!
 //! A module may only use modules above it in this list; `tests/layers.rs` holds the floors.
 #![warn(missing_docs)]
@@ -39,3 +40,10 @@ pub mod deck;
 pub mod engine;
 
 pub mod pipeline;
+
+pub mod init;
+pub mod reference;
+pub mod survey;
+pub mod tracing;
+
+pub mod cli;

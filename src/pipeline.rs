@@ -181,7 +181,7 @@ fn judge(world: World<'_>, mut seen: Seen, job: &Job) -> (Report, bool) {
             && (rule.severity, rule.unproven) != (Severity::Silent, Severity::Silent)
     };
     let rules: Vec<&Rule> = world.deck.rules.iter().filter(wanted).collect();
-    let mut summary = summarise(world, &seen, job);
+    let mut summary = summarise(world, &seen);
     let reading: Vec<Diagnostic> = std::mem::take(&mut seen.diagnostics);
     let is_hygiene = |diagnostic: &Diagnostic| diagnostic.code == "missing-include";
     let (hygiene, mut diagnostics): (Vec<_>, Vec<_>) = reading.into_iter().partition(is_hygiene);
@@ -204,7 +204,8 @@ fn judge(world: World<'_>, mut seen: Seen, job: &Job) -> (Report, bool) {
     (Report { diagnostics, summary }, could_not)
 }
 
-fn summarise(world: World<'_>, seen: &Seen, _job: &Job) -> Summary {
+/// Counts what a run looked at.
+pub fn summarise(world: World<'_>, seen: &Seen) -> Summary {
     let mut summary = Summary {
         files: seen.files,
         cards: seen.cards,
@@ -296,6 +297,20 @@ pub fn refused(sources: SourceMap, diagnostics: Vec<Diagnostic>) -> Outcome {
     Outcome { sources, report, could_not: true }
 }
 
+/// Reads the decks of a job alone.
+pub fn read_decks(files: &dyn Files, job: &Job) -> (Deck, Outcome) {
+    let mut sources = SourceMap::new();
+    let decks = if job.decks.is_empty() { nearest_deck(files, job) } else { job.decks.clone() };
+    let (deck, diagnostics) = deck::load_decks(&Decks(files), &decks, &mut sources, &|subject| vocabulary(subject));
+    (deck, checked(sources, diagnostics))
+}
+
+/// The outcome of a run that only checked something.
+pub fn checked(sources: SourceMap, diagnostics: Vec<Diagnostic>) -> Outcome {
+    let could_not = has_error(&diagnostics);
+    Outcome { could_not, ..refused(sources, diagnostics) }
+}
+
 /// The words of the command line that messages can point at.
 fn command_line(job: &Job) -> String {
     let words = job.top.iter().chain(&job.only).chain(&job.modes);
@@ -353,7 +368,7 @@ fn nearest_deck(files: &dyn Files, job: &Job) -> Vec<PathBuf> {
 }
 
 /// The deck loader reads through the same door as the netlist loader.
-struct Decks<'f>(&'f dyn Files);
+pub struct Decks<'f>(pub &'f dyn Files);
 
 impl DeckFiles for Decks<'_> {
     fn read(&self, path: &Path) -> std::io::Result<Vec<u8>> {

@@ -93,8 +93,11 @@ pub fn apply(diagnostics: &mut [Diagnostic], waivers: &[Waiver], today: Date) ->
     let holds = |waiver: &Waiver| waiver.until.is_none_or(|until| today <= until);
     for diagnostic in diagnostics.iter_mut() {
         let Some(finding) = &diagnostic.finding else { continue };
-        let about: Vec<(usize, &Waiver)> =
-            waivers.iter().enumerate().filter(|(_, waiver)| waiver.rule == diagnostic.code && concerns(waiver, finding)).collect();
+        let about: Vec<(usize, &Waiver)> = waivers
+            .iter()
+            .enumerate()
+            .filter(|(_, waiver)| waiver.rule == diagnostic.code && concerns(waiver, finding))
+            .collect();
         for (index, _) in &about {
             used[*index] = true;
         }
@@ -129,7 +132,8 @@ enum Cover<'w> {
 
 /// Whether a waiver says something about a finding at all.
 fn concerns(waiver: &Waiver, finding: &Finding) -> bool {
-    let pair = waiver.pair.as_ref().is_none_or(|pair| finding.pairs.iter().any(|other| other.eq_ignore_ascii_case(pair)));
+    let pair =
+        waiver.pair.as_ref().is_none_or(|pair| finding.pairs.iter().any(|other| other.eq_ignore_ascii_case(pair)));
     pair && (names_statement(waiver, finding) || finding.paths.iter().any(|path| waiver.at.matches_path(path)))
 }
 
@@ -141,15 +145,20 @@ fn names_statement(waiver: &Waiver, finding: &Finding) -> bool {
 /// How much of a finding the waivers cover: every instance and, where they narrow, every pair.
 fn cover<'w>(waivers: &[&'w Waiver], finding: &Finding) -> Cover<'w> {
     let Some(&first) = waivers.first() else { return Cover::Nothing };
-    let pairs: Vec<Option<&str>> =
-        if finding.pairs.is_empty() { vec![None] } else { finding.pairs.iter().map(|pair| Some(pair.as_str())).collect() };
+    let pairs: Vec<Option<&str>> = if finding.pairs.is_empty() {
+        vec![None]
+    } else {
+        finding.pairs.iter().map(|pair| Some(pair.as_str())).collect()
+    };
     let covers_pair = |waiver: &&&Waiver, pair: Option<&str>| {
         waiver.pair.as_ref().is_none_or(|wanted| pair.is_some_and(|pair| pair.eq_ignore_ascii_case(wanted)))
     };
-    let whole_statement = |pair| waivers.iter().any(|waiver| covers_pair(&waiver, pair) && names_statement(waiver, finding));
+    let whole_statement =
+        |pair| waivers.iter().any(|waiver| covers_pair(&waiver, pair) && names_statement(waiver, finding));
     let path_covered = |path: &String| {
         pairs.iter().all(|&pair| {
-            whole_statement(pair) || waivers.iter().any(|waiver| covers_pair(&waiver, pair) && waiver.at.matches_path(path))
+            whole_statement(pair)
+                || waivers.iter().any(|waiver| covers_pair(&waiver, pair) && waiver.at.matches_path(path))
         })
     };
     let statement = pairs.iter().all(|&pair| whole_statement(pair));
@@ -158,18 +167,31 @@ fn cover<'w>(waivers: &[&'w Waiver], finding: &Finding) -> Cover<'w> {
     if statement || waivers.iter().any(everything) || finding.paths_complete && covered == finding.paths.len() {
         return Cover::Whole(first);
     }
-    let open: Vec<&str> = pairs.iter().flatten().copied().filter(|&pair| !waivers.iter().any(|waiver| covers_pair(&waiver, Some(pair)))).collect();
-    Cover::Part(first, match open.as_slice() {
-        [] => format!("this waiver covers {covered} of the {} instances", finding.instances),
-        open => format!("this waiver does not cover {}", open.join(", ")),
-    })
+    let open: Vec<&str> = pairs
+        .iter()
+        .flatten()
+        .copied()
+        .filter(|&pair| !waivers.iter().any(|waiver| covers_pair(&waiver, Some(pair))))
+        .collect();
+    Cover::Part(
+        first,
+        match open.as_slice() {
+            [] => format!("this waiver covers {covered} of the {} instances", finding.instances),
+            open => format!("this waiver does not cover {}", open.join(", ")),
+        },
+    )
 }
 
 fn nearest_finding(waiver: &Waiver, diagnostics: &[Diagnostic]) -> Option<String> {
-    let findings = diagnostics.iter().filter(|diagnostic| diagnostic.code == waiver.rule).filter_map(|diagnostic| diagnostic.finding.as_ref());
+    let findings = diagnostics
+        .iter()
+        .filter(|diagnostic| diagnostic.code == waiver.rule)
+        .filter_map(|diagnostic| diagnostic.finding.as_ref());
     let slash = waiver.at.text().contains('/');
     let places: Vec<String> = findings
-        .flat_map(|finding| if slash { vec![format!("{}/{}", finding.cell, finding.device)] } else { finding.paths.clone() })
+        .flat_map(
+            |finding| if slash { vec![format!("{}/{}", finding.cell, finding.device)] } else { finding.paths.clone() },
+        )
         .take(5000)
         .collect();
     nearest(waiver.at.text(), places.iter().map(String::as_str)).map(str::to_owned)
@@ -206,7 +228,15 @@ mod tests {
     }
 
     fn waiver(at: &str) -> Waiver {
-        Waiver { rule: "over-rating".into(), at: Glob::new(at), pair: None, reason: "measured".into(), by: None, until: None, place: place() }
+        Waiver {
+            rule: "over-rating".into(),
+            at: Glob::new(at),
+            pair: None,
+            reason: "measured".into(),
+            by: None,
+            until: None,
+            place: place(),
+        }
     }
 
     fn run(at: &str, diagnostic: Diagnostic) -> (bool, Vec<Fault>) {
@@ -218,7 +248,13 @@ mod tests {
     #[test]
     fn days_follow_the_gregorian_calendar() {
         // 2000 was a leap year and 2100 will be none (common practice, no source).
-        for (days, text) in [(0, "1970-01-01"), (11_016, "2000-02-29"), (19_782, "2024-02-29"), (47_540, "2100-02-28"), (47_541, "2100-03-01")] {
+        for (days, text) in [
+            (0, "1970-01-01"),
+            (11_016, "2000-02-29"),
+            (19_782, "2024-02-29"),
+            (47_540, "2100-02-28"),
+            (47_541, "2100-03-01"),
+        ] {
             assert_eq!(day_number(days).to_string(), text);
         }
     }
@@ -228,7 +264,11 @@ mod tests {
         assert_eq!(run("x1.m1", finding("inv", "M1", &["X1.M1"], &[])), (true, vec![]));
         assert_eq!(run("x?.m1", finding("inv", "M1", &["X1.M1", "X2.M1"], &[])), (true, vec![]));
         assert_eq!(run("inv/m1", finding("inv", "M1", &["X1.M1", "X2.M1"], &[])), (true, vec![]));
-        assert_eq!(run("x1.m1", finding("inv", "M1", &["X1.M1", "X2.M1"], &[])), (false, vec![]), "one of two instances");
+        assert_eq!(
+            run("x1.m1", finding("inv", "M1", &["X1.M1", "X2.M1"], &[])),
+            (false, vec![]),
+            "one of two instances"
+        );
         assert_eq!(run("x3.m1", finding("inv", "M1", &["X1.M1"], &[])), (false, vec![Fault::Stale]));
     }
 
@@ -245,7 +285,9 @@ mod tests {
 
     #[test]
     fn until_is_inclusive() {
-        for (until, hidden, faults) in [(DAY, true, vec![]), (Date { day: 28, month: 2, ..DAY }, false, vec![Fault::Expired])] {
+        for (until, hidden, faults) in
+            [(DAY, true, vec![]), (Date { day: 28, month: 2, ..DAY }, false, vec![Fault::Expired])]
+        {
             let mut all = vec![finding("", "M1", &["M1"], &[])];
             let dated = Waiver { until: Some(until), ..waiver("m1") };
             let complaints = apply(&mut all, &[dated], DAY);

@@ -3,7 +3,7 @@
 use super::finding::{in_cell, word};
 use super::fold::{Folded, Folds};
 use super::verdict::{Asked, ask};
-use crate::declared::{Rule, Subject};
+use crate::declared::{Class, Rule, Subject};
 use crate::design::{InstanceIx, NetIx};
 use crate::diag::{Diagnostic, Finding, Worst};
 use crate::facts::{ClassView, Evidence, InstanceView, NetView, World};
@@ -85,7 +85,7 @@ fn of_instance(world: World<'_>, rules: &[&Rule], folded: Folded<(ReachIx, Insta
 
 fn judge_classes(world: World<'_>, rules: &[&Rule], asked: &[u32]) -> Vec<Diagnostic> {
     let mut findings = Vec::new();
-    for class in &world.deck.classes {
+    for class in used_classes(world) {
         let view = ClassView::new(class);
         for &rule in asked {
             if let Some((verdict, evidence)) = ask(rules[rule as usize], &view) {
@@ -106,6 +106,14 @@ fn judge_classes(world: World<'_>, rules: &[&Rule], asked: &[u32]) -> Vec<Diagno
         }
     }
     findings
+}
+
+/// The classes that some device of the design has: a library's other classes are nobody's concern here.
+fn used_classes(world: World<'_>) -> Vec<&Class> {
+    let mut used: Vec<u32> = world.design.types.iter().filter_map(|kind| kind.class).collect();
+    used.sort_unstable();
+    used.dedup();
+    used.into_iter().map(|class| &world.deck.classes[class as usize]).collect()
 }
 
 impl Asked for NetView<'_> {

@@ -5,7 +5,7 @@ use crate::declared::{Class, Kind};
 use std::cell::RefCell;
 
 /// Silicon's critical field, V/m (30 V/µm: common practice).
-pub const CRITICAL_FIELD: f64 = 30e6;
+const CRITICAL_FIELD: f64 = 30e6;
 /// Permittivity of silicon, F/m: 11.7 times that of vacuum.
 const SILICON: f64 = 11.7 * 8.854_187_8e-12;
 /// Elementary charge, A·s.

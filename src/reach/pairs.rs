@@ -94,6 +94,13 @@ impl Reach<'_> {
         here.open[self.plans.get(here.context).group(net) as usize]
     }
 
+    /// Whether a body, source, resistor or diode stands on a net.
+    pub fn carries(&self, at: ReachIx, net: NetIx) -> bool {
+        let here = self.get(at);
+        let net = self.contexts.get(here.context).root(net);
+        self.plans.get(here.context).carries[net.0 as usize]
+    }
+
     /// Why a net's range in the ground frame lacks an end; none where both are known.
     pub fn unknown(&self, at: ReachIx, mode: usize, net: NetIx) -> Option<Unknown> {
         let here = self.get(at);

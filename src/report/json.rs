@@ -93,7 +93,13 @@ struct WaiverShape<'d> {
 impl<'d> Place<'d> {
     fn of(span: Span, sources: &'d SourceMap) -> Place<'d> {
         let (start, end) = (sources.start(span), sources.end(span));
-        Place { file: sources.file(span.file).path(), line: start.line, column: start.column, end_line: end.line, end_column: end.column }
+        Place {
+            file: sources.file(span.file).path(),
+            line: start.line,
+            column: start.column,
+            end_line: end.line,
+            end_column: end.column,
+        }
     }
 }
 
@@ -120,7 +126,9 @@ impl<'d> Shape<'d> {
             modes: finding.map_or(&[], |finding| &finding.modes),
             place: Place::of(diagnostic.span, sources),
             labels: diagnostic.labels.iter().map(label).collect(),
-            nets: finding.map_or_else(BTreeMap::new, |finding| finding.nets.iter().map(|(pin, net)| (pin.as_str(), net.as_str())).collect()),
+            nets: finding.map_or_else(BTreeMap::new, |finding| {
+                finding.nets.iter().map(|(pin, net)| (pin.as_str(), net.as_str())).collect()
+            }),
             help: diagnostic.help.as_deref(),
             cite: diagnostic.cite.as_deref(),
             fingerprint: &diagnostic.fingerprint,
@@ -177,8 +185,17 @@ impl<'s> SummaryShape<'s> {
             devices: summary.devices,
             high_voltage_devices: summary.high_voltage_devices,
             classes: summary.classes.iter().map(|(name, count)| (name.as_str(), *count)).collect(),
-            pairs: summary.pairs.map(|pairs| PairsShape { proven: pairs.proven, violated: pairs.violated, unproven: pairs.unproven }),
-            findings: CountsShape { error: counts.error, warning: counts.warning, note: counts.note, waived: counts.waived },
+            pairs: summary.pairs.map(|pairs| PairsShape {
+                proven: pairs.proven,
+                violated: pairs.violated,
+                unproven: pairs.unproven,
+            }),
+            findings: CountsShape {
+                error: counts.error,
+                warning: counts.warning,
+                note: counts.note,
+                waived: counts.waived,
+            },
             not_looked_at: &summary.not_looked_at,
             netlists: &summary.judged.netlists,
             decks: &summary.judged.decks,

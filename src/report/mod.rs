@@ -14,8 +14,7 @@ use crate::source::SourceMap;
 use std::collections::HashMap;
 
 /// The caution that every report ends with.
-pub const CAUTION: &str =
-    "High voltage can injure and destroy: the process's design manual, local codes and qualified review decide, not this program.";
+pub const CAUTION: &str = "High voltage can injure and destroy: the process's design manual, local codes and qualified review decide, not this program.";
 
 /// Everything a run found, finished: ordered, with severities, waivers and fingerprints.
 #[derive(Clone, Debug, Default)]
@@ -37,14 +36,19 @@ impl Report {
         for diagnostic in &mut self.diagnostics {
             let print = fingerprint(diagnostic);
             let again = seen.entry(print).or_insert(0);
-            diagnostic.fingerprint = format!("{:016x}", if *again == 0 { print } else { hash(print, &again.to_le_bytes()) });
+            diagnostic.fingerprint =
+                format!("{:016x}", if *again == 0 { print } else { hash(print, &again.to_le_bytes()) });
             *again += 1;
         }
     }
 
     /// The gravest severity among diagnostics that no waiver hides.
     pub fn worst(&self) -> Option<Severity> {
-        self.diagnostics.iter().filter(|diagnostic| diagnostic.waived.is_none()).map(|diagnostic| diagnostic.severity).max()
+        self.diagnostics
+            .iter()
+            .filter(|diagnostic| diagnostic.waived.is_none())
+            .map(|diagnostic| diagnostic.severity)
+            .max()
     }
 }
 

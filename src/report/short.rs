@@ -16,7 +16,15 @@ pub fn write(report: &Report, sources: &SourceMap, out: &mut dyn Write) -> io::R
             count => format!(" ({count} instances)"),
         };
         let (severity, message) = (diagnostic.severity.word(), diagnostic.message.replace('\n', " "));
-        writeln!(out, "{}:{}:{}: {severity}: {}{times} [{}]", visible(file), place.line, place.column, visible(&message), diagnostic.code)?;
+        writeln!(
+            out,
+            "{}:{}:{}: {severity}: {}{times} [{}]",
+            visible(file),
+            place.line,
+            place.column,
+            visible(&message),
+            diagnostic.code
+        )?;
     }
     for line in report.summary.lines() {
         writeln!(out, "drainwise: {}", visible(&line))?;

@@ -88,20 +88,45 @@ impl Summary {
         let mut lines = Vec::new();
         let counts = self.findings;
         let waived = if counts.waived > 0 { format!(", {} waived", counts.waived) } else { String::new() };
-        lines.push(format!("found      {}, {}, {}{waived}", plural(counts.error, "error"), plural(counts.warning, "warning"), plural(counts.note, "note")));
+        lines.push(format!(
+            "found      {}, {}, {}{waived}",
+            plural(counts.error, "error"),
+            plural(counts.warning, "warning"),
+            plural(counts.note, "note")
+        ));
         if self.pairs.is_none() {
             return lines;
         }
-        let skipped = if self.cards_skipped > 0 { format!(", {} skipped", plural(self.cards_skipped, "card")) } else { String::new() };
-        let modes = if self.judged.modes.is_empty() { "no modes".to_owned() } else { format!("modes {}", self.judged.modes.join(", ")) };
-        let decks = if self.judged.decks.is_empty() { "no deck: the program's own rules alone".to_owned() } else { format!("deck {}", self.judged.decks.join(", ")) };
+        let skipped = if self.cards_skipped > 0 {
+            format!(", {} skipped", plural(self.cards_skipped, "card"))
+        } else {
+            String::new()
+        };
+        let modes = if self.judged.modes.is_empty() {
+            "no modes".to_owned()
+        } else {
+            format!("modes {}", self.judged.modes.join(", "))
+        };
+        let decks = if self.judged.decks.is_empty() {
+            "no deck: the program's own rules alone".to_owned()
+        } else {
+            format!("deck {}", self.judged.decks.join(", "))
+        };
         lines.push(format!("judged     {} ({}; {modes})", self.judged.tops.join(", "), decks));
-        lines.push(format!("read       {}, {}{skipped}, {}", plural(self.files, "file"), plural(self.cards, "card"), plural(self.cells, "cell")));
+        lines.push(format!(
+            "read       {}, {}{skipped}, {}",
+            plural(self.files, "file"),
+            plural(self.cards, "card"),
+            plural(self.cells, "cell")
+        ));
         let classes: Vec<String> = self.classes.iter().map(|(name, count)| format!("{name} {count}")).collect();
         let classes = if classes.is_empty() { String::new() } else { format!(": {}", classes.join(", ")) };
         lines.push(format!("devices    {}, {} of them high-voltage{classes}", self.devices, self.high_voltage_devices));
         if let Some(pairs) = self.pairs {
-            lines.push(format!("ratings    of high-voltage devices: {} pairs proven, {} violated, {} unproven", pairs.proven, pairs.violated, pairs.unproven));
+            lines.push(format!(
+                "ratings    of high-voltage devices: {} pairs proven, {} violated, {} unproven",
+                pairs.proven, pairs.violated, pairs.unproven
+            ));
         }
         for line in &self.not_looked_at {
             lines.push(format!("not judged {line}"));

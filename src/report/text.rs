@@ -7,7 +7,10 @@ use super::visible::visible;
 use super::{CAUTION, Report};
 use crate::diag::{Diagnostic, Severity, Verdict};
 use crate::source::{FileId, SourceMap, Span};
-use miette::{GraphicalReportHandler, GraphicalTheme, LabeledSpan, MietteSpanContents, SourceCode, SourceSpan, SpanContents, ThemeCharacters, ThemeStyles};
+use miette::{
+    GraphicalReportHandler, GraphicalTheme, LabeledSpan, MietteSpanContents, SourceCode, SourceSpan, SpanContents,
+    ThemeCharacters, ThemeStyles,
+};
 use owo_colors::Style;
 use std::collections::HashMap;
 use std::fmt;
@@ -30,7 +33,11 @@ const LONGEST_LINE: usize = 160;
 
 /// Writes all findings that no waiver hides, the summary, and the caution.
 pub fn write(report: &Report, sources: &SourceMap, look: Look, out: &mut dyn Write) -> io::Result<()> {
-    let handler = GraphicalReportHandler::new_themed(theme(look.colour)).with_width(look.width.max(40)).with_context_lines(0).with_links(false).without_syntax_highlighting();
+    let handler = GraphicalReportHandler::new_themed(theme(look.colour))
+        .with_width(look.width.max(40))
+        .with_context_lines(0)
+        .with_links(false)
+        .without_syntax_highlighting();
     let mut drawn: HashMap<&str, usize> = HashMap::new();
     for diagnostic in report.diagnostics.iter().filter(|diagnostic| diagnostic.waived.is_none()) {
         let count = drawn.entry(diagnostic.code.as_str()).or_insert(0);
@@ -45,7 +52,11 @@ pub fn write(report: &Report, sources: &SourceMap, look: Look, out: &mut dyn Wri
     let mut more: Vec<(&str, usize)> = drawn.into_iter().filter(|(_, count)| *count > MOST_OF_A_RULE).collect();
     more.sort_unstable();
     for (rule, count) in more {
-        writeln!(out, "and {} more of {rule}: see them all with `--format short`, or these alone with `--only {rule}`\n", count - MOST_OF_A_RULE)?;
+        writeln!(
+            out,
+            "and {} more of {rule}: see them all with `--format short`, or these alone with `--only {rule}`\n",
+            count - MOST_OF_A_RULE
+        )?;
     }
     let strong = if look.colour { Style::new().bold() } else { Style::new() };
     for line in report.summary.lines() {
@@ -66,9 +77,9 @@ fn theme(colour: bool) -> GraphicalTheme {
         styles.warning = Style::new().yellow().bold();
         styles.advice = Style::new().blue().bold();
         styles.help = Style::new().green();
-        styles.filename = Style::new().bold();
         styles.linum = Style::new().dimmed();
-        styles.highlights = vec![Style::new().red(), Style::new().yellow(), Style::new().blue(), Style::new().magenta()];
+        styles.highlights =
+            vec![Style::new().red(), Style::new().yellow(), Style::new().blue(), Style::new().magenta()];
     }
     GraphicalTheme { characters, styles }
 }
@@ -97,7 +108,15 @@ impl Shown {
         let elsewhere = others.into_iter().map(|file| {
             let there: Vec<(Span, &str)> = places.iter().copied().filter(|(span, _)| span.file == file).collect();
             let (window, labels) = Window::new(file, &there, sources);
-            Shown { head: "with this".to_owned(), code: String::new(), severity: miette::Severity::Advice, help: None, window, labels, elsewhere: Vec::new() }
+            Shown {
+                head: "with this".to_owned(),
+                code: String::new(),
+                severity: miette::Severity::Advice,
+                help: None,
+                window,
+                labels,
+                elsewhere: Vec::new(),
+            }
         });
         Shown {
             head: visible(&diagnostic.message).into_owned(),
@@ -196,7 +215,8 @@ impl Window {
     fn new(file: FileId, places: &[(Span, &str)], sources: &SourceMap) -> (Window, Vec<LabeledSpan>) {
         let source = sources.file(file);
         let mut window = Window { name: visible(source.path()).into_owned(), lines: Vec::new(), text: String::new() };
-        let mut by_line: Vec<(u32, Span, &str)> = places.iter().map(|&(span, text)| (source.line_column(span.start).line, span, text)).collect();
+        let mut by_line: Vec<(u32, Span, &str)> =
+            places.iter().map(|&(span, text)| (source.line_column(span.start).line, span, text)).collect();
         by_line.sort_by_key(|&(line, span, _)| (line, span.start));
         let mut labels = Vec::new();
         for group in by_line.chunk_by(|a, b| a.0 == b.0) {
@@ -214,7 +234,11 @@ impl Window {
             for &(_, span, text) in group {
                 let (from, to) = (cut.place(line, within(span.start)), cut.place(line, within(span.end)));
                 let words = if text.is_empty() { None } else { Some(visible(text).into_owned()) };
-                labels.push(LabeledSpan::new(words, start + from, to.saturating_sub(from).max(1).min(cut.text.len() - from + 1)));
+                labels.push(LabeledSpan::new(
+                    words,
+                    start + from,
+                    to.saturating_sub(from).max(1).min(cut.text.len() - from + 1),
+                ));
             }
         }
         (window, labels)
@@ -255,7 +279,12 @@ fn floor(text: &str, mut offset: usize) -> usize {
 }
 
 impl SourceCode for Window {
-    fn read_span<'a>(&'a self, span: &SourceSpan, _: usize, _: usize) -> Result<Box<dyn SpanContents<'a> + 'a>, miette::MietteError> {
+    fn read_span<'a>(
+        &'a self,
+        span: &SourceSpan,
+        _: usize,
+        _: usize,
+    ) -> Result<Box<dyn SpanContents<'a> + 'a>, miette::MietteError> {
         let (from, to) = (span.offset(), span.offset() + span.len().max(1) - 1);
         let line_of = |offset: usize| self.lines.partition_point(|line| line.start <= offset).saturating_sub(1);
         let (first, last) = (line_of(from), line_of(to.min(self.text.len().saturating_sub(1))));
@@ -277,7 +306,9 @@ mod tests {
         let mut sources = SourceMap::new();
         let file = sources.add("valve.sp", text);
         let other = sources.add("drainwise.yaml", "rails: {VSS: 0V}\n");
-        let mut diagnostic = Diagnostic::error("finger-count", Span::new(file, span.start, span.end), "M1 has 3 fingers").with_label("3 here");
+        let mut diagnostic =
+            Diagnostic::error("finger-count", Span::new(file, span.start, span.end), "M1 has 3 fingers")
+                .with_label("3 here");
         diagnostic.labels.push(Label { span: Span::new(other, 8, 11), text: "this rail".into() });
         let report = Report { diagnostics: vec![diagnostic], ..Report::default() };
         let mut out = Vec::new();
@@ -288,7 +319,15 @@ mod tests {
     #[test]
     fn labels_in_two_files_are_both_shown() {
         let text = drawn("* title\nM1 a b c d n nf=3\n", 20..24);
-        for part in ["error finger-count", "M1 has 3 fingers", "valve.sp:2", "3 here", "drainwise.yaml:1", "this rail", "qualified review"] {
+        for part in [
+            "error finger-count",
+            "M1 has 3 fingers",
+            "valve.sp:2",
+            "3 here",
+            "drainwise.yaml:1",
+            "this rail",
+            "qualified review",
+        ] {
             assert!(text.contains(part), "{part} is missing in\n{text}");
         }
     }

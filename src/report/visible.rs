@@ -12,7 +12,8 @@ pub(super) fn visible(text: &str) -> Cow<'_, str> {
 }
 
 fn is_hidden(c: char) -> bool {
-    (c.is_control() && c != '\t' && c != '\n') || matches!(c, '\u{200e}' | '\u{200f}' | '\u{202a}'..='\u{202e}' | '\u{2066}'..='\u{2069}')
+    (c.is_control() && c != '\t' && c != '\n')
+        || matches!(c, '\u{200e}' | '\u{200f}' | '\u{202a}'..='\u{202e}' | '\u{2066}'..='\u{2069}')
 }
 
 fn picture(c: char) -> char {
