@@ -2,7 +2,7 @@
 
 use super::frames::{Frames, TopFacts};
 use super::interval::Interval;
-use super::plan::{Ground, PairBound, Plans};
+use super::plan::{Ground, PairBounds, Plans};
 use super::solve::{Answer, InputKey, Inputs, Solver};
 use super::state::State;
 use super::terminals::{Terminals, table};
@@ -33,10 +33,9 @@ pub struct ReachContext {
     pub children: Vec<ReachIx>,
     /// Its nets in each mode.
     pub states: Vec<State>,
-    pub(super) inputs: Vec<Inputs>,
     pub(super) tied: Vec<bool>,
     pub(super) open: Vec<bool>,
-    pub(super) bounds: HashMap<NetIx, Vec<PairBound>>,
+    pub(super) bounds: PairBounds,
 }
 
 /// The reach of everything.
@@ -104,8 +103,12 @@ impl<'s> Shared<'s> {
         let answer = Rc::new(Answer::of(&solver.state, solver.template, solver.context));
         let number = self.answers.borrow().len() as u32;
         self.answers.borrow_mut().push(Rc::clone(&answer));
+        let mut known = self.known.borrow_mut();
+        // Told its own answer, the context adds nothing more: asking again is answered at once, at every level.
+        known.insert(inputs.with(&answer).key(at, mode), number);
+        known.insert(key, number);
+        drop(known);
         self.asked.borrow_mut().push((at, mode, inputs));
-        self.known.borrow_mut().insert(key, number);
         (number, answer)
     }
 
@@ -352,7 +355,7 @@ impl<'e> Expander<'e> {
     fn add(&mut self, at: ContextIx, inputs: Vec<Inputs>) -> ReachIx {
         let index = ReachIx(self.base + self.all.len() as u32);
         let mut states = Vec::with_capacity(inputs.len());
-        let (mut tied, mut open, mut bounds) = (Vec::new(), Vec::new(), HashMap::new());
+        let (mut tied, mut open, mut bounds) = (Vec::new(), Vec::new(), PairBounds::default());
         for (mode, inputs) in inputs.iter().enumerate() {
             let mut solver = Solver::new(&self.shared, at, mode as u32, inputs, true);
             solver.run();
@@ -366,7 +369,6 @@ impl<'e> Expander<'e> {
             parents: Vec::new(),
             children: Vec::new(),
             states,
-            inputs,
             tied,
             open,
             bounds,

@@ -52,13 +52,7 @@ impl Reach<'_> {
 
     /// What clamps and body diodes say of V(x) − V(y), for roots.
     fn bound(&self, here: &ReachContext, x: NetIx, y: NetIx) -> Interval {
-        let plan = self.plans.get(here.context);
-        let inside = |net: NetIx| plan.bounds_at.get(&net).into_iter().flatten().map(|&at| plan.bounds[at as usize]);
-        let outside = |net: NetIx| here.bounds.get(&net).into_iter().flatten().copied();
-        let forward = inside(x).chain(outside(x)).filter(|bound| bound.x == x && bound.y == y).map(|bound| bound.range);
-        let back =
-            inside(y).chain(outside(y)).filter(|bound| bound.x == y && bound.y == x).map(|bound| bound.range.negated());
-        forward.chain(back).fold(Interval::ANY, Interval::and)
+        self.plans.get(here.context).bounds.between(x, y).and(here.bounds.between(x, y))
     }
 
     /// The reach of a net in a frame and mode.
