@@ -33,7 +33,6 @@ pub struct ReachContext {
     pub children: Vec<ReachIx>,
     /// Its nets in each mode.
     pub states: Vec<State>,
-    pub(super) inputs: Vec<Inputs>,
     pub(super) tied: Vec<bool>,
     pub(super) open: Vec<bool>,
     pub(super) bounds: HashMap<NetIx, Vec<PairBound>>,
@@ -366,7 +365,6 @@ impl<'e> Expander<'e> {
             parents: Vec::new(),
             children: Vec::new(),
             states,
-            inputs,
             tied,
             open,
             bounds,
