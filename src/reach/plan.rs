@@ -331,6 +331,6 @@ fn shown_sources(sources: &[SourceLink], positions: &HashMap<NetIx, u32>) -> Vec
             }
         }
     }
-    shown.sort_by(|a, b| (a.0, a.1).cmp(&(b.0, b.1)));
+    shown.sort_by_key(|edge| (edge.0, edge.1));
     shown
 }
