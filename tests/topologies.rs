@@ -2,9 +2,10 @@
 //! be left in peace, and each mistake must be found where it was made: a check of the whole program against circuits that
 //! it had no part in. The books are named in each netlist; the mistakes are arithmetic on the ratings in `family.yaml`.
 //!
-//! `mutations.tsv`: name, old line, new line, expected rows. An old or new text may be several lines, parted by `\n`: the new text stands
-//! in place of the first old line, and the other old lines go. `none` as the expected rows says that the change is a sound one.
-//! Names that begin with `roles-` need what recognises structures and currents, and only have to be readable here.
+//! `mutations.tsv`: name, old line, new line, expected rows. An old or new text may be several lines, parted by `\n`: each new line
+//! stands in place of its old one, what is over stands at the last, and old lines without a new one go. `none` as the
+//! expected rows says that the change is a sound one. Names that begin with `roles-` need what recognises structures and
+//! currents, and only have to be readable here.
 
 use drainwise::diag::Verdict;
 use drainwise::load::Disk;
@@ -114,8 +115,12 @@ fn mutated(folder: &Path, copy: &Path, mutation: &Mutation, place: &str) -> Path
             made += usize::from(which.is_some());
             match which {
                 None => out += &format!("{line}\n"),
-                Some(0) => mutation.new.iter().for_each(|new| out += &format!("{indent}{new}\n")),
-                Some(_) => {}
+                Some(which) => {
+                    let last = which + 1 == mutation.old.len();
+                    let take = if last { usize::MAX } else { 1 };
+                    let new = mutation.new.iter().skip(which).take(take);
+                    new.for_each(|new| out += &format!("{indent}{new}\n"));
+                }
             }
         }
         fs::write(changed.join(file), out).unwrap();
