@@ -7,6 +7,9 @@
 //! expected rows says that the change is a sound one. Names that begin with `roles-` need what recognises structures and
 //! currents, and only have to be readable here.
 
+// Helpers of a test may fail as loudly as the test itself.
+#![allow(clippy::unwrap_used, clippy::panic)]
+
 use drainwise::diag::Verdict;
 use drainwise::load::Disk;
 use drainwise::pipeline::{Job, Outcome, Progress, lint};
