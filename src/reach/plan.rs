@@ -217,7 +217,7 @@ impl<'m> Maker<'m> {
                 self.tie(root(g), root(s));
                 self.carry(&[root(s)]);
             }
-            Terminals::Diode { a, k } => {
+            Terminals::Diode { a, k, .. } => {
                 let (a, k) = (root(a), root(k));
                 self.tie(a, k);
                 self.carry(&[a, k]);
