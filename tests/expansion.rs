@@ -62,7 +62,13 @@ fn ngspice(folder: &Path, netlist: &str, commands: &str) -> String {
 fn path_of(name: &str) -> String {
     let parts: Vec<&str> = name.split('.').collect();
     let last = parts.len() - 1;
-    parts.iter().enumerate().filter(|(at, part)| *at == last || part.len() > 1).map(|(_, part)| *part).collect::<Vec<_>>().join(".")
+    parts
+        .iter()
+        .enumerate()
+        .filter(|(at, part)| *at == last || part.len() > 1)
+        .map(|(_, part)| *part)
+        .collect::<Vec<_>>()
+        .join(".")
 }
 
 fn simulated(folder: &Path, netlist: &str) -> Devices {

@@ -11,6 +11,9 @@ use drainwise::report::text::Look;
 use drainwise::report::{json, short, text};
 use drainwise::waiver::Date;
 use proptest::prelude::*;
+use std::fs;
+use std::process::{Command, Stdio};
+use std::thread::sleep;
 use std::time::{Duration, Instant};
 
 struct Still;
@@ -207,11 +210,70 @@ fn includes_that_loop() {
     refused(&run(two, DECK), 3, "includes itself");
 }
 
+// ---- work that grows faster than the file
+
+/// Runs the program itself on a netlist and ends it after [`LIMIT`]: a loop without end must fail a test, not hang it.
+fn bounded(text: &str) -> i32 {
+    let folder = tempfile::tempdir().unwrap();
+    fs::write(folder.path().join("block.sp"), text).unwrap();
+    fs::write(folder.path().join("deck.yaml"), DECK).unwrap();
+    let mut command = Command::new(env!("CARGO_BIN_EXE_drainwise"));
+    command.args(["lint", "block.sp", "--deck", "deck.yaml", "--format", "short"]).current_dir(folder.path());
+    let mut child = command.stdout(Stdio::null()).stderr(Stdio::null()).spawn().unwrap();
+    let began = Instant::now();
+    loop {
+        if let Some(status) = child.try_wait().unwrap() {
+            return status.code().expect("ended by a signal");
+        }
+        if began.elapsed() > LIMIT {
+            child.kill().unwrap();
+            child.wait().unwrap();
+            panic!("not done after {LIMIT:?}");
+        }
+        sleep(Duration::from_millis(10));
+    }
+}
+
+#[test]
+fn two_calls_a_level_are_not_twice_the_work_a_level() {
+    let cells: String =
+        (0..60).map(|at| format!(".subckt c{at} d g\nX1 d g c{n}\nX2 d g c{n}\n.ends\n", n = at + 1)).collect();
+    let last = ".subckt c60 d g\nM1 d g 0 0 ldn60 w=20u l=0.6u\n.ends\n";
+    assert_eq!(bounded(&format!("* block\n{cells}{last}X1 COIL GATE c0\n")), 0);
+}
+
+#[test]
+fn functions_that_call_twice_or_themselves() {
+    let functions: String = (0..39).map(|at| format!(".func f{at}(x) {{f{n}(x)+f{n}(x)}}\n", n = at + 1)).collect();
+    let use_it = ".param a={f0(1)}\nM1 COIL GATE 0 0 ldn60 w={a} l=1u\n";
+    bounded(&format!("* block\n{SOUND}{functions}.func f39(x) {{x}}\n{use_it}"));
+    assert_eq!(bounded(&format!("* block\n{SOUND}.func f0(x) {{f0(x)+f0(x)}}\n{use_it}")), 2);
+}
+
+#[test]
+fn many_unknown_names_among_many_known_ones() {
+    let models: String =
+        (0..5_000).map(|at| format!(".subckt cell{at} a\nR1 a 0 1\n.ends\nX{at} a cel{at}x\n")).collect();
+    bounded(&format!("* block\n{SOUND}{models}"));
+    let params: String = (0..5_000)
+        .map(|at| format!(".param known{at}=1\nM{at} COIL GATE 0 0 ldn60 w={{unknown{at}}} l=1u\n"))
+        .collect();
+    bounded(&format!("* block\n{SOUND}{params}"));
+}
+
+#[test]
+fn rails_with_thousands_of_devices_between_them() {
+    let devices: String =
+        (0..20_000).map(|at| format!("M{at} n{at} n{} 0 0 ldn60 w=1u l=1u\nR{at} n{at} COIL 1k\n", at + 1)).collect();
+    assert!(bounded(&format!("* block\n{devices}R0x n20000 GATE 1k\n")) < 2);
+}
+
 // ---- decks
 
 #[test]
 fn alias_bombs_and_deep_yaml() {
-    let bomb: String = (1..20).map(|at| format!("a{at}: &a{at} [{}]\n", vec![format!("*a{}", at - 1); 9].join(", "))).collect();
+    let bomb: String =
+        (1..20).map(|at| format!("a{at}: &a{at} [{}]\n", vec![format!("*a{}", at - 1); 9].join(", "))).collect();
     assert!(deck(&format!("a0: &a0 [x, x, x]\n{bomb}rails: *a19\n")).could_not);
     assert!(deck(&format!("rails: {}{}\n", "[".repeat(100_000), "]".repeat(100_000))).could_not);
     assert!(deck(&format!("rails: {}1{}\n", "{a: ".repeat(10_000), "}".repeat(10_000))).could_not);
@@ -250,11 +312,86 @@ fn terminal_escapes_are_never_sent() {
 /// Pieces that netlists are made of, and some that they should not be.
 fn piece() -> impl Strategy<Value = String> {
     let known = prop::sample::select(vec![
-        "M1", "M2", "X1", "X2", "R1", "C1", "V1", "Q1", "D1", "E1", "B1", "K1", "COIL", "GATE", "0", "n1", "cella", "cellb", "ldn60",
-        "nx", ".subckt", ".ends", ".param", ".model", ".include", ".lib", ".endl", ".if", ".elseif", ".else", ".endif", ".global",
-        ".option", ".func", ".end", ".control", ".endc", "+", "*", "$", ";", "//", "w=1u", "l={", "}", "'", "\"", "(", ")", "=", ",",
-        "m=2", "w={a*2}", "a=3", "b={a}", "scale=1u", "params:", "/", "5", "1k", "1meg", "-3", "nmos", "µ", "é", "\u{1b}[0m", "$[nx]",
-        "$SUB=0", "**.subckt", "*.PININFO", "*.MEGA", "block.sp", "dc", "pulse(0", "sin(0 1 1k)", "&&", "?", ":", "**", "r='a+b'",
+        "M1",
+        "M2",
+        "X1",
+        "X2",
+        "R1",
+        "C1",
+        "V1",
+        "Q1",
+        "D1",
+        "E1",
+        "B1",
+        "K1",
+        "COIL",
+        "GATE",
+        "0",
+        "n1",
+        "cella",
+        "cellb",
+        "ldn60",
+        "nx",
+        ".subckt",
+        ".ends",
+        ".param",
+        ".model",
+        ".include",
+        ".lib",
+        ".endl",
+        ".if",
+        ".elseif",
+        ".else",
+        ".endif",
+        ".global",
+        ".option",
+        ".func",
+        ".end",
+        ".control",
+        ".endc",
+        "+",
+        "*",
+        "$",
+        ";",
+        "//",
+        "w=1u",
+        "l={",
+        "}",
+        "'",
+        "\"",
+        "(",
+        ")",
+        "=",
+        ",",
+        "m=2",
+        "w={a*2}",
+        "a=3",
+        "b={a}",
+        "scale=1u",
+        "params:",
+        "/",
+        "5",
+        "1k",
+        "1meg",
+        "-3",
+        "nmos",
+        "µ",
+        "é",
+        "\u{1b}[0m",
+        "$[nx]",
+        "$SUB=0",
+        "**.subckt",
+        "*.PININFO",
+        "*.MEGA",
+        "block.sp",
+        "dc",
+        "pulse(0",
+        "sin(0 1 1k)",
+        "&&",
+        "?",
+        ":",
+        "**",
+        "r='a+b'",
     ]);
     prop_oneof![8 => known.prop_map(str::to_owned), 1 => "[ -~µ€\\t]{0,8}"]
 }
@@ -264,12 +401,34 @@ fn soup() -> impl Strategy<Value = String> {
     let line = prop::collection::vec((piece(), gap), 0..9)
         .prop_map(|pieces| pieces.into_iter().map(|(piece, gap)| piece + gap).collect::<String>());
     let card = prop::sample::select(vec![
-        "M1 COIL GATE 0 0 ldn60 w=2u l=1u", "M2 n1 GATE n2 0 ldn60 w={a} l=1u m=2", "X1 COIL n1 cella", "X2 n1 n2 cellb a=4",
-        ".subckt cella p q", ".subckt cellb p q a=1", ".ends", "R1 p q {a}", "R2 n1 0 0", "V1 n2 0 5", ".param a=2 b={a*2}",
-        ".if (a==2)", ".else", ".endif", ".global COIL", ".model nx nmos level=1", ".include block.sp", "C1 n1 q 1p", "D1 n1 n2 dx",
-        ".lib block.sp tt", ".endl", ".func f(x) {x*a}", "M3 n1 n1 n1 0 ldn60 w={f(2)*1u}", ".option scale=1u", "E1 n2 0 n1 0 2",
+        "M1 COIL GATE 0 0 ldn60 w=2u l=1u",
+        "M2 n1 GATE n2 0 ldn60 w={a} l=1u m=2",
+        "X1 COIL n1 cella",
+        "X2 n1 n2 cellb a=4",
+        ".subckt cella p q",
+        ".subckt cellb p q a=1",
+        ".ends",
+        "R1 p q {a}",
+        "R2 n1 0 0",
+        "V1 n2 0 5",
+        ".param a=2 b={a*2}",
+        ".if (a==2)",
+        ".else",
+        ".endif",
+        ".global COIL",
+        ".model nx nmos level=1",
+        ".include block.sp",
+        "C1 n1 q 1p",
+        "D1 n1 n2 dx",
+        ".lib block.sp tt",
+        ".endl",
+        ".func f(x) {x*a}",
+        "M3 n1 n1 n1 0 ldn60 w={f(2)*1u}",
+        ".option scale=1u",
+        "E1 n2 0 n1 0 2",
     ]);
-    prop::collection::vec(prop_oneof![3 => card.prop_map(str::to_owned), 2 => line], 0..25).prop_map(|lines| lines.join("\n"))
+    prop::collection::vec(prop_oneof![3 => card.prop_map(str::to_owned), 2 => line], 0..25)
+        .prop_map(|lines| lines.join("\n"))
 }
 
 proptest! {
@@ -293,14 +452,50 @@ proptest! {
 /// Lines that decks are made of, shuffled.
 fn deck_line() -> impl Strategy<Value = String> {
     let known = prop::sample::select(vec![
-        "use: [builtin:ldmos]", "use: builtin:sky130", "classes:", "  ldn60:", "    kind: nmos", "    pins: [d, g, s, b]",
-        "    pins: [d, d]", "    ratings: {vds: -0.5V..60V}", "    ratings: {vxs: 1A}", "    size: {width: w*(, length: l}",
-        "    body: {tie: s}", "rails:", "  COIL: 0V..48V", "  GATE: COIL .. COIL + 5V", "  \"*\": 1V", "  COIL: net(\"µ\")", "modes:",
-        "  on: {GATE: 5V}", "  off: {GATE: }", "rules:", "  finger-count: {severity: silent}", "  mine:", "    for: device",
-        "    where: has(body_held)", "    require: width > 3um", "    require: width > 3V", "    say: \"{name} {width} {\"", "waivers:",
-        "  - {rule: over-rating, at: \"**\", reason: x, until: 2027-01-01}", "  - {rule: nope, at: 3}", "top: block", "top: [",
-        "includes: {roots: [..], skip: [\"*\"]}", "netlists: [block.sp]", "transitions:", "  - {from: on, to: off, takes: 5ns}",
-        "currents: {into: {COIL: 2uA}}", "&a *a", "? x", "%TAG", "---", "...", "\t", "µ: é",
+        "use: [builtin:ldmos]",
+        "use: builtin:sky130",
+        "classes:",
+        "  ldn60:",
+        "    kind: nmos",
+        "    pins: [d, g, s, b]",
+        "    pins: [d, d]",
+        "    ratings: {vds: -0.5V..60V}",
+        "    ratings: {vxs: 1A}",
+        "    size: {width: w*(, length: l}",
+        "    body: {tie: s}",
+        "rails:",
+        "  COIL: 0V..48V",
+        "  GATE: COIL .. COIL + 5V",
+        "  \"*\": 1V",
+        "  COIL: net(\"µ\")",
+        "modes:",
+        "  on: {GATE: 5V}",
+        "  off: {GATE: }",
+        "rules:",
+        "  finger-count: {severity: silent}",
+        "  mine:",
+        "    for: device",
+        "    where: has(body_held)",
+        "    require: width > 3um",
+        "    require: width > 3V",
+        "    say: \"{name} {width} {\"",
+        "waivers:",
+        "  - {rule: over-rating, at: \"**\", reason: x, until: 2027-01-01}",
+        "  - {rule: nope, at: 3}",
+        "top: block",
+        "top: [",
+        "includes: {roots: [..], skip: [\"*\"]}",
+        "netlists: [block.sp]",
+        "transitions:",
+        "  - {from: on, to: off, takes: 5ns}",
+        "currents: {into: {COIL: 2uA}}",
+        "&a *a",
+        "? x",
+        "%TAG",
+        "---",
+        "...",
+        "\t",
+        "µ: é",
     ]);
     prop_oneof![9 => known.prop_map(str::to_owned), 1 => "[ -~µ]{0,20}"]
 }
