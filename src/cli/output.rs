@@ -13,6 +13,7 @@ pub(super) struct Output {
 enum To {
     Terminal(BufWriter<io::Stdout>),
     File { writer: BufWriter<File>, partial: Partial, target: PathBuf },
+    Device { writer: BufWriter<File>, target: PathBuf },
 }
 
 /// A file that is removed again unless it was finished.
@@ -67,6 +68,7 @@ impl Output {
     pub(super) fn finish(self) -> io::Result<()> {
         match self.to {
             To::Terminal(mut writer) => forgiving(writer.flush()),
+            To::Device { mut writer, .. } => forgiving(writer.flush()),
             To::File { mut writer, mut partial, target } => {
                 let named = |error: io::Error| {
                     io::Error::new(error.kind(), format!("cannot write {}: {error}", target.display()))

@@ -35,7 +35,9 @@ pub struct ReachContext {
     pub states: Vec<State>,
     pub(super) tied: Vec<bool>,
     pub(super) open: Vec<bool>,
-    pub(super) bounds: PairBounds,
+    /// For each mode.
+    pub(super) bounds: Vec<PairBounds>,
+    pub(super) caps: Vec<HashMap<NetIx, Vec<f64>>>,
 }
 
 /// The reach of everything.
@@ -348,6 +350,7 @@ impl<'e> Expander<'e> {
             fixed: vec![false; ports],
             tied: template.boundary().map(tied).collect(),
             open: template.boundary().map(|net| !tied(net)).collect(),
+            caps: Vec::new(),
             bounds: Vec::new(),
         }
     }
@@ -355,12 +358,14 @@ impl<'e> Expander<'e> {
     fn add(&mut self, at: ContextIx, inputs: Vec<Inputs>) -> ReachIx {
         let index = ReachIx(self.base + self.all.len() as u32);
         let mut states = Vec::with_capacity(inputs.len());
-        let (mut tied, mut open, mut bounds) = (Vec::new(), Vec::new(), PairBounds::default());
+        let (mut tied, mut open, mut bounds, mut caps) = (Vec::new(), Vec::new(), Vec::new(), Vec::new());
         for (mode, inputs) in inputs.iter().enumerate() {
             let mut solver = Solver::new(&self.shared, at, mode as u32, inputs, true);
             solver.run();
             states.push(std::mem::take(&mut solver.state));
-            (tied, open, bounds) = (solver.tied, solver.open, solver.bounds);
+            (tied, open) = (solver.tied, solver.open);
+            bounds.push(solver.bounds);
+            caps.push(solver.caps);
         }
         self.all.push(ReachContext {
             context: at,
@@ -372,6 +377,7 @@ impl<'e> Expander<'e> {
             tied,
             open,
             bounds,
+            caps,
         });
         index
     }
@@ -408,14 +414,15 @@ impl<'e> Expander<'e> {
         let mut per_instance = vec![Vec::new(); instances as usize];
         for mode in 0..self.shared.modes.len() {
             let here = &mut self.all[index];
-            let (state, bounds) = (std::mem::take(&mut here.states[mode]), std::mem::take(&mut here.bounds));
+            let state = std::mem::take(&mut here.states[mode]);
+            let limits = (std::mem::take(&mut here.bounds[mode]), std::mem::take(&mut here.caps[mode]));
             let groups = (std::mem::take(&mut here.tied), std::mem::take(&mut here.open));
-            let solver = Solver::finished(&self.shared, at, mode as u32, state, groups, bounds);
+            let solver = Solver::finished(&self.shared, at, mode as u32, state, groups, limits);
             for (instance, inputs) in per_instance.iter_mut().enumerate() {
                 inputs.push(solver.inputs_for(InstanceIx(instance as u32)));
             }
             let here = &mut self.all[index];
-            (here.states[mode], here.bounds) = (solver.state, solver.bounds);
+            (here.states[mode], here.bounds[mode], here.caps[mode]) = (solver.state, solver.bounds, solver.caps);
             (here.tied, here.open) = (solver.tied, solver.open);
         }
         per_instance

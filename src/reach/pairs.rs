@@ -47,12 +47,12 @@ impl Reach<'_> {
             let (of_x, of_y) = (state.reach(x, frame), state.reach(y, frame));
             between = between.and(Interval { lo: of_x.lo - of_y.hi, hi: of_x.hi - of_y.lo });
         }
-        if state.is_fixed(x) && state.is_fixed(y) { between } else { between.and(self.bound(here, x, y)) }
+        if state.is_fixed(x) && state.is_fixed(y) { between } else { between.and(self.bound(here, mode, x, y)) }
     }
 
     /// What clamps and body diodes say of V(x) − V(y), for roots.
-    fn bound(&self, here: &ReachContext, x: NetIx, y: NetIx) -> Interval {
-        self.plans.get(here.context).bounds.between(x, y).and(here.bounds.between(x, y))
+    fn bound(&self, here: &ReachContext, mode: usize, x: NetIx, y: NetIx) -> Interval {
+        self.plans.get(here.context).bounds.between(x, y).and(here.bounds[mode].between(x, y))
     }
 
     /// The reach of a net in a frame and mode.

@@ -23,6 +23,9 @@ pub(super) struct Inputs {
     pub(super) tied: Vec<bool>,
     /// Whether conducting paths outside lead from the port to an undeclared port or global of the top.
     pub(super) open: Vec<bool>,
+    /// What clamps and body diodes outside hold the ports to: as `values`, infinite where they say nothing; empty where they say
+    /// nothing of any port.
+    pub(super) caps: Vec<f64>,
     /// Clamps outside between ports: positions and range of V(x) − V(y).
     pub(super) bounds: Vec<(u32, u32, Interval)>,
 }
@@ -42,7 +45,7 @@ impl Inputs {
         InputKey {
             at,
             mode,
-            bits: self.values.iter().map(|value| if *value == 0.0 { 0 } else { value.to_bits() }).collect(),
+            bits: self.values.iter().chain(&self.caps).map(|value| if *value == 0.0 { 0 } else { value.to_bits() }).collect(),
             flags: self.flags(),
             bounds: self.bounds.iter().map(|(x, y, range)| (*x, *y, range.lo.to_bits(), range.hi.to_bits())).collect(),
         }
@@ -95,7 +98,7 @@ pub(super) struct Solver<'s> {
     pub(super) tied: Vec<bool>,
     pub(super) open: Vec<bool>,
     pub(super) bounds: PairBounds,
-    caps: HashMap<NetIx, Vec<f64>>,
+    pub(super) caps: HashMap<NetIx, Vec<f64>>,
     queue: VecDeque<u32>,
     queued: Vec<bool>,
     asked: Vec<bool>,
@@ -142,7 +145,7 @@ impl<'s> Solver<'s> {
         mode: u32,
         state: State,
         (tied, open): (Vec<bool>, Vec<bool>),
-        bounds: PairBounds,
+        (bounds, caps): (PairBounds, HashMap<NetIx, Vec<f64>>),
     ) -> Solver<'s> {
         let context = shared.contexts.get(at);
         let template = shared.design.template(context.variant);
@@ -159,7 +162,7 @@ impl<'s> Solver<'s> {
             tied,
             open,
             bounds,
-            caps: HashMap::new(),
+            caps,
             queue: VecDeque::new(),
             queued: Vec::new(),
             asked: Vec::new(),
@@ -242,6 +245,9 @@ impl<'s> Solver<'s> {
 
     /// Clamps and body diodes against rails cap what is propagated.
     fn make_caps(&mut self, inputs: &Inputs) {
+        if !inputs.caps.is_empty() {
+            self.take_caps(inputs);
+        }
         let boundary: Vec<NetIx> =
             if inputs.bounds.is_empty() { Vec::new() } else { self.template.boundary().collect() };
         for &(x, y, range) in &inputs.bounds {
@@ -253,6 +259,17 @@ impl<'s> Solver<'s> {
                 (false, true) => self.cap(x, y, range),
                 (true, false) => self.cap(y, x, range.negated()),
                 _ => {}
+            }
+        }
+    }
+
+    fn take_caps(&mut self, inputs: &Inputs) {
+        let ends = self.state.frames * 2;
+        for (position, net) in self.template.boundary().enumerate() {
+            let outside = &inputs.caps[position * ends..(position + 1) * ends];
+            if outside.iter().any(|cap| cap.is_finite()) {
+                let caps = self.caps.entry(self.context.root(net)).or_insert_with(|| vec![f64::INFINITY; ends]);
+                caps.iter_mut().zip(outside).for_each(|(cap, &outside)| *cap = cap.min(outside));
             }
         }
     }
@@ -338,6 +355,14 @@ impl<'s> Solver<'s> {
             inputs.tied.push(self.tied[self.plan.group(net) as usize]);
             inputs.open.push(self.open[self.plan.group(net) as usize]);
             distinct.push((net, position as u32));
+        }
+        if distinct.iter().any(|(net, _)| self.caps.contains_key(net)) {
+            for (net, _) in &distinct {
+                match self.caps.get(net) {
+                    Some(caps) => inputs.caps.extend_from_slice(caps),
+                    None => inputs.caps.extend(std::iter::repeat_n(f64::INFINITY, frames * 2)),
+                }
+            }
         }
         if !self.plan.bounds.is_empty() || !self.bounds.is_empty() {
             distinct.sort_unstable();

@@ -16,22 +16,22 @@ use std::process::Command;
 const FLOATING: f64 = 0.02;
 
 /// One set of supply and input voltages.
-pub struct Vector {
+pub(crate) struct Vector {
     /// The mode whose rails it lies in.
-    pub mode: Option<&'static str>,
+    pub(crate) mode: Option<&'static str>,
     /// The rails' voltages.
-    pub volts: Vec<(&'static str, f64)>,
+    pub(crate) volts: Vec<(&'static str, f64)>,
 }
 
 impl Vector {
     /// The voltage of a rail.
-    pub fn volt(&self, name: &str) -> Option<f64> {
+    pub(crate) fn volt(&self, name: &str) -> Option<f64> {
         self.volts.iter().find(|(rail, _)| *rail == name).map(|(_, volt)| *volt)
     }
 }
 
 /// Draws vectors: in every mode all rails at their low end, all at their high end, and random ones, mostly at ends.
-pub fn vectors(circuit: &Circuit, prng: &mut Prng) -> Vec<Vector> {
+pub(crate) fn vectors(circuit: &Circuit, prng: &mut Prng) -> Vec<Vector> {
     let modes: Vec<Option<usize>> =
         if circuit.modes.is_empty() { vec![None] } else { (0..circuit.modes.len()).map(Some).collect() };
     let each = if modes.len() == 1 { 10 } else { 5 };
@@ -91,7 +91,7 @@ fn models(prng: &mut Prng) -> String {
 }
 
 /// The testbench: the circuit, its models, and two copies for each vector.
-pub fn testbench(circuit: &Circuit, vectors: &[Vector], prng: &mut Prng) -> String {
+pub(crate) fn testbench(circuit: &Circuit, vectors: &[Vector], prng: &mut Prng) -> String {
     let mut bench = circuit.netlist();
     bench.push_str(&models(prng));
     for (number, vector) in vectors.iter().enumerate() {
@@ -117,7 +117,7 @@ pub fn testbench(circuit: &Circuit, vectors: &[Vector], prng: &mut Prng) -> Stri
 /// Runs ngspice on a testbench in a folder. `None`: it did not converge.
 ///
 /// Returns, for each vector, the driven nets' voltages in the order of the circuit's nets (`None`: floating).
-pub fn simulate(folder: &Path, bench: &str, circuit: &Circuit, vectors: &[Vector]) -> Option<Vec<Vec<Option<f64>>>> {
+pub(crate) fn simulate(folder: &Path, bench: &str, circuit: &Circuit, vectors: &[Vector]) -> Option<Vec<Vec<Option<f64>>>> {
     std::fs::write(folder.join("bench.sp"), bench).unwrap();
     let raw = folder.join("bench.raw");
     let _ = std::fs::remove_file(&raw);

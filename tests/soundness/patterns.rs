@@ -16,7 +16,7 @@ const FLOATING: [Pattern; 6] =
     [inverter_floating, chain_floating, driver, shift_up, shift_up, clamp_floating];
 
 /// Adds one pattern, of those that the circuit's domains allow.
-pub fn add_one(c: &mut Circuit, r: &mut Prng) {
+pub(crate) fn add_one(c: &mut Circuit, r: &mut Prng) {
     let domain = r.unit();
     let from: &[Pattern] = match () {
         () if c.floats() && domain < 0.35 => &FLOATING,
