@@ -20,57 +20,57 @@ classes:
 
 /// One end of a rail's range: another rail, or ground, plus a voltage.
 #[derive(Clone, Copy)]
-pub struct End {
-    pub base: Option<&'static str>,
-    pub plus: f64,
+pub(crate) struct End {
+    pub(crate) base: Option<&'static str>,
+    pub(crate) plus: f64,
 }
 
 /// A rail, with its range in every mode or in the only one.
-pub struct Rail {
-    pub name: &'static str,
-    pub ends: [End; 2],
+pub(crate) struct Rail {
+    pub(crate) name: &'static str,
+    pub(crate) ends: [End; 2],
 }
 
 /// A mode: the rails that it narrows.
-pub struct Mode {
-    pub name: &'static str,
-    pub rails: Vec<Rail>,
+pub(crate) struct Mode {
+    pub(crate) name: &'static str,
+    pub(crate) rails: Vec<Rail>,
 }
 
 /// A net that a pattern made.
-pub struct Net {
+pub(crate) struct Net {
     /// Its path, in the netlist's spelling.
-    pub path: String,
+    pub(crate) path: String,
     /// The kind of pattern that made it.
-    pub kind: &'static str,
+    pub(crate) kind: &'static str,
 }
 
 /// Nets that a pattern may use as a signal, by the domain they live in.
 #[derive(Default)]
-pub struct Pools {
+pub(crate) struct Pools {
     /// Between VSS and VDD.
-    pub low: Vec<String>,
+    pub(crate) low: Vec<String>,
     /// Anywhere between VSS and VIN.
-    pub high: Vec<String>,
+    pub(crate) high: Vec<String>,
     /// Between SW and BST.
-    pub floating: Vec<String>,
+    pub(crate) floating: Vec<String>,
 }
 
 /// A random circuit.
 #[derive(Default)]
-pub struct Circuit {
-    pub rails: Vec<Rail>,
-    pub modes: Vec<Mode>,
-    pub nets: Vec<Net>,
-    pub pools: Pools,
+pub(crate) struct Circuit {
+    pub(crate) rails: Vec<Rail>,
+    pub(crate) modes: Vec<Mode>,
+    pub(crate) nets: Vec<Net>,
+    pub(crate) pools: Pools,
     /// How many leaf devices it has.
-    pub devices: usize,
+    pub(crate) devices: usize,
     cards: String,
 }
 
 impl Circuit {
     /// Draws a circuit of 5 to 60 devices.
-    pub fn draw(prng: &mut Prng) -> Self {
+    pub(crate) fn draw(prng: &mut Prng) -> Self {
         let mut circuit = Self::default();
         circuit.declare(prng);
         let goal = 5 + prng.below(50);
@@ -81,12 +81,12 @@ impl Circuit {
     }
 
     /// Whether there is a domain that floats on SW.
-    pub fn floats(&self) -> bool {
+    pub(crate) fn floats(&self) -> bool {
         self.has("BST")
     }
 
     /// Whether there is a high supply.
-    pub fn is_high(&self) -> bool {
+    pub(crate) fn is_high(&self) -> bool {
         self.has("VIN")
     }
 
@@ -136,42 +136,42 @@ impl Circuit {
     }
 
     /// A new net of a pattern of this kind.
-    pub fn net(&mut self, kind: &'static str) -> String {
+    pub(crate) fn net(&mut self, kind: &'static str) -> String {
         let path = format!("n{}", self.nets.len());
         self.nets.push(Net { path: path.clone(), kind });
         path
     }
 
     /// Adds a transistor: terminals d g s b.
-    pub fn mos(&mut self, prng: &mut Prng, class: &str, [d, g, s, b]: [&str; 4]) {
+    pub(crate) fn mos(&mut self, prng: &mut Prng, class: &str, [d, g, s, b]: [&str; 4]) {
         let width = *prng.pick(&[4.0, 10.0, 20.0]);
         self.mos_of_width(prng, class, [d, g, s, b], width);
     }
 
     /// Adds a transistor of this width in micrometres.
-    pub fn mos_of_width(&mut self, prng: &mut Prng, class: &str, [d, g, s, b]: [&str; 4], width: f64) {
+    pub(crate) fn mos_of_width(&mut self, prng: &mut Prng, class: &str, [d, g, s, b]: [&str; 4], width: f64) {
         let corner = *prng.pick(&["s", "f"]);
         let number = self.devices;
         self.card(&format!("M{number} {d} {g} {s} {b} {class}_{corner} w={width}u l=0.6u"), 1);
     }
 
     /// Adds a resistor.
-    pub fn resistor(&mut self, a: &str, b: &str, ohms: f64) {
+    pub(crate) fn resistor(&mut self, a: &str, b: &str, ohms: f64) {
         self.card(&format!("R{} {a} {b} rpoly r={ohms:.0}", self.devices), 1);
     }
 
     /// Adds a diode of this model from `a` to `k`.
-    pub fn diode(&mut self, a: &str, k: &str, model: &str) {
+    pub(crate) fn diode(&mut self, a: &str, k: &str, model: &str) {
         self.card(&format!("D{} {a} {k} {model}", self.devices), 1);
     }
 
     /// Adds a current source that carries `amperes` from `from` to `to`.
-    pub fn current(&mut self, from: &str, to: &str, amperes: f64) {
+    pub(crate) fn current(&mut self, from: &str, to: &str, amperes: f64) {
         self.card(&format!("I{} {from} {to} dc {amperes:e}", self.devices), 1);
     }
 
     /// Calls one of the cells of the netlist (`inv`, 2 devices; `nand` and `nor`, 4 devices and an inner net `m`).
-    pub fn call(&mut self, cell: &str, pins: &[&str], kind: &'static str) {
+    pub(crate) fn call(&mut self, cell: &str, pins: &[&str], kind: &'static str) {
         let name = format!("X{}", self.devices);
         if cell != "inv" {
             self.nets.push(Net { path: format!("{name}.m"), kind });
@@ -186,7 +186,7 @@ impl Circuit {
     }
 
     /// The netlist: small cells, and the cell `top`.
-    pub fn netlist(&self) -> String {
+    pub(crate) fn netlist(&self) -> String {
         let ports: Vec<_> = self.rails.iter().map(|r| r.name).collect();
         format!(
             "* A random circuit.\n\
@@ -202,7 +202,7 @@ impl Circuit {
     }
 
     /// The deck.
-    pub fn deck(&self) -> String {
+    pub(crate) fn deck(&self) -> String {
         let mut deck = String::from("top: top\n");
         deck.push_str(CLASSES);
         deck.push_str("rails:\n");

@@ -7,36 +7,36 @@ use std::collections::{BTreeMap, HashMap};
 use std::path::Path;
 use std::process::Command;
 
-/// Volts by which a simulated value may pass a reach: what a current through a diode or a resistor of 10¹² Ω may add.
+/// Volts by which a simulated value may pass a reach: what models add to the ideal (a mirror's slope, a resistor of 10¹² Ω).
 const TOLERANCE: f64 = 0.05;
 /// Nets that a simulation moves by less than this say nothing about how tight a reach is.
 const MOVES: f64 = 0.1;
 
 /// Reaches by mode (`None`: no modes) and net, each by frame.
-pub type Reaches = HashMap<(Option<String>, String), BTreeMap<String, [Option<f64>; 2]>>;
+pub(crate) type Reaches = HashMap<(Option<String>, String), BTreeMap<String, [Option<f64>; 2]>>;
 
 /// The figures of a run.
 #[derive(Default)]
-pub struct Figures {
-    pub circuits: usize,
-    pub discarded: usize,
-    pub nets: usize,
-    pub vectors: usize,
+pub(crate) struct Figures {
+    pub(crate) circuits: usize,
+    pub(crate) discarded: usize,
+    pub(crate) nets: usize,
+    pub(crate) vectors: usize,
     /// Net values of vectors in ground's frame.
-    pub values: usize,
+    pub(crate) values: usize,
     /// Net values in other frames.
-    pub in_frames: usize,
-    pub floating: usize,
+    pub(crate) in_frames: usize,
+    pub(crate) floating: usize,
     /// Driven nets of which the program gives no end, or only one.
-    pub unknown: usize,
-    pub escapes: Vec<String>,
+    pub(crate) unknown: usize,
+    pub(crate) escapes: Vec<String>,
     /// By kind of pattern: reach width over simulated width.
-    pub ratios: BTreeMap<&'static str, Vec<f64>>,
+    pub(crate) ratios: BTreeMap<&'static str, Vec<f64>>,
 }
 
 impl Figures {
     /// Adds another run's figures.
-    pub fn add(&mut self, other: Self) {
+    pub(crate) fn add(&mut self, other: Self) {
         self.circuits += other.circuits;
         self.discarded += other.discarded;
         self.nets += other.nets;
@@ -52,12 +52,12 @@ impl Figures {
     }
 
     /// The median of all nets' reach width over simulated width.
-    pub fn median(&self) -> f64 {
+    pub(crate) fn median(&self) -> f64 {
         median(self.ratios.values().flatten().copied().collect())
     }
 
     /// Prints the figures.
-    pub fn print(&self) {
+    pub(crate) fn print(&self) {
         println!("circuits   {:6}   discarded as not converged {}", self.circuits, self.discarded);
         println!("nets       {:6}   vectors {}", self.nets, self.vectors);
         println!("compared   {:6}   values to ground, {} in other frames", self.values, self.in_frames);
@@ -84,7 +84,7 @@ fn median(mut of: Vec<f64>) -> f64 {
 }
 
 /// Asks the program for all reaches of the circuit in a folder.
-pub fn reaches(folder: &Path) -> Reaches {
+pub(crate) fn reaches(folder: &Path) -> Reaches {
     let output = Command::new(env!("CARGO_BIN_EXE_drainwise"))
         .current_dir(folder)
         .args(["trace", "circuit.sp", "--deck", "drainwise.yaml", "--format", "json"])
@@ -92,7 +92,8 @@ pub fn reaches(folder: &Path) -> Reaches {
         .expect("the program starts");
     let text = String::from_utf8_lossy(&output.stdout);
     let told = String::from_utf8_lossy(&output.stderr);
-    let answer: Value = serde_json::from_str(&text).unwrap_or_else(|e| panic!("{}: {e}\n{text}\n{told}", folder.display()));
+    let answer: Value =
+        serde_json::from_str(&text).unwrap_or_else(|e| panic!("{}: {e}\n{text}\n{told}", folder.display()));
     let mut reaches = Reaches::new();
     for net in answer["nets"].as_array().unwrap() {
         let frames = net["reach"].as_object().unwrap();
@@ -106,7 +107,13 @@ pub fn reaches(folder: &Path) -> Reaches {
 }
 
 /// Compares all values of a circuit. `label` says which circuit it is.
-pub fn compare(label: &str, circuit: &Circuit, vectors: &[Vector], values: &[Vec<Option<f64>>], reaches: &Reaches) -> Figures {
+pub(crate) fn compare(
+    label: &str,
+    circuit: &Circuit,
+    vectors: &[Vector],
+    values: &[Vec<Option<f64>>],
+    reaches: &Reaches,
+) -> Figures {
     let mut figures = Figures { circuits: 1, nets: circuit.nets.len(), vectors: vectors.len(), ..Figures::default() };
     for (index, net) in circuit.nets.iter().enumerate() {
         let mut seen: Option<[f64; 2]> = None;
@@ -126,7 +133,9 @@ pub fn compare(label: &str, circuit: &Circuit, vectors: &[Vector], values: &[Vec
                 }
             }
         }
-        if let (Some([lo, hi]), Some(reach)) = (seen, width(reaches, net)) && hi - lo > MOVES {
+        if let (Some([lo, hi]), Some(reach)) = (seen, width(reaches, net))
+            && hi - lo > MOVES
+        {
             figures.ratios.entry(net.kind).or_default().push(reach / (hi - lo));
         }
     }
