@@ -5,6 +5,9 @@
 //! `DRAINWISE_SEED` and `DRAINWISE_CIRCUITS` change the run; `DRAINWISE_ONLY=17` runs circuit 17 alone. Circuits with an
 //! escape stay in `target/soundness/`.
 
+// A test may stop at what must not happen, and its figures are for people.
+#![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic, clippy::print_stdout)]
+
 #[path = "soundness/bench.rs"]
 mod bench;
 #[path = "soundness/circuit.rs"]
@@ -39,7 +42,9 @@ fn run_one(root: &Path, seed: u64, number: usize, keep: bool) -> Figures {
     std::fs::write(folder.join("drainwise.yaml"), circuit.deck()).unwrap();
     let reaches = judge::reaches(&folder);
     let figures = match bench::simulate(&folder, &testbench, &circuit, &vectors) {
-        Some(values) => judge::compare(&format!("seed {seed}, circuit {number}"), &circuit, &vectors, &values, &reaches),
+        Some(values) => {
+            judge::compare(&format!("seed {seed}, circuit {number}"), &circuit, &vectors, &values, &reaches)
+        }
         None => Figures { discarded: 1, ..Figures::default() },
     };
     if !keep && figures.escapes.is_empty() && figures.discarded == 0 {
@@ -80,8 +85,8 @@ fn no_driven_net_is_simulated_outside_its_reach() {
     if only.is_some() {
         return;
     }
-    assert!(figures.circuits >= 300.min(circuits), "{} circuits are too few", figures.circuits);
-    assert!(figures.values >= 10_000.min(circuits * 30), "{} values are too few", figures.values);
+    assert!(figures.circuits >= 300.min(circuits * 19 / 20), "{} circuits are too few", figures.circuits);
+    assert!(figures.values >= 10_000.min(circuits * 25), "{} values are too few", figures.values);
     assert!(figures.discarded * 20 <= circuits, "{} circuits did not converge", figures.discarded);
     assert!(figures.median() <= 1.5, "a median of {:.3} is too loose", figures.median());
 }

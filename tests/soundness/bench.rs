@@ -1,9 +1,12 @@
 //! The simulation of one circuit: one ngspice run holds, for each vector, two copies of the circuit on the same slowly rising
 //! supplies; in one copy a resistor of 10¹² Ω draws every inner net to the lowest rail, in the other to the highest.
 //!
+//! A small capacitance on every node (`cshunt`) lets latches flip in finite time; it is long charged where the run ends.
+//!
 //! A net whose end values differ between the copies by more than [`FLOATING`] is driven by nothing but those resistors (or by
 //! less current than a picoampere or so, as a diode's far side without a load): it floats, and nothing is claimed about it.
-//! Level-1 models (Ngspice User's Manual v39, section 11.2.1) conduct nothing below their threshold, so the line is sharp.
+//! Level-1 models conduct nothing below their threshold (H. Shichman, D. A. Hodges, "Modeling and simulation of
+//! insulated-gate field-effect transistor switching circuits", IEEE J. Solid-State Circuits, 1968; from memory), so the line is sharp.
 
 use super::circuit::{Circuit, End, Rail};
 use super::prng::Prng;
@@ -34,7 +37,7 @@ impl Vector {
 pub(crate) fn vectors(circuit: &Circuit, prng: &mut Prng) -> Vec<Vector> {
     let modes: Vec<Option<usize>> =
         if circuit.modes.is_empty() { vec![None] } else { (0..circuit.modes.len()).map(Some).collect() };
-    let each = if modes.len() == 1 { 10 } else { 5 };
+    let each = if modes.len() == 1 { 8 } else { 4 };
     let mut vectors = Vec::new();
     for mode in modes {
         let mode = mode.map(|m| &circuit.modes[m]);
@@ -117,7 +120,12 @@ pub(crate) fn testbench(circuit: &Circuit, vectors: &[Vector], prng: &mut Prng) 
 /// Runs ngspice on a testbench in a folder. `None`: it did not converge.
 ///
 /// Returns, for each vector, the driven nets' voltages in the order of the circuit's nets (`None`: floating).
-pub(crate) fn simulate(folder: &Path, bench: &str, circuit: &Circuit, vectors: &[Vector]) -> Option<Vec<Vec<Option<f64>>>> {
+pub(crate) fn simulate(
+    folder: &Path,
+    bench: &str,
+    circuit: &Circuit,
+    vectors: &[Vector],
+) -> Option<Vec<Vec<Option<f64>>>> {
     std::fs::write(folder.join("bench.sp"), bench).unwrap();
     let raw = folder.join("bench.raw");
     let _ = std::fs::remove_file(&raw);
@@ -134,7 +142,8 @@ pub(crate) fn simulate(folder: &Path, bench: &str, circuit: &Circuit, vectors: &
         return None;
     }
     let ends = last_point(&std::fs::read_to_string(&raw).ok()?)?;
-    let value = |copy: &str, number: usize, path: &str| ends.get(&format!("v(x{copy}{number}.{})", path.to_lowercase()));
+    let value =
+        |copy: &str, number: usize, path: &str| ends.get(&format!("v(x{copy}{number}.{})", path.to_lowercase()));
     let mut values = Vec::new();
     for number in 0..vectors.len() {
         let mut row = Vec::new();
@@ -147,7 +156,7 @@ pub(crate) fn simulate(folder: &Path, bench: &str, circuit: &Circuit, vectors: &
     Some(values)
 }
 
-/// The last point of an ASCII raw file (Ngspice User's Manual v39, appendix on the raw file format), if it is the end of the run.
+/// The last point of an ASCII raw file (its header names the variables in order; as ngspice 39 writes it), if it is the end of the run.
 fn last_point(raw: &str) -> Option<HashMap<String, f64>> {
     let (head, values) = raw.split_once("Values:")?;
     let (_, names) = head.split_once("Variables:\n")?;

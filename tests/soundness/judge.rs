@@ -7,13 +7,13 @@ use std::collections::{BTreeMap, HashMap};
 use std::path::Path;
 use std::process::Command;
 
-/// Volts by which a simulated value may pass a reach: what a current through a diode or a resistor of 10¹² Ω may add.
+/// Volts by which a simulated value may pass a reach: what models add to the ideal (a mirror's slope, a resistor of 10¹² Ω).
 const TOLERANCE: f64 = 0.05;
 /// Nets that a simulation moves by less than this say nothing about how tight a reach is.
 const MOVES: f64 = 0.1;
 
 /// Reaches by mode (`None`: no modes) and net, each by frame.
-pub type Reaches = HashMap<(Option<String>, String), BTreeMap<String, [Option<f64>; 2]>>;
+pub(crate) type Reaches = HashMap<(Option<String>, String), BTreeMap<String, [Option<f64>; 2]>>;
 
 /// The figures of a run.
 #[derive(Default)]
@@ -92,7 +92,8 @@ pub(crate) fn reaches(folder: &Path) -> Reaches {
         .expect("the program starts");
     let text = String::from_utf8_lossy(&output.stdout);
     let told = String::from_utf8_lossy(&output.stderr);
-    let answer: Value = serde_json::from_str(&text).unwrap_or_else(|e| panic!("{}: {e}\n{text}\n{told}", folder.display()));
+    let answer: Value =
+        serde_json::from_str(&text).unwrap_or_else(|e| panic!("{}: {e}\n{text}\n{told}", folder.display()));
     let mut reaches = Reaches::new();
     for net in answer["nets"].as_array().unwrap() {
         let frames = net["reach"].as_object().unwrap();
@@ -106,7 +107,13 @@ pub(crate) fn reaches(folder: &Path) -> Reaches {
 }
 
 /// Compares all values of a circuit. `label` says which circuit it is.
-pub(crate) fn compare(label: &str, circuit: &Circuit, vectors: &[Vector], values: &[Vec<Option<f64>>], reaches: &Reaches) -> Figures {
+pub(crate) fn compare(
+    label: &str,
+    circuit: &Circuit,
+    vectors: &[Vector],
+    values: &[Vec<Option<f64>>],
+    reaches: &Reaches,
+) -> Figures {
     let mut figures = Figures { circuits: 1, nets: circuit.nets.len(), vectors: vectors.len(), ..Figures::default() };
     for (index, net) in circuit.nets.iter().enumerate() {
         let mut seen: Option<[f64; 2]> = None;
@@ -126,7 +133,9 @@ pub(crate) fn compare(label: &str, circuit: &Circuit, vectors: &[Vector], values
                 }
             }
         }
-        if let (Some([lo, hi]), Some(reach)) = (seen, width(reaches, net)) && hi - lo > MOVES {
+        if let (Some([lo, hi]), Some(reach)) = (seen, width(reaches, net))
+            && hi - lo > MOVES
+        {
             figures.ratios.entry(net.kind).or_default().push(reach / (hi - lo));
         }
     }

@@ -7,13 +7,23 @@ use super::prng::Prng;
 type Pattern = fn(&mut Circuit, &mut Prng);
 
 const LOW: [Pattern; 13] = [
-    inverter, chain, gate, mirror_n, mirror_p, follower, follower_p, divider, transmission_gate, clamp, diode_or, latch, stray,
+    inverter,
+    chain,
+    gate,
+    mirror_n,
+    mirror_p,
+    follower,
+    follower_p,
+    divider,
+    transmission_gate,
+    clamp,
+    diode_or,
+    latch,
+    stray,
 ];
-const HIGH: [Pattern; 9] = [
-    cascode, step_up, switch_low, switch_high, follower_high, divider_high, clamp_high, mirror_high, diode_high,
-];
-const FLOATING: [Pattern; 6] =
-    [inverter_floating, chain_floating, driver, shift_up, shift_up, clamp_floating];
+const HIGH: [Pattern; 9] =
+    [cascode, step_up, switch_low, switch_high, follower_high, divider_high, clamp_high, mirror_high, diode_high];
+const FLOATING: [Pattern; 6] = [inverter_floating, chain_floating, driver, shift_up, shift_up, clamp_floating];
 
 /// Adds one pattern, of those that the circuit's domains allow.
 pub(crate) fn add_one(c: &mut Circuit, r: &mut Prng) {
@@ -192,10 +202,12 @@ fn stray(c: &mut Circuit, r: &mut Prng) {
         match r.below(4) {
             0 => c.mos(r, "n5", [&d, &g, &out, "VSS"]),
             1 => c.mos(r, "p5", [&d, &g, &out, "VDD"]),
+            // Its body diode must not be the only thing between two rails.
             2 => {
-                let class = r.pick(&["n5", "p5"]);
-                c.mos(r, class, [&d, &g, &out, &out]);
-            },
+                let (class, drain) = (*r.pick(&["n5", "p5"]), c.net("stray"));
+                c.resistor(&d, &drain, value);
+                c.mos(r, class, [&drain, &g, &out, &out]);
+            }
             _ => c.resistor(&d, &out, value),
         }
     }

@@ -7,7 +7,8 @@ pub(crate) struct Prng(u64);
 impl Prng {
     /// The stream of circuit `number` of a run with this seed.
     pub(crate) fn new(seed: u64, number: usize) -> Self {
-        let mut prng = Self(seed.wrapping_mul(0x2545_f491_4f6c_dd1d) ^ (number as u64).wrapping_mul(0x9e37_79b9_7f4a_7c15));
+        let mut prng =
+            Self(seed.wrapping_mul(0x2545_f491_4f6c_dd1d) ^ (number as u64).wrapping_mul(0x9e37_79b9_7f4a_7c15));
         prng.next();
         prng
     }
