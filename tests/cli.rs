@@ -3,6 +3,8 @@
 //! Everything here is invented: a coil switch of a made-up 60 V process. What is expected comes from the README (exit codes,
 //! options) and from the reference page; no number here is a measurement.
 
+#![allow(clippy::unwrap_used, clippy::panic, reason = "helpers of tests may fail")]
+
 use assert_cmd::Command;
 use serde_json::Value;
 use std::path::Path;
