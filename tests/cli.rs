@@ -575,3 +575,17 @@ fn without_rails_no_gate_is_called_floating() {
     assert_eq!(code, 0, "{report:#}");
     assert_eq!(report["findings"][0]["verdict"], "unproven", "{report:#}");
 }
+
+/// Somebody who may write to `/dev` must not lose `/dev/null` to a report: what is no file is never replaced. A socket stands in
+/// for a device here.
+#[cfg(unix)]
+#[test]
+fn out_never_replaces_what_is_no_file() {
+    use std::os::unix::fs::FileTypeExt;
+    let bench = Bench::with_block();
+    let _listener = std::os::unix::net::UnixListener::bind(bench.path("socket")).unwrap();
+    let ran = bench.run("lint block.sp --out socket");
+    assert_eq!(ran.code, 2, "a socket cannot be opened for writing");
+    says(&ran.err, &["cannot write socket"]);
+    assert!(std::fs::symlink_metadata(bench.path("socket")).unwrap().file_type().is_socket(), "it is still there");
+}
