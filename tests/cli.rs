@@ -3,6 +3,8 @@
 //! Everything here is invented: a coil switch of a made-up 60 V process. What is expected comes from the README (exit codes,
 //! options) and from the reference page; no number here is a measurement.
 
+#![allow(clippy::unwrap_used, clippy::panic, reason = "helpers of tests may fail")]
+
 use assert_cmd::Command;
 use serde_json::Value;
 use std::path::Path;
@@ -521,4 +523,69 @@ fn a_waiver_that_hides_nothing_is_stale() {
     let (code, report) = bench.json("lint block.sp --deck x.yaml --format json --fail-on warning");
     assert_eq!((code, ids(&report)), (1, vec!["waiver-stale"]));
     assert_eq!(Path::new(report["findings"][0]["file"].as_str().unwrap()), Path::new("x.yaml"));
+}
+
+/// Values observed with the circuit simulator ngspice, version 39: a call's parameter may use the others of its card, before or
+/// behind it, and they go before those around; its own name means the one around.
+#[test]
+fn parameters_of_a_call_see_one_another() {
+    let bench = Bench::new(&[]);
+    bench.put(
+        "probe.yaml",
+        "use: [drainwise.yaml]\nclasses: {ldn60: {ratings: {}}}\nrules:\n  probe: {for: device, require: 'param(\"ad\") > 1000000', say: 'ad is {param(\"ad\")}'}\n",
+    );
+    for (call, value) in [
+        ("w=4 nf=2 ad='int((nf+1)/2)*w/nf'", "2"),
+        ("ad='w*2' w=4", "8"),
+        ("w=4 ad='w*2'", "8"),
+        ("ad='ad'", "50"),
+        ("w='w' ad='w'", "100"),
+    ] {
+        bench.put("c.sp", &format!("* calls\n.param w=100 ad=50\nX1 VIN CTL VSS VSS ldn60 {call}\n"));
+        let (_, report) = bench.json("lint c.sp --deck probe.yaml --only probe --format json");
+        let messages: Vec<_> =
+            report["findings"].as_array().unwrap().iter().map(|finding| finding["message"].clone()).collect();
+        assert_eq!(messages, [format!("ad is {value}")], "{call}");
+    }
+}
+
+#[test]
+fn parameters_of_a_call_that_go_in_a_ring_have_no_value() {
+    let bench = Bench::new(&[]);
+    bench.put("c.sp", "* calls\nX1 VIN CTL VSS VSS ldn60 w='l' l='w' nf=2\n");
+    let (code, report) = bench.json("lint c.sp --format json");
+    assert_eq!(code, 2);
+    assert!(ids(&report).contains(&"card"), "{report:#}");
+}
+
+#[test]
+fn a_deck_may_have_many_comments() {
+    let bench = Bench::with_block();
+    bench.put("x.yaml", &format!("use: [drainwise.yaml]\nrails:\n{}  EN: 5V\n", "  # a line\n".repeat(5000)));
+    let ran = bench.run("deck x.yaml");
+    assert_eq!((ran.code, ran.err.as_str()), (0, ""));
+}
+
+/// A starter deck declares no rails yet: then nobody can say that a gate floats.
+#[test]
+fn without_rails_no_gate_is_called_floating() {
+    let bench = Bench::with_block();
+    bench.put("x.yaml", "use: [drainwise.yaml]\nrails: {}\n");
+    let (code, report) = bench.json("lint block.sp --deck x.yaml --only gate-floats --format json");
+    assert_eq!(code, 0, "{report:#}");
+    assert_eq!(report["findings"][0]["verdict"], "unproven", "{report:#}");
+}
+
+/// Somebody who may write to `/dev` must not lose `/dev/null` to a report: what is no file is never replaced. A socket stands in
+/// for a device here.
+#[cfg(unix)]
+#[test]
+fn out_never_replaces_what_is_no_file() {
+    use std::os::unix::fs::FileTypeExt;
+    let bench = Bench::with_block();
+    let _listener = std::os::unix::net::UnixListener::bind(bench.path("socket")).unwrap();
+    let ran = bench.run("lint block.sp --out socket");
+    assert_eq!(ran.code, 2, "a socket cannot be opened for writing");
+    says(&ran.err, &["cannot write socket"]);
+    assert!(std::fs::symlink_metadata(bench.path("socket")).unwrap().file_type().is_socket(), "it is still there");
 }

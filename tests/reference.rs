@@ -2,6 +2,8 @@
 //!
 //! They stand between markers in `rules/README.md`. `DRAINWISE_BLESS=1 cargo test --test reference` writes them anew.
 
+#![allow(clippy::unwrap_used, clippy::panic, reason = "helpers of tests may fail")]
+
 use drainwise::deck::keys::SECTIONS;
 use drainwise::load::Memory;
 use drainwise::pipeline::{Job, read_decks};

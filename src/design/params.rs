@@ -31,6 +31,16 @@ impl Trouble {
         Trouble { span: None, message: message.into(), help: None, quiet: true }
     }
 
+    /// What is wrong with an expression that begins at `place.start`.
+    pub(super) fn at(place: Span, fault: expr::Fault) -> Trouble {
+        Trouble {
+            span: Some(Span { start: place.start + fault.at.start, end: place.start + fault.at.end, ..place }),
+            quiet: fault.message.is_empty(),
+            message: fault.message,
+            help: fault.help,
+        }
+    }
+
     pub(super) fn missing(message: impl Into<String>) -> Trouble {
         Trouble { span: None, message: message.into(), help: None, quiet: false }
     }
@@ -142,12 +152,7 @@ impl Scope<'_> {
 
     /// Evaluates an expression that begins at `place.start`.
     pub(super) fn expr(&self, expr: &Expr, place: Span) -> Reading {
-        expr::evaluate_spice(expr, self).map_err(|fault| Trouble {
-            span: Some(Span { start: place.start + fault.at.start, end: place.start + fault.at.end, ..place }),
-            quiet: fault.message.is_empty(),
-            message: fault.message,
-            help: fault.help,
-        })
+        expr::evaluate_spice(expr, self).map_err(|fault| Trouble::at(place, fault))
     }
 
     fn call(&self, function: &Function, args: &[f64]) -> Result<f64, String> {
