@@ -33,7 +33,7 @@ rails: {COIL: 0V..48V, GATE: 0V..5V}
 const SOUND: &str = "MOK COIL GATE 0 0 ldn60 w=20u l=0.6u\n";
 
 /// Far beyond what any of these needs on a busy machine, and far below what a quadratic or worse loop takes.
-const LIMIT: Duration = Duration::from_secs(60);
+const LIMIT: Duration = Duration::from_secs(30);
 
 fn run(files: Memory, deck: &str) -> Outcome {
     let job = Job {
