@@ -4,6 +4,7 @@
 //! shows every device with its nodes, `print @device[parameter]` its values as evaluated. It runs with `ngbehavior=hs`, in which
 //! the `m` of a call multiplies with the `m` of the cards below; otherwise this version lets the outermost one replace the others.
 //! Run with `cargo test --test expansion -- --ignored --nocapture`; needs `ngspice` on the path.
+#![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic, clippy::print_stdout)]
 
 use drainwise::design::{Design, NetIx, VariantIx};
 use drainwise::load::Disk;
