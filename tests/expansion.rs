@@ -187,7 +187,9 @@ fn differences(ours: &Devices, theirs: &Devices) -> Vec<String> {
         }
         for (name, value) in &their.values {
             let here = our.values.get(name).copied().unwrap_or(f64::NAN);
-            if !((here - value).abs() <= 1e-9 * value.abs().max(1e-30)) {
+            // a value that is missing here (NaN) is close to nothing
+            let close = (here - value).abs() <= 1e-9 * value.abs().max(1e-30);
+            if !close {
                 wrong.push(format!("{path}: {name} is {here:e} here, {value:e} there"));
             }
         }
