@@ -2,6 +2,7 @@
 //!
 //! A page is the rule's only documentation, so its examples must be true. Each runs through the whole program with the page's
 //! own deck. All that a reader would see counts: an example must be free of errors of reading, too.
+#![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic, clippy::print_stdout)]
 
 use drainwise::deck::pages::PAGES;
 use drainwise::declared::Examples;

@@ -3,6 +3,7 @@
 //! The netlists are those of public repositories of open processes, as their authors simulate them; the project does not
 //! carry them. Run with `cargo test --release --test real_netlists -- --ignored --nocapture`; `DRAINWISE_NETLISTS` names
 //! the folder (default: `../shared/netlists` beside this project).
+#![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic, clippy::print_stdout)]
 
 use serde_json::Value;
 use std::fs::{self, File};
