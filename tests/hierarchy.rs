@@ -103,7 +103,13 @@ fn statements(prng: &mut Prng, ports: &[String], cells: &[Cell], level: usize) -
     if level > 0 && !cells.is_empty() {
         for index in 0..1 + prng.next(3) {
             let cell = prng.next(cells.len());
-            let pins = cells[cell].ports.iter().map(|port| if prng.next(2) == 0 && nets.contains(port) { port.clone() } else { nets[prng.next(nets.len())].clone() });
+            let pins = cells[cell].ports.iter().map(|port| {
+                if prng.next(2) == 0 && nets.contains(port) {
+                    port.clone()
+                } else {
+                    nets[prng.next(nets.len())].clone()
+                }
+            });
             all.push(Statement::Call { name: format!("X{index}"), nets: pins.collect(), cell });
         }
     }
@@ -121,7 +127,9 @@ fn as_cells(cells: &[Cell]) -> String {
         for statement in &cell.statements {
             let _ = match statement {
                 Statement::Device { name, nets, rest } => writeln!(text, "{name} {} {rest}", nets.join(" ")),
-                Statement::Call { name, nets, cell } => writeln!(text, "{name} {} {}", nets.join(" "), cell_name(cells, *cell)),
+                Statement::Call { name, nets, cell } => {
+                    writeln!(text, "{name} {} {}", nets.join(" "), cell_name(cells, *cell))
+                }
             };
         }
         text.push_str(".ends\n");
@@ -173,7 +181,10 @@ fn reaches(netlist: &str) -> BTreeMap<(String, Option<String>, String), (i64, i6
     let rounded = |volts: f64| if volts.is_finite() { (volts * 1e6).round() as i64 } else { i64::MAX };
     let rows = found.unwrap().into_iter().flat_map(|net| {
         let (path, mode) = (net.path.to_lowercase(), net.mode.clone());
-        net.reach.into_iter().map(move |(frame, range)| ((path.clone(), mode.clone(), frame), (rounded(range.lo), rounded(range.hi)))).collect::<Vec<_>>()
+        net.reach
+            .into_iter()
+            .map(move |(frame, range)| ((path.clone(), mode.clone(), frame), (rounded(range.lo), rounded(range.hi))))
+            .collect::<Vec<_>>()
     });
     rows.collect()
 }

@@ -3,12 +3,16 @@
 use super::template::{Built, Guarded, Reader};
 use super::{Design, NetIx, Template};
 use crate::diag::Diagnostic;
+use crate::expr::{Expr, Node};
 use crate::names::{Sym, nearest};
 use crate::netlist::tree::CellIx;
 use crate::source::Span;
 use hashbrown::HashMap;
 use petgraph::algo::tarjan_scc;
 use petgraph::graph::{DiGraph, NodeIndex};
+
+/// How deep cells may call one another.
+const DEEPEST_NESTING: u32 = 400;
 
 /// What elaboration of variants starts from.
 #[derive(Default)]
@@ -17,6 +21,8 @@ pub(super) struct Cells {
     pub(super) template: Vec<Option<u32>>,
     /// By template: what stands under conditions.
     pub(super) guarded: Vec<Vec<Guarded>>,
+    /// For each cell, whether it or a cell below it uses a name in an expression, or sets a parameter by one.
+    pub(super) uses_names: Vec<bool>,
     /// The cells that are judged.
     pub(super) tops: Vec<CellIx>,
 }
@@ -43,7 +49,9 @@ pub(super) fn build(design: &mut Design<'_>, top: Option<(&str, Span)>) -> Cells
     let graph = InstanceGraph::new(&cells, &built);
     cells.tops = if top.is_some() || seeds == [CellIx(0)] { seeds } else { graph.roots(&cells, &seeds) };
     graph.cut_cycles(&mut built, &mut reader);
+    graph.cut_depth(&mut built, &mut reader);
     let order = graph.bottom_up();
+    cells.uses_names = uses_names(&reader, &built, &order);
     for at in order {
         share_upward(&mut built, &cells, at);
     }
@@ -143,6 +151,34 @@ impl InstanceGraph {
         self.components.iter().flatten().map(|node| node.index()).collect()
     }
 
+    /// Cells nested too deep: the calls that go deeper are reported and taken out.
+    fn cut_depth(&self, built: &mut [Built], reader: &mut Reader<'_>) {
+        let mut depth = vec![0u32; built.len()];
+        let mut reported = false;
+        for node in self.components.iter().flatten().rev() {
+            let at = node.index();
+            for child in self.graph.neighbors(*node).filter(|child| child.index() != at) {
+                depth[child.index()] = depth[child.index()].max(depth[at] + 1);
+            }
+            let template = &mut built[at].template;
+            if depth[at] < DEEPEST_NESTING || template.instances.is_empty() {
+                continue;
+            }
+            let Some(first) = template.instances.first().filter(|_| !std::mem::replace(&mut reported, true)) else {
+                template.instances.clear();
+                continue;
+            };
+            let end = reader.sources.text(first.file)[first.card as usize..].find(['\n', '\r']).map_or(0, |n| n as u32);
+            let span = Span::new(first.file, first.card, first.card + end);
+            let message =
+                format!("cells call one another more than {DEEPEST_NESTING} deep: what is deeper is not judged");
+            reader
+                .diagnostics
+                .push(Diagnostic::error("netlist", span, message).with_help("name a cell further down with --top"));
+            template.instances.clear();
+        }
+    }
+
     /// Cells that contain themselves: the calls that close a ring are reported and taken out.
     fn cut_cycles(&self, built: &mut [Built], reader: &mut Reader<'_>) {
         for component in &self.components {
@@ -172,6 +208,29 @@ impl InstanceGraph {
             }
         }
     }
+}
+
+/// Which cells depend on the names around them: by an expression of their own, or of a cell below them.
+fn uses_names(reader: &Reader<'_>, built: &[Built], bottom_up: &[usize]) -> Vec<bool> {
+    let mut uses = vec![false; reader.tree.cells.len()];
+    for &at in bottom_up {
+        let Some(cell) = built[at].template.cell else { continue };
+        let (source, template) = (&reader.tree.cells[cell.0 as usize], &built[at].template);
+        let by_param = source
+            .formals
+            .iter()
+            .chain(&source.params)
+            .any(|param| param.value.expr.as_ref().is_some_and(names_something));
+        let by_card =
+            !template.with_expressions.is_empty() || template.shorts.iter().any(|short| !short.values.is_empty());
+        let by_call = template.instances.iter().any(|instance| instance.has_params || uses[instance.cell.0 as usize]);
+        uses[cell.0 as usize] = by_param || by_card || by_call || !source.guards.is_empty();
+    }
+    uses
+}
+
+fn names_something(expr: &Expr) -> bool {
+    expr.nodes.iter().any(|node| matches!(node, Node::Name(_) | Node::Call { .. }))
 }
 
 /// Gives a cell the shared nets that its inner cells use, and connects those to them.

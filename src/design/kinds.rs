@@ -69,6 +69,8 @@ pub struct DeviceType {
     pub class: Option<u32>,
     /// What it does.
     pub element: Element,
+    /// How many nets its cards have.
+    pub terminals: u8,
     /// Whether its model is one that a class should name, and none does.
     pub classless: bool,
     /// Whether the card has a number of terminals that does not fit: nothing is concluded from it.

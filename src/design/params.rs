@@ -1,7 +1,8 @@
 //! Parameters: scoped, free of order, evaluated once for each distinct set.
 //!
-//! A name inside a cell means the cell's own parameter, else one of the cells around its text, else a global one (scoping
-//! as in Ngspice User's Manual, version 39, section 2.9.4; the order of `.param` cards does not matter, as in other dialects).
+//! A name inside a cell means the cell's own parameter, else that of the nearest caller that has it, else a global one (scoping as
+//! in Ngspice User's Manual, version 39, section 2.9.4, and as that simulator does it; the order of `.param` cards does not matter,
+//! as in other dialects).
 
 use super::Design;
 use crate::expr::{self, Expr, Node};
@@ -57,6 +58,8 @@ pub(crate) struct Globals {
     functions: HashMap<Sym, u32>,
     pub(crate) active: Vec<bool>,
     pub(crate) scale: f64,
+    /// Calls made by the evaluation that is running.
+    calls: std::cell::Cell<u32>,
 }
 
 impl Globals {
@@ -138,6 +141,9 @@ impl Own<'_> {
 /// How deep functions may call functions.
 const FUNCTION_DEPTH: u32 = 40;
 
+/// How many calls of functions one evaluation may make.
+const MOST_CALLS: u32 = 100_000;
+
 /// Variables of a running simulation: no card has their value.
 const RUNNING: [&str; 5] = ["time", "temper", "hertz", "temp", "tnom"];
 
@@ -156,6 +162,11 @@ impl Scope<'_> {
     }
 
     fn call(&self, function: &Function, args: &[f64]) -> Result<f64, String> {
+        let calls = if self.depth == 0 { 1 } else { self.outer.globals.calls.get() + 1 };
+        self.outer.globals.calls.set(calls);
+        if calls > MOST_CALLS {
+            return Err(format!("evaluating it takes more than {MOST_CALLS} calls of functions"));
+        }
         if self.depth >= FUNCTION_DEPTH {
             return Err(format!("functions call one another more than {FUNCTION_DEPTH} deep"));
         }
@@ -269,7 +280,7 @@ impl<'a> Settling<'a> {
                 };
                 if open.last() != Some(&name) {
                     open.push(name);
-                    let needs = self.needs(operand, 0);
+                    let needs = self.needs(operand, &mut Vec::new());
                     if let Some(&(back, place)) = needs.iter().find(|(need, _)| open.contains(need)) {
                         self.report_cycle(&open, back, place);
                         self.done.insert(name, f64::NAN);
@@ -292,14 +303,15 @@ impl<'a> Settling<'a> {
         let chain: Vec<&str> = open[from..].iter().chain([&back]).map(|&name| names.text(name)).collect();
         self.troubles.push(Trouble {
             span: Some(place),
-            message: format!("the parameter `{}` depends on itself: {}", names.text(back), chain.join(" → ")),
+            message: format!("the parameter `{}` depends on itself: {}", names.text(back), ring(&chain)),
             help: Some("give one of them a value of its own".to_owned()),
             quiet: false,
         });
     }
 
     /// Pending parameters that an operand needs first, with the place that names each.
-    fn needs(&self, operand: &Operand, depth: u32) -> Vec<(Sym, Span)> {
+    /// `seen` are the functions whose bodies were looked into already.
+    fn needs(&self, operand: &Operand, seen: &mut Vec<u32>) -> Vec<(Sym, Span)> {
         let Some(expr) = &operand.expr else { return Vec::new() };
         let mut needs = Vec::new();
         for (node, at) in expr.nodes.iter().zip(&expr.places) {
@@ -312,12 +324,15 @@ impl<'a> Settling<'a> {
                             .map(|sym| (sym, place)),
                     );
                 }
-                Node::Call { name, .. } if depth < FUNCTION_DEPTH => {
+                Node::Call { name, .. } => {
                     let function = self.outer.names.find(name).and_then(|sym| self.outer.globals.functions.get(&sym));
-                    if let Some(&function) = function {
-                        let function = &self.outer.tree.functions[function as usize];
+                    if let Some(&index) =
+                        function.filter(|index| seen.len() < FUNCTION_DEPTH as usize && !seen.contains(index))
+                    {
+                        seen.push(index);
+                        let function = &self.outer.tree.functions[index as usize];
                         let inner = self
-                            .needs(&function.body, depth + 1)
+                            .needs(&function.body, seen)
                             .into_iter()
                             .filter(|(need, _)| !function.formals.contains(need));
                         needs.extend(inner.map(|(need, _)| (need, place)));
@@ -351,6 +366,16 @@ impl<'a> Settling<'a> {
     }
 }
 
+/// A ring of names in words; a long one is cut in its middle.
+fn ring(chain: &[&str]) -> String {
+    match chain {
+        [first @ .., _] if chain.len() > 9 => {
+            format!("{} → … → {}", first[..5].join(" → "), chain[chain.len() - 3..].join(" → "))
+        }
+        _ => chain.join(" → "),
+    }
+}
+
 impl Design<'_> {
     /// Runs `work` with the scope of a variant.
     pub(super) fn in_scope<R>(&self, variant: super::VariantIx, work: impl FnOnce(&Scope<'_>) -> R) -> R {
@@ -359,7 +384,7 @@ impl Design<'_> {
         while let Some(variant) = at {
             let variant = &self.variants[variant.0 as usize];
             around.push(&variant.env);
-            at = variant.lexical;
+            at = variant.above;
         }
         let outer = Outer { tree: &self.tree, names: &self.names, globals: &self.globals, around: &around };
         work(&Scope { outer, own: Own::Nothing, depth: 0 })

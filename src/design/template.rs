@@ -24,7 +24,7 @@ pub(super) struct Reader<'a> {
     pub(super) diagnostics: Vec<Diagnostic>,
     pub(super) oddities: Vec<Oddity>,
     pub(super) cards_skipped: u64,
-    known_types: HashMap<(u8, Sym, CellIx), TypeIx>,
+    known_types: HashMap<(u8, Sym, CellIx, u8), TypeIx>,
     unknown_models: HashMap<Sym, usize>,
     cells_by_name: HashMap<(CellIx, Sym), CellIx>,
     models_by_name: HashMap<(CellIx, Sym), String>,
@@ -273,6 +273,7 @@ impl<'r, 'a> Work<'r, 'a> {
                 model: None,
                 class: None,
                 element: Element::Opaque,
+                terminals: 0,
                 classless: false,
                 misfit: true,
                 order: None,
@@ -298,7 +299,7 @@ impl<'r, 'a> Work<'r, 'a> {
         let nodes = &fields.words[element.nodes.clone()];
         let model_word = fields.bracket_model.or(element.model);
         let model = model_word.map(|word| self.intern(word.of(text)));
-        let mut kind = self.type_of(element.letter, model);
+        let mut kind = self.type_of(element.letter, model, nodes.len().min(255) as u8);
         if self.reader.types[kind.0 as usize].classless {
             self.unknown_model(file, fields, text, model, model_word);
         }
@@ -323,6 +324,7 @@ impl<'r, 'a> Work<'r, 'a> {
                         model,
                         class: None,
                         element: Element::Opaque,
+                        terminals: 0,
                         classless: false,
                         misfit: true,
                         order: None,
@@ -367,9 +369,9 @@ impl<'r, 'a> Work<'r, 'a> {
     }
 
     /// What a card with this letter and model is; made once for each pair.
-    fn type_of(&mut self, letter: u8, model: Option<Sym>) -> TypeIx {
+    fn type_of(&mut self, letter: u8, model: Option<Sym>, terminals: u8) -> TypeIx {
         let scope = if self.has_models { self.cell } else { CellIx(0) };
-        let key = (letter, model.unwrap_or(Sym(u32::MAX)), scope);
+        let key = (letter, model.unwrap_or(Sym(u32::MAX)), scope, terminals);
         if let Some(&known) = self.reader.known_types.get(&key) {
             return known;
         }
@@ -384,6 +386,7 @@ impl<'r, 'a> Work<'r, 'a> {
             model,
             class,
             element: element.unwrap_or(Element::Opaque),
+            terminals,
             classless: needs_class,
             misfit: false,
             order,
@@ -425,7 +428,8 @@ impl<'r, 'a> Work<'r, 'a> {
             }
             return;
         }
-        let near = self.near_name(model);
+        // A netlist without its library has thousands of unknown names: the first ones are worth a search.
+        let near = if self.reader.unknown_models.len() < 100 { self.near_name(model) } else { None };
         self.reader.unknown_models.insert(model, self.reader.oddities.len());
         self.reader.oddities.push(Oddity::UnknownModel {
             model,

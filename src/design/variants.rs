@@ -30,16 +30,16 @@ pub struct Variant {
     pub multiplier: f64,
     pub(super) env: super::params::Env,
     /// For a cell defined inside another: the variant of that one.
-    pub(super) lexical: Option<VariantIx>,
+    pub(super) above: Option<VariantIx>,
 }
 
 /// More variants than this are not elaborated: a design in which every instance has parameters of its own.
-const MOST_VARIANTS: usize = 4_000_000;
+const MOST_VARIANTS: usize = 1_000_000;
 
 #[derive(PartialEq, Eq, Hash)]
 struct Key {
     cell: CellIx,
-    lexical: Option<VariantIx>,
+    above: Option<VariantIx>,
     multiplier: u64,
     given: Vec<(Sym, u64)>,
 }
@@ -94,13 +94,13 @@ impl Work<'_, '_> {
     fn variant(
         &mut self,
         cell: CellIx,
-        lexical: Option<VariantIx>,
+        above: Option<VariantIx>,
         multiplier: f64,
         mut given: Vec<(Sym, f64)>,
     ) -> Option<VariantIx> {
         given.sort_by_key(|&(name, _)| name);
         let bits = given.iter().map(|&(name, value)| (name, value.to_bits())).collect();
-        let key = Key { cell, lexical, multiplier: multiplier.to_bits(), given: bits };
+        let key = Key { cell, above, multiplier: multiplier.to_bits(), given: bits };
         if let Some(&known) = self.known.get(&key) {
             return Some(known);
         }
@@ -108,7 +108,7 @@ impl Work<'_, '_> {
             self.stop(cell);
             return None;
         }
-        let settled = self.settle(cell, lexical, &given);
+        let settled = self.settle(cell, above, &given);
         settled.troubles.into_iter().for_each(|trouble| self.report(trouble));
         let base = self.cells.template[cell.0 as usize]?;
         let template = self.under_conditions(base, settled.active);
@@ -121,7 +121,7 @@ impl Work<'_, '_> {
             shorts,
             multiplier,
             env: settled.env,
-            lexical,
+            above,
         });
         self.known.insert(key, index);
         Some(index)
@@ -137,7 +137,7 @@ impl Work<'_, '_> {
         }
     }
 
-    fn settle(&self, cell: CellIx, lexical: Option<VariantIx>, given: &[(Sym, f64)]) -> Settled {
+    fn settle(&self, cell: CellIx, above: Option<VariantIx>, given: &[(Sym, f64)]) -> Settled {
         let (design, source) = (&*self.design, &self.design.tree.cells[cell.0 as usize]);
         if cell == CellIx(0) {
             return Settled { env: Vec::new(), active: design.globals.active.clone(), troubles: Vec::new() };
@@ -146,11 +146,11 @@ impl Work<'_, '_> {
             return Settled { env: Vec::new(), active: Vec::new(), troubles: Vec::new() };
         }
         let mut around: Vec<&[(Sym, f64)]> = Vec::new();
-        let mut at = lexical;
+        let mut at = above;
         while let Some(variant) = at {
             let variant = &design.variants[variant.0 as usize];
             around.push(&variant.env);
-            at = variant.lexical;
+            at = variant.above;
         }
         let outer = Outer { tree: &design.tree, names: &design.names, globals: &design.globals, around: &around };
         settle(&outer, cell, given)
@@ -194,7 +194,7 @@ impl Work<'_, '_> {
     fn child(&mut self, at: VariantIx, instance: &Instance) -> Option<VariantIx> {
         let variant = &self.design.variants[at.0 as usize];
         let (cell, mut multiplier) = (instance.cell, variant.multiplier);
-        let lexical = self.lexical_parent(at, cell);
+        let above = self.scope_above(at, cell);
         let mut given = Vec::new();
         if instance.has_params {
             let card = self.design.card(instance.file, instance.card);
@@ -216,7 +216,7 @@ impl Work<'_, '_> {
                 }
             }
         }
-        self.variant(cell, lexical, multiplier, given)
+        self.variant(cell, above, multiplier, given)
     }
 
     fn has_parameter(&self, cell: CellIx, name: Sym) -> bool {
@@ -234,16 +234,14 @@ impl Work<'_, '_> {
         self.say(Severity::Warning, "netlist", span, message, near);
     }
 
-    fn lexical_parent(&self, at: VariantIx, cell: CellIx) -> Option<VariantIx> {
-        let parent = self.design.tree.cells[cell.0 as usize].parent.filter(|&parent| parent != CellIx(0))?;
-        let mut scope = Some(at);
-        while let Some(variant) = scope {
-            if self.design.variants[variant.0 as usize].cell == parent {
-                return scope;
-            }
-            scope = self.design.variants[variant.0 as usize].lexical;
+    /// The cell that a name is looked up in next: the nearest caller with parameters of its own, as the simulator does. Cells that
+    /// use no names at all, below them too, are the same whoever calls them.
+    fn scope_above(&self, at: VariantIx, cell: CellIx) -> Option<VariantIx> {
+        if !self.cells.uses_names[cell.0 as usize] {
+            return None;
         }
-        None
+        let here = &self.design.variants[at.0 as usize];
+        if here.env.is_empty() { here.above } else { Some(at) }
     }
 
     fn evaluate_shorts(&mut self, at: VariantIx) {

@@ -32,7 +32,10 @@ impl DeviceView<'_> {
         });
         if reach.is_open(self.at, net) {
             let net = self.net_text(pin).to_owned();
-            return self.unknown(format!("net `{net}` leads to a port or global of the top that no rail declares"));
+            return self.unknown(format!(
+                "net `{net}` leads to something whose drive is not known: a port or global that no rail declares, an unknown model, \
+                 a controlled source, or a capacitor to a net that moves"
+            ));
         }
         if self.world.deck.rails.is_empty() && self.world.deck.modes.is_empty() {
             return self.unknown("the deck declares no rails".to_owned());

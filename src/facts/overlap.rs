@@ -156,7 +156,9 @@ impl DeviceView<'_> {
             if !self.has_noted("what") {
                 let name = |mode: usize| reach.mode_name(mode).unwrap_or("");
                 let (on, high, limit) = (name(on), name(high), show(limits.vds, Dim::VOLT));
-                let what = format!("it is on in mode `{on}` and above {limit} in mode `{high}`, and nothing says how long the change takes");
+                let what = format!(
+                    "it is on in mode `{on}` and above {limit} in mode `{high}`, and nothing says how long the change takes"
+                );
                 self.note_what(what, None);
             }
             return Verdict::Open(
@@ -185,7 +187,12 @@ impl DeviceView<'_> {
             .fold(0.0, f64::max);
         let loss = self.known_current().map_or(String::new(), |(amps, _)| {
             let watts: f64 = crossing.iter().map(|t| 0.5 * volts * amps * t.takes * t.rate).sum();
-            format!(", and loses {} at {} and {}", show(watts, Dim::WATT), show(volts, Dim::VOLT), show(amps, Dim::AMPERE))
+            format!(
+                ", and loses {} at {} and {}",
+                show(watts, Dim::WATT),
+                show(volts, Dim::VOLT),
+                show(amps, Dim::AMPERE)
+            )
         });
         self.note_what(
             format!(

@@ -133,6 +133,9 @@ pub fn interpret(text: &str, fields: &Fields, is_model: &mut dyn FnMut(&str) -> 
             .with_help("an element's name begins with a letter"));
     };
     let card = Card { text, fields, row, count: count(text, fields) };
+    if card.count == 0 {
+        return Err(card.too_short());
+    }
     match row.then {
         Then::LastWord => card.last_word(),
         Then::Model => card.with_model(is_model),
@@ -179,7 +182,7 @@ impl Card<'_> {
         let message = match self.count {
             1 => format!("{what} `{name}` has nothing behind its name"),
             2 => format!("{what} `{name}` has only one word behind its name"),
-            count => format!("{what} `{name}` has only {} words behind its name", count - 1),
+            count => format!("{what} `{name}` has only {} words behind its name", count.saturating_sub(1)),
         };
         Complaint::new(start, end, message).with_help(format!("write `{}`", self.row.form))
     }

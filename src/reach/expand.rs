@@ -192,7 +192,7 @@ impl<'r> Reach<'r> {
             all => (0..all).filter(|mode| only.is_empty() || only.contains(mode)).map(Some).collect(),
         };
         let terminals = table(design);
-        let plans = Plans::new(Ground { design, contexts, terminals: &terminals });
+        let plans = Plans::new(Ground { design, contexts, deck, terminals: &terminals });
         let mut reach = Reach {
             design,
             contexts,

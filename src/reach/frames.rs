@@ -136,7 +136,11 @@ impl Frames {
         // A rail that a steady source makes of another stands at a fixed distance from it: as a frame it would say nothing new.
         let own_range = |net: NetIx| {
             let declared = top.modes.iter().any(|&mode| slot(top, net, mode).is_some());
-            declared || top.sources.iter().any(|link| (link.plus == net || link.minus == net) && link.range.hi > link.range.lo)
+            declared
+                || top
+                    .sources
+                    .iter()
+                    .any(|link| (link.plus == net || link.minus == net) && link.range.hi > link.range.lo)
         };
         let mut wanted: Vec<(bool, NetIx)> = self
             .rails

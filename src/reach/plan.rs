@@ -5,8 +5,10 @@
 use super::frames::SourceLink;
 use super::interval::Interval;
 use super::terminals::Terminals;
-use crate::design::{Design, DeviceIx, InstanceIx, NetIx, Template};
-use crate::graph::{Context, ContextIx, Contexts, Mark};
+use crate::declared::Deck;
+use crate::design::{Design, DeviceIx, Element, InstanceIx, NetIx, Template};
+use crate::graph::{Context, ContextIx, Contexts, Mark, rail};
+use crate::netlist::tree::CellIx;
 use hashbrown::HashMap;
 use petgraph::unionfind::UnionFind;
 
@@ -57,6 +59,8 @@ struct Shown {
     tied_to: Vec<u32>,
     /// Whether those paths lead to a rail inside.
     has_rail: Vec<bool>,
+    /// Whether something whose drive is not known stands on those paths.
+    open: Vec<bool>,
     /// Whether an inductor stands on it.
     inductor: Vec<bool>,
     /// Whether a body, source, resistor or diode stands on it.
@@ -72,6 +76,9 @@ pub(super) struct Plan {
     group: Vec<u32>,
     /// Groups that hold a rail of this context.
     group_has_rail: Vec<bool>,
+    /// Groups with something whose drive is not known: an unknown model, a controlled source, a capacitor to a net that moves, a
+    /// pin of a top level that comments name.
+    pub(super) group_open: Vec<bool>,
     /// Nets that an inductor stands on.
     pub(super) inductor: Vec<bool>,
     /// Nets that a body, source, resistor or diode stands on.
@@ -107,6 +114,7 @@ pub(super) struct Plans {
 pub(super) struct Ground<'g> {
     pub(super) design: &'g Design<'g>,
     pub(super) contexts: &'g Contexts,
+    pub(super) deck: &'g Deck,
     pub(super) terminals: &'g [Terminals],
 }
 
@@ -147,6 +155,8 @@ struct Maker<'m> {
     context: &'m Context,
     template: &'m Template,
     groups: UnionFind<u32>,
+    /// Nets with an unknown drive.
+    open: Vec<NetIx>,
     plan: Plan,
 }
 
@@ -156,7 +166,7 @@ impl<'m> Maker<'m> {
         let template = ground.design.template(context.variant);
         let nets = template.nets.len();
         let plan = Plan { inductor: vec![false; nets], carries: vec![false; nets], ..Plan::default() };
-        Maker { ground, context, template, groups: UnionFind::new(nets), plan }
+        Maker { ground, context, template, groups: UnionFind::new(nets), open: Vec::new(), plan }
     }
 
     fn make(mut self, plans: &Plans) -> Plan {
@@ -181,6 +191,7 @@ impl<'m> Maker<'m> {
             }
         }
         self.plan.group_has_rail = has_rail;
+        self.gather_open();
         self.show();
         self.plan
     }
@@ -247,8 +258,52 @@ impl<'m> Maker<'m> {
                     self.plan.sources.push(SourceLink { plus, minus, range });
                 }
             }
-            Terminals::Mute => {}
+            Terminals::Mute => self.unknown_drive(device),
         }
+    }
+
+    /// A device of which nothing is known may drive any of its nets; a capacitor drives one where the other moves.
+    fn unknown_drive(&mut self, device: DeviceIx) {
+        let pins = self.template.device_pins(device);
+        let kind = &self.ground.design.types[self.template.types[device.0 as usize].0 as usize];
+        if kind.element == Element::Capacitor && !kind.misfit {
+            let &[a, b, ..] = pins else { return };
+            for (net, other) in [(a, b), (b, a)] {
+                if !self.is_steady(self.context.root(other)) {
+                    self.open.push(self.context.root(net));
+                }
+            }
+        } else {
+            self.open.extend(pins.iter().map(|&net| self.context.root(net)));
+        }
+    }
+
+    /// Whether a net is a rail of one voltage: ground, or declared so in all that names it.
+    fn is_steady(&self, net: NetIx) -> bool {
+        let marks = self.ground.contexts.marks.of(self.context.mark_set(net));
+        let mut rails = marks.iter().filter_map(|mark| match mark {
+            Mark::Rail(slot) => Some(rail(self.ground.deck, *slot)),
+            Mark::Named(_) => None,
+        });
+        let ground = self.ground.design.names.text(self.template.nets[net.0 as usize]) == "0";
+        let declared = rails.next().map(|first| first.low == first.high && rails.all(|rail| rail.low == rail.high));
+        declared.unwrap_or(ground)
+    }
+
+    /// Marks the groups of all nets with an unknown drive.
+    fn gather_open(&mut self) {
+        let mut open = vec![false; self.template.nets.len()];
+        for net in &self.open {
+            open[self.plan.group(*net) as usize] = true;
+        }
+        if self.template.cell == Some(CellIx(0)) {
+            for pin in &self.ground.design.tree.interface {
+                if let Some(net) = self.template.nets.iter().position(|&net| net == pin.name) {
+                    open[self.plan.group(self.context.root(NetIx(net as u32))) as usize] = true;
+                }
+            }
+        }
+        self.plan.group_open = open;
     }
 
     fn tie(&mut self, a: NetIx, b: NetIx) {
@@ -271,6 +326,9 @@ impl<'m> Maker<'m> {
             let (at, here) = (position as usize, net(position));
             self.groups.union(here.0, net(shown.tied_to[at]).0);
             self.plan.group_has_rail[here.0 as usize] |= shown.has_rail[at];
+            if shown.open[at] {
+                self.open.push(here);
+            }
             self.plan.inductor[here.0 as usize] |= shown.inductor[at];
             self.plan.carries[here.0 as usize] |= shown.carries[at];
         }
@@ -291,6 +349,7 @@ impl<'m> Maker<'m> {
             let group = plan.group[net.0 as usize];
             plan.shown.tied_to.push(*first_of_group.entry(group).or_insert(position as u32));
             plan.shown.has_rail.push(plan.group_has_rail[group as usize]);
+            plan.shown.open.push(plan.group_open[group as usize]);
             plan.shown.inductor.push(plan.inductor[net.0 as usize]);
             plan.shown.carries.push(plan.carries[net.0 as usize]);
             positions.entry(net).or_insert(position as u32);

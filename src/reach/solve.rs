@@ -45,7 +45,12 @@ impl Inputs {
         InputKey {
             at,
             mode,
-            bits: self.values.iter().chain(&self.caps).map(|value| if *value == 0.0 { 0 } else { value.to_bits() }).collect(),
+            bits: self
+                .values
+                .iter()
+                .chain(&self.caps)
+                .map(|value| if *value == 0.0 { 0 } else { value.to_bits() })
+                .collect(),
             flags: self.flags(),
             bounds: self.bounds.iter().map(|(x, y, range)| (*x, *y, range.lo.to_bits(), range.hi.to_bits())).collect(),
         }
@@ -184,6 +189,9 @@ impl<'s> Solver<'s> {
             self.state.fixed[net.0 as usize] |= inputs.fixed[position];
         }
         self.tied = self.plan.tied_groups(&ports);
+        for (known, &inside) in open.iter_mut().zip(&self.plan.group_open) {
+            *known |= inside;
+        }
         self.open = open;
     }
 

@@ -57,7 +57,27 @@ fn terminals(kind: &DeviceType, class: Option<&Class>) -> Terminals {
         Element::VoltageSource => Some(Terminals::Source { plus: 0, minus: 1 }),
         Element::Capacitor | Element::Controlled | Element::Opaque => None,
     };
-    found.unwrap_or(Terminals::Mute)
+    // A class's pins are all on the card (or its number of terminals is a misfit); a card without a class may have fewer.
+    let fits = |pins: &[u8]| class.is_some() || pins.iter().all(|&pin| pin < kind.terminals);
+    match found {
+        Some(Terminals::Mos { d, g, s, b, n, threshold }) if fits(&[d, g, s]) => {
+            Terminals::Mos { d, g, s, b: b.filter(|&b| fits(&[b])), n, threshold }
+        }
+        Some(terminals) if fits(&pins_of(terminals)) => terminals,
+        _ => Terminals::Mute,
+    }
+}
+
+fn pins_of(terminals: Terminals) -> Vec<u8> {
+    match terminals {
+        Terminals::Mos { d, g, s, .. } | Terminals::Jfet { d, g, s, .. } => vec![d, g, s],
+        Terminals::Bipolar { c, b, e, .. } => vec![c, b, e],
+        Terminals::Diode { a: x, k: y, .. }
+        | Terminals::Through { a: x, b: y, .. }
+        | Terminals::Inductor { a: x, b: y }
+        | Terminals::Source { plus: x, minus: y } => vec![x, y],
+        Terminals::Mute => Vec::new(),
+    }
 }
 
 fn mos(kind: &DeviceType, class: Option<&Class>, pin: &dyn Fn(&str, u8) -> Option<u8>) -> Option<Terminals> {
