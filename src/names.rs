@@ -199,6 +199,7 @@ pub fn nearest<'a>(word: &str, candidates: impl IntoIterator<Item = &'a str>) ->
     let allowed = (word.chars().count() / 3).max(1);
     candidates
         .into_iter()
+        .filter(|candidate| candidate.len().abs_diff(word.len()) <= allowed * 4)
         .map(|candidate| (distance(word, candidate), candidate))
         .filter(|&(distance, _)| distance <= allowed)
         .min_by_key(|&(distance, _)| distance)

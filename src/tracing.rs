@@ -242,10 +242,18 @@ struct NetShape<'n> {
     reach: BTreeMap<&'n str, [Option<f64>; 2]>,
 }
 
+/// A voltage without the dust of binary arithmetic: to the nanovolt, and no negative zero.
+fn tidy(volts: f64) -> f64 {
+    (volts * 1e9).round() / 1e9 + 0.0
+}
+
 /// Writes `{nets: [{path, mode, reach: {FRAME: [lo, hi]}}]}`, `null` for unknown ends.
 pub fn write_json(found: &[NetReach], out: &mut dyn Write) -> io::Result<()> {
     let net = |net: &'_ NetReach| -> BTreeMap<String, [Option<f64>; 2]> {
-        net.reach.iter().map(|(frame, range)| (frame.clone(), [range.known_lo(), range.known_hi()])).collect()
+        net.reach
+            .iter()
+            .map(|(frame, range)| (frame.clone(), [range.known_lo().map(tidy), range.known_hi().map(tidy)]))
+            .collect()
     };
     let reaches: Vec<BTreeMap<String, [Option<f64>; 2]>> = found.iter().map(net).collect();
     let nets = found.iter().zip(&reaches).map(|(net, reach)| NetShape {

@@ -175,9 +175,11 @@ fn job() -> Job {
 }
 
 /// Reach of every net in every mode and frame, rounded.
-fn reaches(netlist: &str) -> BTreeMap<(String, Option<String>, String), (i64, i64)> {
+fn reaches(netlist: &str) -> Option<BTreeMap<(String, Option<String>, String), (i64, i64)>> {
     let (outcome, found) = trace(&files(netlist), &job(), &Quiet, &[]);
-    assert!(!outcome.could_not, "{:?}\n{netlist}", outcome.report.diagnostics);
+    if outcome.could_not {
+        return None;
+    }
     let rounded = |volts: f64| if volts.is_finite() { (volts * 1e6).round() as i64 } else { i64::MAX };
     let rows = found.unwrap().into_iter().flat_map(|net| {
         let (path, mode) = (net.path.to_lowercase(), net.mode.clone());
@@ -186,7 +188,7 @@ fn reaches(netlist: &str) -> BTreeMap<(String, Option<String>, String), (i64, i6
             .map(move |(frame, range)| ((path.clone(), mode.clone(), frame), (rounded(range.lo), rounded(range.hi))))
             .collect::<Vec<_>>()
     });
-    rows.collect()
+    Some(rows.collect())
 }
 
 /// How many instances each rule and verdict finds, by the device's own statement name at the end of its path.
@@ -202,12 +204,18 @@ fn findings(netlist: &str) -> BTreeMap<(String, &'static str), u64> {
 
 #[test]
 fn the_hierarchy_gives_what_the_flat_netlist_gives() {
-    let (mut nets, mut found) = (0, 0);
+    let (mut nets, mut found, mut refused) = (0, 0, 0);
     for seed in 1..=150u64 {
         let cells = design(&mut Prng(seed.wrapping_mul(0x9e37_79b9_7f4a_7c15) | 1));
         let (hierarchy, flattened) = (as_cells(&cells), flat(&cells));
         let (of_cells, of_flat) = (reaches(&hierarchy), reaches(&flattened));
-        for (key, range) in &of_flat {
+        // A random short can join two rails, which is an error either way.
+        let (Some(of_cells), Some(of_flat)) = (&of_cells, &of_flat) else {
+            assert_eq!(of_cells.is_some(), of_flat.is_some(), "seed {seed}\n{hierarchy}\n{flattened}");
+            refused += 1;
+            continue;
+        };
+        for (key, range) in of_flat {
             assert_eq!(of_cells.get(key), Some(range), "seed {seed}, {key:?}\n{hierarchy}\n{flattened}");
         }
         let (by_cells, by_flat) = (findings(&hierarchy), findings(&flattened));
@@ -215,5 +223,6 @@ fn the_hierarchy_gives_what_the_flat_netlist_gives() {
         nets += of_flat.len();
         found += by_flat.values().sum::<u64>();
     }
+    assert!(refused < 40, "{refused} of 150 designs were refused");
     assert!(nets > 5000 && found > 500, "{nets} values and {found} findings are too few to say anything");
 }

@@ -182,14 +182,22 @@ fn cells_that_contain_themselves() {
     assert!(outcome.could_not);
 }
 
-#[test]
-fn five_thousand_levels_of_instances() {
+fn levels(count: usize) -> String {
     let cells: String =
-        (0..5_000).map(|at| format!(".subckt c{at} d g\nX1 d g c{}\nR1 n{at} g 1k\n.ends\n", at + 1)).collect();
-    let last = ".subckt c5000 d g\nM1 d g 0 0 ldn60 w=20u l=0.6u\n.ends\n";
-    let outcome = netlist(format!("* block\n{cells}{last}X1 COIL GATE c0\n"));
+        (0..count).map(|at| format!(".subckt c{at} d g\nX1 d g c{}\nR1 n{at} g 1k\n.ends\n", at + 1)).collect();
+    let last = format!(".subckt c{count} d g\nM1 d g 0 0 ldn60 w=20u l=0.6u\n.ends\n");
+    format!("* block\n{cells}{last}X1 COIL GATE c0\n")
+}
+
+#[test]
+fn levels_of_instances_are_bounded_and_the_bound_is_named() {
+    let outcome = netlist(levels(350));
     assert!(!outcome.could_not);
     assert_eq!(outcome.report.summary.high_voltage_devices, 1);
+    let outcome = netlist(levels(5_000));
+    assert!(outcome.could_not);
+    let named = outcome.report.diagnostics.iter().any(|diagnostic| diagnostic.message.contains("400 deep"));
+    assert!(named, "{:?}", outcome.report.diagnostics);
 }
 
 #[test]

@@ -200,7 +200,8 @@ impl expr::Parameters for Scope<'_> {
 
     fn names(&self) -> Vec<String> {
         let known = self.outer.around.iter().copied().chain([self.outer.globals.env.as_slice()]).flatten();
-        known.map(|&(name, _)| self.outer.names.text(name).to_owned()).collect()
+        // Suggestions are for people: among thousands of names the search would cost more than it helps.
+        known.take(500).map(|&(name, _)| self.outer.names.text(name).to_owned()).collect()
     }
 }
 

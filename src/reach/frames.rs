@@ -8,7 +8,7 @@ use crate::declared::{Deck, End, Rail};
 use crate::design::NetIx;
 use crate::diag::Diagnostic;
 use crate::graph::{ContextIx, Contexts, Mark, RailSlot, rail};
-use hashbrown::{HashMap, HashSet};
+use hashbrown::HashMap;
 
 /// A reference net.
 #[derive(Clone, Debug, PartialEq)]
@@ -279,7 +279,6 @@ fn report_unknown_end(name: &str, rail: &Rail, diagnostics: &mut Vec<Diagnostic>
 
 /// A source with one end on a rail makes its other end one, unless that is declared.
 fn follow_sources(sources: &[SourceLink], bounds: &mut Bounds) {
-    let declared: HashSet<NetIx> = bounds.nodes.keys().copied().collect();
     let mut waiting: Vec<&SourceLink> = sources.iter().collect();
     loop {
         let before = waiting.len();
@@ -288,7 +287,8 @@ fn follow_sources(sources: &[SourceLink], bounds: &mut Bounds) {
             if !plus && !minus {
                 return true;
             }
-            if !(declared.contains(&link.plus) && declared.contains(&link.minus)) {
+            // Between two nets whose voltage is known already, a source can only agree or be a mistake of the netlist.
+            if !(plus && minus) {
                 let (p, m) = (bounds.node(link.plus), bounds.node(link.minus));
                 bounds.edges.extend([(p, m, link.range.hi), (m, p, -link.range.lo)]);
             }

@@ -125,7 +125,7 @@ impl<'d> Shape<'d> {
             pairs: finding.map_or(&[], |finding| &finding.pairs),
             modes: finding.map_or(&[], |finding| &finding.modes),
             place: Place::of(diagnostic.span, sources),
-            labels: diagnostic.labels.iter().map(label).collect(),
+            labels: own_label(diagnostic, sources).into_iter().chain(diagnostic.labels.iter().map(label)).collect(),
             nets: finding.map_or_else(BTreeMap::new, |finding| {
                 finding.nets.iter().map(|(pin, net)| (pin.as_str(), net.as_str())).collect()
             }),
@@ -139,6 +139,12 @@ impl<'d> Shape<'d> {
             }),
         }
     }
+}
+
+/// The words at the finding's own place, as the first of its labels.
+fn own_label<'d>(diagnostic: &'d Diagnostic, sources: &'d SourceMap) -> Option<LabelShape<'d>> {
+    let text = Some(diagnostic.label.as_str()).filter(|text| !text.is_empty())?;
+    Some(LabelShape { place: Place::of(diagnostic.span, sources), text })
 }
 
 #[derive(Serialize)]
