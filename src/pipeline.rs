@@ -187,7 +187,8 @@ fn judge(world: World<'_>, mut seen: Seen, job: &Job) -> (Report, bool) {
     let (hygiene, mut diagnostics): (Vec<_>, Vec<_>) = reading.into_iter().partition(is_hygiene);
     let could_not = has_error(&diagnostics);
     diagnostics.extend(hygiene.into_iter().filter_map(|diagnostic| engine::adopt(diagnostic, &rules)));
-    diagnostics.extend(engine::judge(world, &rules));
+    let judged = engine::judge(world, &rules);
+    diagnostics.extend(judged.findings);
     diagnostics.extend(engine::hygiene(world.design, world.contexts, world.deck, &rules, summary.devices));
     diagnostics.extend(engine::rails_unmatched(world.design, world.contexts, world.deck, &rules));
     diagnostics.retain(|diagnostic| diagnostic.severity != Severity::Silent);
@@ -201,6 +202,13 @@ fn judge(world: World<'_>, mut seen: Seen, job: &Job) -> (Report, bool) {
     let complaints = waiver::apply(&mut diagnostics, &waivers, job.today.unwrap_or_else(waiver::today));
     diagnostics.extend(engine::waivers(complaints, &rules));
     summary.findings = Summary::count(&diagnostics);
+    for beyond in judged.beyond.iter().filter(|beyond| beyond.severity != Severity::Silent) {
+        summary.findings.add(beyond.severity, beyond.instances);
+        let (rule, instances, most) = (&beyond.rule, beyond.instances, engine::MOST_FINDINGS);
+        summary.not_looked_at.push(format!(
+            "in words: {instances} more of {rule} beyond the first {most}, which are counted and not listed"
+        ));
+    }
     (Report { diagnostics, summary }, could_not)
 }
 

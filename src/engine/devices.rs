@@ -5,7 +5,7 @@ use super::fold::Folds;
 use super::verdict::{Asked, ask};
 use crate::declared::{Class, Rule, Subject};
 use crate::design::DeviceIx;
-use crate::diag::Diagnostic;
+use crate::diag::{Diagnostic, Verdict};
 use crate::expr::{Arg, Scope, Value, evaluate};
 use crate::facts::{DeviceView, Evidence, World, vocabulary};
 use crate::reach::ReachIx;
@@ -29,7 +29,7 @@ impl Asked for DeviceView<'_> {
 }
 
 /// Asks the device rules of every device in every context.
-pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> Vec<Diagnostic> {
+pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> (Vec<Diagnostic>, Vec<(u32, Verdict, u64)>) {
     let by_class: Vec<Vec<u32>> = world.deck.classes.iter().map(|class| rules_for(class, rules)).collect();
     let mut folds: Folds<(ReachIx, DeviceIx)> = Folds::new();
     for at in world.reach.indices() {
@@ -41,7 +41,7 @@ pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> Vec<Diagnostic> {
             if asked.is_empty() {
                 continue;
             }
-            let view = DeviceView::new(world, at, device, &world.deck.classes[class as usize]);
+            let view = DeviceView::for_verdict(world, at, device, &world.deck.classes[class as usize]);
             for &rule in asked {
                 if let Some((verdict, evidence)) = ask(rules[rule as usize], &view) {
                     let (file, start) = template.device_card(device);
@@ -51,7 +51,8 @@ pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> Vec<Diagnostic> {
             }
         }
     }
-    folds.all.into_iter().map(|folded| finding::of_device(world, rules, folded)).collect()
+    let left_out = folds.left_out();
+    (folds.all.into_iter().map(|folded| finding::of_device(world, rules, folded)).collect(), left_out)
 }
 
 /// The rules that can apply to a class at all: those whose `where` is not false whatever the instance is.

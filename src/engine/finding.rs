@@ -1,7 +1,7 @@
 //! From a folded result to a diagnostic: its words, places and values, made for the worst instance.
 
 use super::fold::Folded;
-use super::verdict::Asked;
+use super::verdict::{Asked, ask};
 use crate::declared::Rule;
 use crate::design::DeviceIx;
 use crate::diag::{Diagnostic, Finding, Label, Verdict, Worst};
@@ -18,19 +18,27 @@ const MOST_PATHS: usize = 1000;
 pub(super) fn of_device(world: World<'_>, rules: &[&Rule], folded: Folded<(ReachIx, DeviceIx)>) -> Diagnostic {
     let (rule, verdict, statement) = folded.statement;
     let rule = rules[rule as usize];
-    let ((at, device), evidence) = &folded.worst;
+    let ((at, device), brief) = &folded.worst;
     let template = world.design.template(world.context(*at).variant);
     let Some(class) = world.design.class(template, *device) else {
         return Diagnostic::new(rule.id.clone(), rule.severity, statement, rule.title.clone());
     };
     let view = DeviceView::new(world, *at, *device, class);
+    let evidence = &ask(rule, &view).map_or_else(|| brief.clone(), |(_, evidence)| evidence);
     let nets = class.pins.iter().enumerate().map(|(pin, name)| (name.clone(), view.net_text(pin).to_owned())).collect();
-    let finding = Finding { nets, ..in_cell(world, rules, *at, view.name(), &folded) };
+    let finding = Finding { nets, ..in_cell(world, rules, *at, view.name(), &folded, evidence) };
     word(rule, verdict, &view, evidence, finding, statement)
 }
 
 /// The parts of a finding about something that stands in a cell.
-pub(super) fn in_cell<S>(world: World<'_>, rules: &[&Rule], at: ReachIx, name: &str, folded: &Folded<S>) -> Finding {
+pub(super) fn in_cell<S>(
+    world: World<'_>,
+    rules: &[&Rule],
+    at: ReachIx,
+    name: &str,
+    folded: &Folded<S>,
+    evidence: &Evidence,
+) -> Finding {
     let above = world.reach.path(at);
     let path = if above.is_empty() { name.to_owned() } else { format!("{above}.{name}") };
     let cell = world.design.template(world.context(at).variant).cell;
@@ -40,7 +48,6 @@ pub(super) fn in_cell<S>(world: World<'_>, rules: &[&Rule], at: ReachIx, name: &
         true => paths(world, &folded.contexts, name),
         false => (vec![path.clone()], folded.instances <= 1),
     };
-    let evidence = &folded.worst.1;
     Finding {
         verdict: folded.statement.1,
         cell: cell.map_or("", |cell| world.design.cell_name(cell)).to_owned(),

@@ -23,21 +23,43 @@ pub(super) struct Folded<S> {
     pub(super) pairs: Vec<String>,
 }
 
+/// More statements than this are not listed for one rule and verdict: the rest are counted.
+pub const MOST_FINDINGS: usize = 10_000;
+
 /// Findings by statement, in the order in which they were first met.
 pub(super) struct Folds<S> {
     index: HashMap<Statement, usize>,
+    counts: HashMap<(u32, Verdict), (usize, u64)>,
     pub(super) all: Vec<Folded<S>>,
 }
 
 impl<S> Folds<S> {
     pub(super) fn new() -> Folds<S> {
-        Folds { index: HashMap::new(), all: Vec::new() }
+        Folds { index: HashMap::new(), counts: HashMap::new(), all: Vec::new() }
+    }
+
+    /// For each rule and verdict with more findings than are listed: how many instances were left out.
+    pub(super) fn left_out(&self) -> Vec<(u32, Verdict, u64)> {
+        let mut left: Vec<_> = self
+            .counts
+            .iter()
+            .filter(|(_, (_, left))| *left > 0)
+            .map(|(&(rule, verdict), &(_, left))| (rule, verdict, left))
+            .collect();
+        left.sort_by_key(|&(rule, verdict, _)| (rule, verdict.word()));
+        left
     }
 
     /// Adds what was found in one context that stands for `count` instances.
     pub(super) fn add(&mut self, statement: Statement, context: ReachIx, count: u64, subject: S, evidence: Evidence) {
         let badness = evidence.badness;
         let Some(&at) = self.index.get(&statement) else {
+            let (listed, left_out) = self.counts.entry((statement.0, statement.1)).or_default();
+            if *listed >= MOST_FINDINGS {
+                *left_out = left_out.saturating_add(count);
+                return;
+            }
+            *listed += 1;
             self.index.insert(statement, self.all.len());
             let pairs = evidence.pairs.clone();
             self.all.push(Folded {

@@ -19,6 +19,8 @@ pub struct DeviceView<'w> {
     pub device: DeviceIx,
     /// Its class.
     pub class: &'w Class,
+    /// Whether notes are wanted in words, or only what was concerned and how badly.
+    pub(super) in_words: bool,
     card: OnceCell<Card<'w>>,
     sizes: OnceCell<Sizes>,
     evidence: RefCell<Evidence>,
@@ -32,10 +34,16 @@ impl<'w> DeviceView<'w> {
             at,
             device,
             class,
+            in_words: true,
             card: OnceCell::new(),
             sizes: OnceCell::new(),
             evidence: RefCell::default(),
         }
+    }
+
+    /// Looks at a device for a verdict alone: words are made only for findings that are reported.
+    pub fn for_verdict(world: World<'w>, at: ReachIx, device: DeviceIx, class: &'w Class) -> DeviceView<'w> {
+        DeviceView { in_words: false, ..DeviceView::new(world, at, device, class) }
     }
 
     /// The design.
@@ -134,6 +142,9 @@ impl<'w> DeviceView<'w> {
 
     /// Notes where the rails on these pins are declared, with what they say in a mode.
     pub(super) fn note_rails(&self, mode: usize, pins: &[usize]) {
+        if !self.in_words {
+            return;
+        }
         let reach = self.world.reach;
         let deck_mode = reach.modes[mode];
         for &pin in pins {

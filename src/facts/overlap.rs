@@ -110,6 +110,9 @@ impl DeviceView<'_> {
     }
 
     fn note_mode(&self, mode: usize, state: &ModeState, density: Option<f64>, limits: &OnState) {
+        if !self.in_words {
+            return;
+        }
         let name = self.world.reach.mode_name(mode);
         let in_mode = name.map_or(String::new(), |name| format!(" in mode `{name}`"));
         let density = density.map_or(String::new(), |density| format!(", at {}", show(density, Dim::DENSITY)));
@@ -174,6 +177,9 @@ impl DeviceView<'_> {
     }
 
     fn note_transitions(&self, crossing: &[&Transition], duty: f64, limits: &OnState, states: &[ModeState]) {
+        if !self.in_words {
+            return self.note(|evidence| evidence.badness = duty);
+        }
         let modes = &self.world.deck.modes;
         let names: Vec<String> =
             crossing.iter().map(|t| format!("`{}` to `{}`", modes[t.from].name, modes[t.to].name)).collect();
@@ -239,6 +245,9 @@ impl DeviceView<'_> {
 
     /// The channel current that is known, amperes, and whether it is exact (else an upper bound).
     pub(super) fn known_current(&self) -> Option<(f64, bool)> {
+        if self.world.deck.currents_through.is_empty() {
+            return None;
+        }
         let path = self.path();
         let declared = self.world.deck.currents_through.iter().find(|current| current.at.matches_path(&path))?;
         let amps = declared.amps.lo.abs().max(declared.amps.hi.abs());

@@ -118,6 +118,13 @@ impl DeviceView<'_> {
     }
 
     fn note_violated(&self, violated: &[(&Rating, Excess)], rating: &Rating, worst: Excess) {
+        if !self.in_words {
+            self.note(|evidence| {
+                evidence.pairs = violated.iter().map(|(rating, _)| rating.name.clone()).collect();
+                evidence.badness = worst.volts;
+            });
+            return;
+        }
         let volts = |value: f64| show(value, Dim::VOLT);
         let mode = self.world.reach.mode_name(worst.mode);
         let over = worst.range.hi - rating.range.hi >= rating.range.lo - worst.range.lo || !worst.range.lo.is_finite();
@@ -177,6 +184,9 @@ impl DeviceView<'_> {
     }
 
     fn note_open(&self, open: &[&Rating]) {
+        if !self.in_words {
+            return self.note(|evidence| evidence.pairs = open.iter().map(|rating| rating.name.clone()).collect());
+        }
         let mut pins: Vec<usize> = open.iter().flat_map(|rating| [rating.plus, rating.minus]).collect();
         pins.sort_unstable();
         pins.dedup();

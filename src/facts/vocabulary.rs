@@ -5,6 +5,8 @@ use super::{ClassView, DeviceView, InstanceView, NetView};
 use crate::declared::{Class, Subject};
 use crate::expr::{Arg, ArgType, Scope, Type, Value, Vocabulary};
 use crate::quantity::Dim;
+use hashbrown::HashMap;
+use std::sync::OnceLock;
 
 /// How a name gets its value.
 #[derive(Clone, Copy)]
@@ -334,7 +336,10 @@ fn high(range: Option<crate::declared::Range>) -> Option<Value> {
 }
 
 fn find(subject: Subject, name: &str) -> Option<&'static Attribute> {
-    ATTRIBUTES.iter().find(|attribute| attribute.subject == subject && attribute.name == name)
+    static INDEX: OnceLock<HashMap<(Subject, &'static str), &'static Attribute>> = OnceLock::new();
+    let index = INDEX
+        .get_or_init(|| ATTRIBUTES.iter().map(|attribute| ((attribute.subject, attribute.name), attribute)).collect());
+    index.get(&(subject, name)).copied()
 }
 
 /// The value of a device's attribute that its class alone decides: none where the name is another kind of attribute, `Some(None)`

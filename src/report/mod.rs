@@ -10,7 +10,7 @@ mod visible;
 pub use summary::{Counts, Judged, Pairs, Summary};
 
 use crate::diag::{Diagnostic, Severity};
-use crate::source::SourceMap;
+use crate::source::{FileId, SourceMap};
 use std::collections::HashMap;
 
 /// The caution that every report ends with.
@@ -28,9 +28,15 @@ pub struct Report {
 impl Report {
     /// Orders the diagnostics and gives them their fingerprints.
     pub fn sort(&mut self, sources: &SourceMap) {
+        let mut files: Vec<(&str, FileId)> = sources.files().map(|(id, file)| (file.path(), id)).collect();
+        files.sort_unstable();
+        let mut rank = vec![0u32; files.len()];
+        for (at, (_, id)) in files.iter().enumerate() {
+            rank[id.0 as usize] = at as u32;
+        }
+        let place = |diagnostic: &Diagnostic| (rank[diagnostic.span.file.0 as usize], diagnostic.span.start);
         self.diagnostics.sort_by(|a, b| {
-            let key = |d: &Diagnostic| (sources.file(d.span.file).path().to_owned(), d.span.start, d.code.clone());
-            key(a).cmp(&key(b)).then_with(|| a.message.cmp(&b.message))
+            place(a).cmp(&place(b)).then_with(|| a.code.cmp(&b.code)).then_with(|| a.message.cmp(&b.message))
         });
         let mut seen: HashMap<u64, u32> = HashMap::new();
         for diagnostic in &mut self.diagnostics {

@@ -26,6 +26,19 @@ pub struct Counts {
     pub waived: u64,
 }
 
+impl Counts {
+    /// Counts further findings of one severity.
+    pub fn add(&mut self, severity: Severity, count: u64) {
+        let slot = match severity {
+            Severity::Error => &mut self.error,
+            Severity::Warning => &mut self.warning,
+            Severity::Note => &mut self.note,
+            Severity::Silent => return,
+        };
+        *slot = slot.saturating_add(count);
+    }
+}
+
 /// What was judged.
 #[derive(Clone, Debug, Default, PartialEq, Eq)]
 pub struct Judged {
