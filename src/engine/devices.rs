@@ -6,7 +6,7 @@ use super::verdict::{Asked, ask};
 use crate::declared::{Class, Rule, Subject};
 use crate::design::DeviceIx;
 use crate::diag::{Diagnostic, Verdict};
-use crate::expr::{Arg, Scope, Value, evaluate};
+use crate::expr::{Arg, Expr, Node, Scope, Value, evaluate, specialise};
 use crate::facts::{DeviceView, Evidence, World, vocabulary};
 use crate::reach::ReachIx;
 use crate::source::Span;
@@ -30,7 +30,7 @@ impl Asked for DeviceView<'_> {
 
 /// Asks the device rules of every device in every context.
 pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> (Vec<Diagnostic>, Vec<(u32, Verdict, u64)>) {
-    let by_class: Vec<Vec<u32>> = world.deck.classes.iter().map(|class| rules_for(class, rules)).collect();
+    let by_class: Vec<Vec<(u32, Rule)>> = world.deck.classes.iter().map(|class| rules_for(class, rules)).collect();
     let mut folds: Folds<(ReachIx, DeviceIx)> = Folds::new();
     for at in world.reach.indices() {
         let (context, count) = (world.context(at), world.reach.get(at).count);
@@ -42,10 +42,10 @@ pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> (Vec<Diagnostic>, Vec<
                 continue;
             }
             let view = DeviceView::for_verdict(world, at, device, &world.deck.classes[class as usize]);
-            for &rule in asked {
-                if let Some((verdict, evidence)) = ask(rules[rule as usize], &view) {
+            for (rule, asked) in asked {
+                if let Some((verdict, evidence)) = ask(asked, &view) {
                     let (file, start) = template.device_card(device);
-                    let statement = (rule, verdict, Span::new(file, start, start));
+                    let statement = (*rule, verdict, Span::new(file, start, start));
                     folds.add(statement, at, count, (at, device), evidence);
                 }
             }
@@ -55,17 +55,30 @@ pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> (Vec<Diagnostic>, Vec<
     (folds.all.into_iter().map(|folded| finding::of_device(world, rules, folded)).collect(), left_out)
 }
 
-/// The rules that can apply to a class at all: those whose `where` is not false whatever the instance is.
-fn rules_for(class: &Class, rules: &[&Rule]) -> Vec<u32> {
-    let may = |rule: &Rule| match &rule.applies {
-        Some(applies) => {
-            let scope = ClassOnly { class, undeclared: std::cell::Cell::new(false) };
-            evaluate(applies, &scope) != Value::Bool(false) && !scope.undeclared.get()
-        }
-        None => true,
+/// The rules that can apply to a class at all, those whose `where` is not false whatever the instance is; each with its
+/// conditions made shorter by what the class decides.
+fn rules_for(class: &Class, rules: &[&Rule]) -> Vec<(u32, Rule)> {
+    let devices = rules.iter().enumerate().filter(|(_, rule)| rule.subject == Subject::Device);
+    devices.filter_map(|(index, rule)| Some((index as u32, for_class(class, rule)?))).collect()
+}
+
+fn for_class(class: &Class, rule: &Rule) -> Option<Rule> {
+    let known = |expr: &Expr| {
+        let scope = ClassOnly { class, undeclared: std::cell::Cell::new(false) };
+        let value = evaluate(expr, &scope);
+        if scope.undeclared.get() { Value::Unknown } else { value }
     };
-    let found = rules.iter().enumerate().filter(|(_, rule)| rule.subject == Subject::Device && may(rule));
-    found.map(|(index, _)| index as u32).collect()
+    let mut own = rule.clone();
+    if let Some(applies) = &rule.applies {
+        let scope = ClassOnly { class, undeclared: std::cell::Cell::new(false) };
+        if evaluate(applies, &scope) == Value::Bool(false) || scope.undeclared.get() {
+            return None;
+        }
+        own.applies = Some(specialise(applies, &known))
+            .filter(|short| !matches!(short.nodes.as_slice(), [Node::Name(name)] if name == "true"));
+    }
+    own.require = rule.require.as_ref().map(|require| specialise(require, &known));
+    Some(own)
 }
 
 /// What is known of a device from its class alone; all else is unknown.

@@ -49,6 +49,91 @@ pub trait Scope {
 /// Numbers nearer than this part of the larger one count as equal in rules: 5 ns × 2 MHz is 1 %.
 pub const TOLERANCE: f64 = 1e-9;
 
+/// The condition with all parts that `known` decides put in: `true and X` becomes `X`, a part that is unknown stays as it is. What
+/// is asked of a million devices is asked shorter, with the same answer.
+pub fn specialise(expr: &Expr, known: &dyn Fn(&Expr) -> Value) -> Expr {
+    let mut pieces = vec![(expr.root(), false)];
+    let mut made: Vec<Expr> = Vec::new();
+    while let Some((at, ready)) = pieces.pop() {
+        let part = || subtree(expr, at);
+        match (&expr.nodes[at as usize], ready) {
+            (&Node::Binary(Binary::And | Binary::Or, left, right), false) => {
+                pieces.extend([(at, true), (right, false), (left, false)])
+            }
+            (&Node::Binary(operator @ (Binary::And | Binary::Or), ..), true) => {
+                if let (Some(right), Some(left)) = (made.pop(), made.pop()) {
+                    made.push(join(operator, left, right));
+                }
+            }
+            _ => made.push(match known(&part()) {
+                Value::Bool(holds) => constant(holds),
+                _ => part(),
+            }),
+        }
+    }
+    made.pop().unwrap_or_else(|| expr.clone())
+}
+
+fn constant(holds: bool) -> Expr {
+    Expr { nodes: vec![Node::Name(holds.to_string())], places: vec![0..0] }
+}
+
+fn join(operator: Binary, left: Expr, right: Expr) -> Expr {
+    let decides = constant(operator == Binary::Or);
+    let passes = constant(operator == Binary::And);
+    match () {
+        () if left == decides || right == decides => decides,
+        () if left == passes => right,
+        () if right == passes => left,
+        () => {
+            let offset = left.nodes.len() as u32;
+            let (l, r) = (left.root(), right.root() + offset);
+            let mut whole = left;
+            whole.nodes.extend(right.nodes.into_iter().map(|node| moved(node, |at| at + offset)));
+            whole.places.extend(right.places);
+            whole.nodes.push(Node::Binary(operator, l, r));
+            whole.places.push(0..0);
+            whole
+        }
+    }
+}
+
+/// A node with its operands renumbered.
+fn moved(node: Node, to: impl Fn(u32) -> u32) -> Node {
+    match node {
+        Node::Call { name, args } => Node::Call { name, args: args.into_iter().map(to).collect() },
+        Node::Unary(operator, a) => Node::Unary(operator, to(a)),
+        Node::Binary(operator, a, b) => Node::Binary(operator, to(a), to(b)),
+        Node::Choose(a, b, c) => Node::Choose(to(a), to(b), to(c)),
+        leaf => leaf,
+    }
+}
+
+/// The part of an expression whose root is `at`, as an expression of its own. Operands stand before their operators.
+fn subtree(expr: &Expr, at: u32) -> Expr {
+    let mut wanted = vec![false; at as usize + 1];
+    wanted[at as usize] = true;
+    for node in (0..=at).rev().filter(|&node| node <= at) {
+        if !wanted[node as usize] {
+            continue;
+        }
+        let operands: Vec<u32> = match &expr.nodes[node as usize] {
+            Node::Call { args, .. } => args.clone(),
+            &Node::Unary(_, a) => vec![a],
+            &Node::Binary(_, a, b) => vec![a, b],
+            &Node::Choose(a, b, c) => vec![a, b, c],
+            _ => Vec::new(),
+        };
+        operands.into_iter().for_each(|operand| wanted[operand as usize] = true);
+    }
+    let kept: Vec<u32> = (0..=at).filter(|&node| wanted[node as usize]).collect();
+    let place = |node: u32| kept.binary_search(&node).unwrap_or(0) as u32;
+    Expr {
+        nodes: kept.iter().map(|&node| moved(expr.nodes[node as usize].clone(), place)).collect(),
+        places: kept.iter().map(|&node| expr.places[node as usize].clone()).collect(),
+    }
+}
+
 /// The value of a rule's expression.
 ///
 /// Logic is three-valued after Kleene (S. C. Kleene, *Introduction to Metamathematics*, 1952, section 64; from memory):
@@ -56,6 +141,15 @@ pub const TOLERANCE: f64 = 1e-9;
 /// [`TOLERANCE`]: `<=` holds for equal ones, `<` does not. Texts are compared without regard to ASCII case. What has no
 /// value (a division by zero, a comparison of a voltage with a current) is unknown.
 pub fn evaluate(expr: &Expr, scope: &dyn Scope) -> Value {
+    if let [Node::Name(name)] = expr.nodes.as_slice() {
+        return named(scope, name);
+    }
+    if let [Node::Name(name), Node::Unary(Unary::Not, _)] = expr.nodes.as_slice() {
+        return match named(scope, name) {
+            Value::Bool(holds) => Value::Bool(!holds),
+            _ => Value::Unknown,
+        };
+    }
     match walk(expr, &Rules { expr, scope }) {
         Some(Ok(value)) => value,
         None => Value::Unknown,

@@ -18,7 +18,7 @@ mod template;
 mod walk;
 
 pub use check::{ArgType, Type, Vocabulary, check};
-pub use evaluate::{Arg, Scope, TOLERANCE, Value, evaluate};
+pub use evaluate::{Arg, Scope, TOLERANCE, Value, evaluate, specialise};
 pub use parse::{Fault, Syntax, parse};
 pub use spice::{Parameters, doubts, evaluate_spice};
 pub use template::{Piece, Template};

@@ -98,6 +98,9 @@ impl DeviceView<'_> {
 
     /// Whether all rated pairs stay inside their ratings in every mode; notes those that do not, the worst one with numbers.
     pub(super) fn ratings_held(&self) -> Value {
+        if self.class.ratings.iter().all(|rating| self.judge_rating(rating).0 == Outcome::Proven) {
+            return Value::Bool(true);
+        }
         let judged: Vec<_> = self.class.ratings.iter().map(|rating| (rating, self.judge_rating(rating))).collect();
         let violated: Vec<_> =
             judged.iter().filter_map(|(rating, (_, worst))| worst.map(|worst| (*rating, worst))).collect();

@@ -75,7 +75,12 @@ pub(super) struct Shared<'s> {
     known: RefCell<HashMap<InputKey, u32>>,
     answers: RefCell<Vec<Rc<Answer>>>,
     asked: RefCell<Vec<(ContextIx, u32, Inputs)>>,
+    /// Finished states of large cells, by the answer's number: running them once more would cost more than keeping them.
+    kept: RefCell<HashMap<u32, State>>,
 }
+
+/// Cells of at least this many nets keep the state of their answers.
+const LARGE_CELL: usize = 4096;
 
 impl<'s> Shared<'s> {
     pub(super) fn new(reach: &'s Reach<'_>, frames: &'s Frames) -> Shared<'s> {
@@ -91,6 +96,7 @@ impl<'s> Shared<'s> {
             known: RefCell::default(),
             answers: RefCell::default(),
             asked: RefCell::default(),
+            kept: RefCell::default(),
         }
     }
 
@@ -100,11 +106,15 @@ impl<'s> Shared<'s> {
         if let Some(&number) = self.known.borrow().get(&key) {
             return (number, Rc::clone(&self.answers.borrow()[number as usize]));
         }
-        let mut solver = Solver::new(self, at, mode, &inputs, false);
+        let large = self.design.template(self.contexts.get(at).variant).nets.len() >= LARGE_CELL;
+        let mut solver = Solver::new(self, at, mode, &inputs, large);
         solver.run();
         let answer = Rc::new(Answer::of(&solver.state, solver.template, solver.context));
         let number = self.answers.borrow().len() as u32;
         self.answers.borrow_mut().push(Rc::clone(&answer));
+        if large {
+            self.kept.borrow_mut().insert(number, std::mem::take(&mut solver.state));
+        }
         let mut known = self.known.borrow_mut();
         // Told its own answer, the context adds nothing more: asking again is answered at once, at every level.
         known.insert(inputs.with(&answer).key(at, mode), number);
@@ -112,6 +122,12 @@ impl<'s> Shared<'s> {
         drop(known);
         self.asked.borrow_mut().push((at, mode, inputs));
         (number, answer)
+    }
+
+    /// The finished state of an answer to these inputs, if it was kept; it is given away.
+    fn kept_state(&self, key: &InputKey) -> Option<State> {
+        let number = *self.known.borrow().get(key)?;
+        self.kept.borrow_mut().remove(&number)
     }
 
     /// The rails that are declared in a context itself, with their values in each frame.
@@ -361,7 +377,10 @@ impl<'e> Expander<'e> {
         let (mut tied, mut open, mut bounds, mut caps) = (Vec::new(), Vec::new(), Vec::new(), Vec::new());
         for (mode, inputs) in inputs.iter().enumerate() {
             let mut solver = Solver::new(&self.shared, at, mode as u32, inputs, true);
-            solver.run();
+            match self.shared.kept_state(&inputs.key(at, mode as u32)) {
+                Some(state) => solver.state = state,
+                None => solver.run(),
+            }
             states.push(std::mem::take(&mut solver.state));
             (tied, open) = (solver.tied, solver.open);
             bounds.push(solver.bounds);

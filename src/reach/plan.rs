@@ -84,6 +84,8 @@ pub(super) struct Plan {
     /// Nets that a body, source, resistor or diode stands on.
     pub(super) carries: Vec<bool>,
     pub(super) bounds: PairBounds,
+    /// Nets of which some pair bound speaks.
+    pub(super) bounded: Vec<bool>,
     pub(super) sources: Vec<SourceLink>,
     shown: Shown,
 }
@@ -192,6 +194,11 @@ impl<'m> Maker<'m> {
         }
         self.plan.group_has_rail = has_rail;
         self.gather_open();
+        self.plan.bounded = vec![false; self.template.nets.len()];
+        for (x, y, _) in self.plan.bounds.iter() {
+            self.plan.bounded[x.0 as usize] = true;
+            self.plan.bounded[y.0 as usize] = true;
+        }
         self.show();
         self.plan
     }

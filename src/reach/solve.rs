@@ -89,6 +89,9 @@ pub(super) struct Answer {
     pub(super) driven: Vec<bool>,
 }
 
+/// Cells of at most this many devices, and no instances, are swept whole.
+const SMALL_CELL: usize = 48;
+
 /// One run of the fixpoint.
 pub(super) struct Solver<'s> {
     pub(super) shared: &'s Shared<'s>,
@@ -298,6 +301,9 @@ impl<'s> Solver<'s> {
         for device in self.template.devices() {
             self.apply(device);
         }
+        if self.template.instances.is_empty() && self.template.device_count() <= SMALL_CELL {
+            return self.sweep();
+        }
         for instance in 0..self.template.instances.len() as u32 {
             self.ask.push_back(instance);
             self.asked[instance as usize] = true;
@@ -308,6 +314,17 @@ impl<'s> Solver<'s> {
             let Some(instance) = self.ask.pop_front() else { break };
             self.asked[instance as usize] = false;
             self.ask_instance(InstanceIx(instance));
+        }
+    }
+
+    /// A small cell needs no list of who stands where: all its devices are asked again until nothing changes.
+    fn sweep(&mut self) {
+        while !self.queue.is_empty() {
+            self.queue.clear();
+            self.queued.fill(false);
+            for device in self.template.devices() {
+                self.apply(device);
+            }
         }
     }
 
@@ -352,7 +369,14 @@ impl<'s> Solver<'s> {
     pub(super) fn inputs_for(&self, instance: InstanceIx) -> Inputs {
         let pins = self.template.instance_pins(instance);
         let frames = self.state.frames;
-        let mut inputs = Inputs::default();
+        let mut inputs = Inputs {
+            values: Vec::with_capacity(pins.len() * frames * 2),
+            driven: Vec::with_capacity(pins.len()),
+            fixed: Vec::with_capacity(pins.len()),
+            tied: Vec::with_capacity(pins.len()),
+            open: Vec::with_capacity(pins.len()),
+            ..Inputs::default()
+        };
         let mut distinct: Vec<(NetIx, u32)> = Vec::new();
         for (position, &net) in pins.iter().enumerate() {
             let net = self.context.root(net);
@@ -375,6 +399,8 @@ impl<'s> Solver<'s> {
         if !self.plan.bounds.is_empty() || !self.bounds.is_empty() {
             distinct.sort_unstable();
             distinct.dedup_by_key(|&mut (net, _)| net);
+            let spoken_of = |net: NetIx| self.plan.bounded[net.0 as usize] || !self.bounds.is_empty();
+            distinct.retain(|(net, _)| spoken_of(*net));
             for &(x, at_x) in distinct.iter().filter(|(net, _)| !self.state.fixed[net.0 as usize]) {
                 for &(y, at_y) in &distinct {
                     let range = self.plan.bounds.between(x, y).and(self.bounds.between(x, y));
@@ -389,7 +415,10 @@ impl<'s> Solver<'s> {
 
     /// What clamps and body diodes say of V(x) − V(y).
     pub(super) fn pair_bound(&self, x: NetIx, y: NetIx) -> Interval {
-        if self.state.fixed[x.0 as usize] && self.state.fixed[y.0 as usize] {
+        let spoken_of = |net: NetIx| self.plan.bounded[net.0 as usize];
+        if self.bounds.is_empty() && !(spoken_of(x) && spoken_of(y))
+            || self.state.fixed[x.0 as usize] && self.state.fixed[y.0 as usize]
+        {
             return Interval::ANY;
         }
         self.plan.bounds.between(x, y).and(self.bounds.between(x, y))

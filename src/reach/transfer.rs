@@ -78,12 +78,12 @@ impl Solver<'_> {
         if threshold == f64::NEG_INFINITY {
             return true;
         }
-        let drive = match limited {
-            _ if g == x => 0.0,
-            Side::Hi => self.highest(g, x),
-            Side::Lo => self.highest(x, g),
-        };
-        drive > threshold
+        let (high, low) = if limited == Side::Hi { (g, x) } else { (x, g) };
+        if g == x {
+            return threshold < 0.0;
+        }
+        // What clamps say is asked only where the frames alone would let it conduct.
+        self.state.above(high, low) > threshold && self.pair_bound(high, low).hi > threshold
     }
 
     /// A junction: its cathode follows its anode up, its anode follows its cathode down.
