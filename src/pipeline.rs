@@ -205,9 +205,7 @@ fn judge(world: World<'_>, mut seen: Seen, job: &Job) -> (Report, bool) {
     for beyond in judged.beyond.iter().filter(|beyond| beyond.severity != Severity::Silent) {
         summary.findings.add(beyond.severity, beyond.instances);
         let (rule, instances, most) = (&beyond.rule, beyond.instances, engine::MOST_FINDINGS);
-        summary.not_looked_at.push(format!(
-            "in words: {instances} more of {rule} beyond the first {most}, which are counted and not listed"
-        ));
+        summary.not_listed.push(format!("{instances} more of {rule}, beyond the first {most} statements"));
     }
     (Report { diagnostics, summary }, could_not)
 }

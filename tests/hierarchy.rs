@@ -174,14 +174,17 @@ fn job() -> Job {
     Job { netlists: vec!["design.sp".into()], decks: vec!["deck.yaml".into()], ..Job::default() }
 }
 
+/// Lowest and highest voltage in microvolts, by path, mode and frame.
+type Reaches = BTreeMap<(String, Option<String>, String), (i64, i64)>;
+
 /// Reach of every net in every mode and frame, rounded.
-fn reaches(netlist: &str) -> Option<BTreeMap<(String, Option<String>, String), (i64, i64)>> {
+fn reaches(netlist: &str) -> Option<Reaches> {
     let (outcome, found) = trace(&files(netlist), &job(), &Quiet, &[]);
     if outcome.could_not {
         return None;
     }
     let rounded = |volts: f64| if volts.is_finite() { (volts * 1e6).round() as i64 } else { i64::MAX };
-    let rows = found.unwrap().into_iter().flat_map(|net| {
+    let rows = found.unwrap_or_default().into_iter().flat_map(|net| {
         let (path, mode) = (net.path.to_lowercase(), net.mode.clone());
         net.reach
             .into_iter()

@@ -5,6 +5,7 @@ use super::walk::{Algebra, walk};
 use super::{Binary, Expr, Node, Unary};
 use crate::quantity::{Dim, show_percent};
 use std::convert::Infallible;
+use std::ops::Range;
 
 /// What an expression is worth.
 #[derive(Clone, Debug, PartialEq)]
@@ -75,7 +76,7 @@ pub fn specialise(expr: &Expr, known: &dyn Fn(&Expr) -> Value) -> Expr {
 }
 
 fn constant(holds: bool) -> Expr {
-    Expr { nodes: vec![Node::Name(holds.to_string())], places: vec![0..0] }
+    Expr { nodes: vec![Node::Name(holds.to_string())], places: vec![Range::default()] }
 }
 
 fn join(operator: Binary, left: Expr, right: Expr) -> Expr {
@@ -92,7 +93,7 @@ fn join(operator: Binary, left: Expr, right: Expr) -> Expr {
             whole.nodes.extend(right.nodes.into_iter().map(|node| moved(node, |at| at + offset)));
             whole.places.extend(right.places);
             whole.nodes.push(Node::Binary(operator, l, r));
-            whole.places.push(0..0);
+            whole.places.push(Range::default());
             whole
         }
     }

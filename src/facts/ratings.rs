@@ -3,8 +3,10 @@
 use super::{DeviceView, World};
 use crate::declared::Rating;
 use crate::expr::Value;
+use crate::graph::rail;
 use crate::quantity::{Dim, show};
-use crate::reach::Interval;
+use crate::reach::trace::{Step, StepBy, trace};
+use crate::reach::{Interval, Side};
 
 /// How a rated pair came out over all modes.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -19,6 +21,9 @@ pub enum Outcome {
 
 /// Voltages closer than this are the same, volts.
 const TOLERANCE: f64 = 1e-6;
+
+/// Longer chains are cut in a finding; `drainwise trace` shows all of one.
+const MOST_STEPS: usize = 6;
 
 /// Counts of rated pairs of high-voltage devices, over all instances (saturating).
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
@@ -166,6 +171,43 @@ impl DeviceView<'_> {
             }
         });
         self.note_rails(worst.mode, &[rating.plus, rating.minus]);
+        let (plus, minus) = if over { (Side::Hi, Side::Lo) } else { (Side::Lo, Side::Hi) };
+        self.note_chain(worst.mode, rating.plus, plus);
+        self.note_chain(worst.mode, rating.minus, minus);
+    }
+
+    /// Notes the devices that brought a pin's net to one end of its range, from the rail on, and where that rail is declared.
+    fn note_chain(&self, mode: usize, pin: usize, side: Side) {
+        let Some(net) = self.net(pin) else { return };
+        let steps = trace(self.world.reach, self.at, mode, net, 0, side);
+        if steps.len() < 2 {
+            return;
+        }
+        let ends = |step: &Step| format!("{} to {}", step.net, show(step.volts, Dim::VOLT));
+        for step in steps.iter().take(MOST_STEPS) {
+            let place = match &step.by {
+                StepBy::Rail(Some(slot)) => Some((
+                    rail(self.world.deck, *slot).place,
+                    format!("from this rail: {} at {}", step.net, show(step.volts, Dim::VOLT)),
+                )),
+                StepBy::Device(device, why) => {
+                    let variant = self.world.contexts.get(step.context).variant;
+                    let card = self.design().device_card(variant, *device);
+                    card.fields
+                        .words
+                        .first()
+                        .map(|word| (word.span(card.file), format!("brings {}: {why}", ends(step))))
+                }
+                _ => None,
+            };
+            if let Some((span, words)) = place {
+                self.note(|evidence| {
+                    if !evidence.places.iter().any(|(known, _)| *known == span) {
+                        evidence.places.push((span, words));
+                    }
+                });
+            }
+        }
     }
 
     /// The reach of a pin's net against ground, in words.

@@ -7,6 +7,7 @@ use super::state::{NOTHING, OUTSIDE, Side, State};
 use super::terminals::Terminals;
 use crate::design::{DeviceIx, InstanceIx, NetIx};
 use crate::graph::{ContextIx, RailSlot};
+use std::borrow::Cow;
 
 /// One step of a chain, from the rail to the net asked for.
 #[derive(Clone, Debug, PartialEq)]
@@ -38,9 +39,9 @@ pub enum StepBy {
 const MOST_STEPS: usize = 200;
 
 /// A place on the way back: a finished state of a context, and how to get to the cell above.
-struct Here {
+struct Here<'w> {
     context: ContextIx,
-    state: State,
+    state: Cow<'w, State>,
     /// The cell above: its place in the list of places, and the instance; none for the context that the walk began in.
     above: Option<(usize, InstanceIx)>,
     reach: Option<ReachIx>,
@@ -63,16 +64,16 @@ struct Walk<'w, 'r> {
     mode: usize,
     frame: usize,
     side: Side,
-    places: Vec<Here>,
+    places: Vec<Here<'w>>,
     steps: Vec<Step>,
 }
 
-impl Walk<'_, '_> {
-    fn reach_place(&self, at: ReachIx) -> Here {
+impl<'w> Walk<'w, '_> {
+    fn reach_place(&self, at: ReachIx) -> Here<'w> {
         let here = self.reach.get(at);
         Here {
             context: here.context,
-            state: here.states[self.mode].clone(),
+            state: Cow::Borrowed(&here.states[self.mode]),
             above: None,
             reach: Some(at),
             path: self.reach.path(at),
@@ -182,7 +183,13 @@ impl Walk<'_, '_> {
         } else {
             format!("{}.{name}", self.places[place].path)
         };
-        self.places.push(Here { context: *child, state, above: Some((place, instance)), reach: None, path });
+        self.places.push(Here {
+            context: *child,
+            state: Cow::Owned(state),
+            above: Some((place, instance)),
+            reach: None,
+            path,
+        });
         Some((self.places.len() - 1, inner))
     }
 

@@ -75,6 +75,8 @@ pub struct Summary {
     pub findings: Counts,
     /// What was not looked at, a line each.
     pub not_looked_at: Vec<String>,
+    /// Findings that are counted and not listed, a line each.
+    pub not_listed: Vec<String>,
     /// What was judged.
     pub judged: Judged,
 }
@@ -143,6 +145,9 @@ impl Summary {
         }
         for line in &self.not_looked_at {
             lines.push(format!("not judged {line}"));
+        }
+        for line in &self.not_listed {
+            lines.push(format!("not listed {line}"));
         }
         lines
     }
