@@ -1,6 +1,7 @@
 //! The analysis over the hierarchy gives what the flattened netlist would give: random hierarchies are written out twice, once as
 //! cells and once flat, and their reaches and findings are compared. The flat form is made here, by text, and shares no code with
 //! the program. (An internal property, so it needs no outside source.)
+#![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic, reason = "a test that cannot go on must stop")]
 
 use drainwise::load::Memory;
 use drainwise::pipeline::{Job, Progress, lint};
