@@ -15,7 +15,12 @@ use std::path::Path;
 
 /// Reads a netlist and proposes a deck for it.
 pub fn propose(files: &dyn Files, netlist: &Path, progress: &dyn Progress) -> (Outcome, Option<String>) {
-    let plain = Job { netlists: vec![netlist.to_owned()], decks: vec!["builtin:ldmos".into()], ..Job::default() };
+    let plain = Job {
+        netlists: vec![netlist.to_owned()],
+        decks: vec!["builtin:ldmos".into()],
+        all_voltages: true,
+        ..Job::default()
+    };
     let models = match with_deck(files, &plain, progress, models) {
         Ok((_, models)) => models,
         Err(outcome) => return (*outcome, None),

@@ -5,7 +5,8 @@ use crate::declared::{Deck, Rule};
 use crate::design::{Design, elaborate};
 use crate::diag::{Diagnostic, Severity};
 use crate::engine;
-use crate::facts::{World, ratings::count_pairs, vocabulary::vocabulary};
+use crate::facts::vocabulary::{asks_for_voltages, vocabulary};
+use crate::facts::{World, ratings::count_pairs};
 use crate::graph::Contexts;
 use crate::load::{Files, LoadRequest, load};
 use crate::names::{Names, nearest};
@@ -28,6 +29,8 @@ pub struct Job {
     pub only: Vec<String>,
     /// Only these modes.
     pub modes: Vec<String>,
+    /// Voltages are wanted whatever the rules ask for.
+    pub all_voltages: bool,
     /// The day against which waivers are held; none: today.
     pub today: Option<Date>,
 }
@@ -129,9 +132,13 @@ pub fn with_world<R>(
     diagnostics.append(&mut design.diagnostics);
     let mut contexts = Contexts::new(&design, &deck);
     diagnostics.append(&mut contexts.diagnostics);
-    progress.stage("computing voltages");
     let modes: Vec<usize> = (0..deck.modes.len()).filter(|&mode| job.modes.contains(&deck.modes[mode].name)).collect();
-    let mut reach = Reach::new(&design, &contexts, &deck, &modes);
+    let mut reach = if in_force(&deck, job).any(asks_for_voltages) || job.all_voltages {
+        progress.stage("computing voltages");
+        Reach::new(&design, &contexts, &deck, &modes)
+    } else {
+        Reach::structural(&design, &contexts, &deck)
+    };
     diagnostics.append(&mut reach.diagnostics);
     let seen = Seen {
         diagnostics,
@@ -175,12 +182,17 @@ pub fn lint(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Outcome {
     Outcome { sources, report, could_not }
 }
 
+/// The rules that a job asks.
+fn in_force<'d>(deck: &'d Deck, job: &'d Job) -> impl Iterator<Item = &'d Rule> {
+    let wanted = |rule: &&Rule| job.only.is_empty() || job.only.contains(&rule.id);
+    deck.rules
+        .iter()
+        .filter(wanted)
+        .filter(|rule| (rule.severity, rule.unproven) != (Severity::Silent, Severity::Silent))
+}
+
 fn judge(world: World<'_>, mut seen: Seen, job: &Job) -> (Report, bool) {
-    let wanted = |rule: &&Rule| {
-        (job.only.is_empty() || job.only.contains(&rule.id))
-            && (rule.severity, rule.unproven) != (Severity::Silent, Severity::Silent)
-    };
-    let rules: Vec<&Rule> = world.deck.rules.iter().filter(wanted).collect();
+    let rules: Vec<&Rule> = in_force(world.deck, job).collect();
     let mut summary = summarise(world, &seen);
     let reading: Vec<Diagnostic> = std::mem::take(&mut seen.diagnostics);
     let is_hygiene = |diagnostic: &Diagnostic| diagnostic.code == "missing-include";
@@ -243,8 +255,9 @@ pub fn summarise(world: World<'_>, seen: &Seen) -> Summary {
             summary.high_voltage_devices = summary.high_voltage_devices.saturating_add(count);
         }
     }
-    let pairs = count_pairs(world);
-    summary.pairs = Some(Pairs { proven: pairs.proven, violated: pairs.violated, unproven: pairs.unproven });
+    let pairs = (!world.reach.modes.is_empty()).then(|| count_pairs(world));
+    summary.pairs =
+        pairs.map(|pairs| Pairs { proven: pairs.proven, violated: pairs.violated, unproven: pairs.unproven });
     summary.judged.netlists = seen.shown_netlists.clone();
     summary.judged.decks = seen.shown_decks.clone();
     summary.judged.tops = world.design.tops.iter().map(|&top| top_name(world.design, top)).collect();
@@ -283,6 +296,10 @@ fn not_looked_at(world: World<'_>, unjudged: u64) -> Vec<String> {
     let left_out: usize = world.reach.frames.iter().map(|frames| frames.left_out).sum();
     if left_out > 0 {
         lines.push(format!("differences against {left_out} of the rails: more ranges than reference nets are kept"));
+    }
+    if world.reach.modes.is_empty() {
+        lines.push("voltages: none of the rules asked for one".to_owned());
+        return lines;
     }
     if world.deck.rails.is_empty() && world.reach.frames.iter().all(|frames| frames.rails.len() <= 1) {
         lines.push("voltages: the deck declares no rails, so no rating could be judged".to_owned());

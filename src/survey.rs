@@ -44,6 +44,7 @@ const MOST_NETS: usize = 200;
 
 /// Runs the analyses and looks around.
 pub fn survey(files: &dyn Files, job: &Job, progress: &dyn Progress) -> (Outcome, Option<Survey>) {
+    let job = &Job { all_voltages: true, ..job.clone() };
     let loaded = match pipeline::read(files, job, progress) {
         Ok(loaded) => loaded,
         Err(outcome) => return (*outcome, None),

@@ -64,6 +64,7 @@ pub fn trace(
     progress: &dyn Progress,
     nets: &[String],
 ) -> (Outcome, Option<Vec<NetReach>>) {
+    let job = &Job { all_voltages: true, ..job.clone() };
     let loaded = match pipeline::read(files, job, progress) {
         Ok(loaded) => loaded,
         Err(outcome) => return (*outcome, None),

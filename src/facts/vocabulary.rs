@@ -2,8 +2,8 @@
 //! evaluator, suggestions and the reference page all read it.
 
 use super::{ClassView, DeviceView, InstanceView, NetView};
-use crate::declared::{Class, Subject};
-use crate::expr::{Arg, ArgType, Scope, Type, Value, Vocabulary};
+use crate::declared::{Class, Rule, Subject};
+use crate::expr::{Arg, ArgType, Expr, Node, Piece, Scope, Template, Type, Value, Vocabulary};
 use crate::quantity::Dim;
 use hashbrown::HashMap;
 use std::sync::OnceLock;
@@ -400,6 +400,33 @@ fn pin_type(what: &str) -> Option<Type> {
         "reach.min" | "reach.max" => Some(VOLTS),
         _ => None,
     }
+}
+
+/// Whether a rule asks for a voltage, or for something that follows from one.
+pub fn asks_for_voltages(rule: &Rule) -> bool {
+    let of_voltage = |name: &str| {
+        matches!(name, "ratings_held" | "swapped" | "gate_driven" | "overlap_held" | "power_held" | "v.min" | "v.max")
+            || name.contains("reach.")
+            || pair_name(name).is_some()
+    };
+    let in_template = |template: &Template| {
+        template.pieces.iter().any(|piece| match piece {
+            Piece::Expr { expr, .. } => asks(expr, &of_voltage),
+            Piece::Text(_) => false,
+        })
+    };
+    let conditions = rule.applies.iter().chain(&rule.require).any(|expr| asks(expr, &of_voltage));
+    let words = [Some(&rule.say), rule.say_unproven.as_ref(), rule.help.as_ref(), rule.settle.as_ref()];
+    conditions
+        || words.into_iter().flatten().any(in_template)
+        || rule.point.iter().any(|(_, template)| in_template(template))
+}
+
+fn asks(expr: &Expr, of_voltage: &dyn Fn(&str) -> bool) -> bool {
+    expr.nodes.iter().any(|node| match node {
+        Node::Name(name) | Node::Call { name, .. } => of_voltage(name),
+        _ => false,
+    })
 }
 
 /// The vocabulary of a subject, for checking rules.

@@ -232,6 +232,38 @@ impl<'r> Reach<'r> {
         &self.terminals
     }
 
+    /// The contexts alone, without a voltage: for runs whose rules ask for none. It has no modes.
+    pub fn structural(design: &'r Design<'r>, contexts: &'r Contexts, deck: &'r Deck) -> Reach<'r> {
+        let same = |at: &ContextIx| ReachIx(at.0);
+        let all = contexts.indices().map(|at| {
+            let context = contexts.get(at);
+            ReachContext {
+                context: at,
+                top: 0,
+                count: context.count,
+                parents: context.parents.iter().map(|(above, instance)| (same(above), *instance)).collect(),
+                children: context.children.iter().map(same).collect(),
+                states: Vec::new(),
+                tied: Vec::new(),
+                open: Vec::new(),
+                bounds: Vec::new(),
+                caps: Vec::new(),
+            }
+        });
+        Reach {
+            design,
+            contexts,
+            deck,
+            modes: Vec::new(),
+            frames: Vec::new(),
+            all: all.collect(),
+            diagnostics: Vec::new(),
+            plans: Plans { all: Vec::new() },
+            asked: Vec::new(),
+            terminals: Vec::new(),
+        }
+    }
+
     /// A context.
     pub fn get(&self, at: ReachIx) -> &ReachContext {
         &self.all[at.0 as usize]

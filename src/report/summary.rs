@@ -109,7 +109,7 @@ impl Summary {
             plural(counts.warning, "warning"),
             plural(counts.note, "note")
         ));
-        if self.pairs.is_none() {
+        if self.judged.tops.is_empty() {
             return lines;
         }
         let skipped = if self.cards_skipped > 0 {
