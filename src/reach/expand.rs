@@ -124,6 +124,11 @@ impl<'s> Shared<'s> {
         (number, answer)
     }
 
+    /// What contexts were asked, by the numbers of the answers.
+    pub(super) fn into_asked(self) -> Vec<(ContextIx, u32, Inputs)> {
+        self.asked.into_inner()
+    }
+
     /// The finished state of an answer to these inputs, if it was kept; it is given away.
     fn kept_state(&self, key: &InputKey) -> Option<State> {
         let number = *self.known.borrow().get(key)?;

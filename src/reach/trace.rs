@@ -42,6 +42,8 @@ const MOST_STEPS: usize = 200;
 struct Here<'w> {
     context: ContextIx,
     state: Cow<'w, State>,
+    /// What instances were asked in the run that made the state, by the numbers of its answers.
+    asked: Cow<'w, [(ContextIx, u32, Inputs)]>,
     /// The cell above: its place in the list of places, and the instance; none for the context that the walk began in.
     above: Option<(usize, InstanceIx)>,
     reach: Option<ReachIx>,
@@ -74,6 +76,7 @@ impl<'w> Walk<'w, '_> {
         Here {
             context: here.context,
             state: Cow::Borrowed(&here.states[self.mode]),
+            asked: Cow::Borrowed(&self.reach.asked[here.top as usize]),
             above: None,
             reach: Some(at),
             path: self.reach.path(at),
@@ -163,11 +166,11 @@ impl<'w> Walk<'w, '_> {
         let &(instance, number) = self.places[place].state.answers.get(answer as usize)?;
         let instance = InstanceIx(instance);
         let top = self.top_of(place);
-        let (child, mode, inputs) = &self.reach.asked[top as usize][number as usize];
-        let state = self.rerun(top, *child, *mode, inputs);
+        let (child, mode, inputs) = self.places[place].asked.get(number as usize)?.clone();
+        let (state, asked) = self.rerun(top, child, mode, &inputs);
         let outside = self.reach.contexts.get(self.places[place].context);
         let template = self.reach.design.template(outside.variant);
-        let inside = self.reach.contexts.get(*child);
+        let inside = self.reach.contexts.get(child);
         let below = self.reach.design.template(inside.variant);
         let (pins, boundary): (&[NetIx], Vec<NetIx>) = (template.instance_pins(instance), below.boundary().collect());
         let set_inside = |position: &usize| {
@@ -184,8 +187,9 @@ impl<'w> Walk<'w, '_> {
             format!("{}.{name}", self.places[place].path)
         };
         self.places.push(Here {
-            context: *child,
+            context: child,
             state: Cow::Owned(state),
+            asked: Cow::Owned(asked),
             above: Some((place, instance)),
             reach: None,
             path,
@@ -203,11 +207,14 @@ impl<'w> Walk<'w, '_> {
         self.places[place].reach.map_or(0, |at| self.reach.get(at).top)
     }
 
-    fn rerun(&self, top: u32, at: ContextIx, mode: u32, inputs: &Inputs) -> State {
+    /// Runs a context again with what it was told, and gives its state with what its own instances were asked.
+    fn rerun(&self, top: u32, at: ContextIx, mode: u32, inputs: &Inputs) -> (State, Vec<(ContextIx, u32, Inputs)>) {
         let shared = Shared::new(self.reach, &self.reach.frames[top as usize]);
         let mut solver = Solver::new(&shared, at, mode, inputs, true);
         solver.run();
-        solver.state
+        let state = std::mem::take(&mut solver.state);
+        drop(solver);
+        (state, shared.into_asked())
     }
 
     /// Which net a device took the value from, and why it came out as it did.
