@@ -12,7 +12,14 @@ pub struct Names {
     text: String,
     ends: Vec<u32>,
     table: HashTable<u32>,
+    /// Names asked for lately, by their hash: a rail's name comes up a million times.
+    recent: Vec<(u32, u32)>,
 }
+
+/// How many names are kept at hand.
+const RECENT: usize = 1024;
+/// No name.
+const NOBODY: u32 = u32::MAX;
 
 fn fold_hash(name: &[u8]) -> u64 {
     const K: u64 = 0x517c_c1b7_2722_0a95;
@@ -41,27 +48,45 @@ impl Names {
     /// The number of this name, new or known.
     pub fn intern(&mut self, name: &str) -> Sym {
         let hash = fold_hash(name.as_bytes());
-        let (text, ends) = (&self.text, &self.ends);
-        if let Some(&id) = self.table.find(hash, |&id| spelled(text, ends, id).eq_ignore_ascii_case(name)) {
+        let slot = hash as usize % RECENT;
+        if let Some(&(print, id)) = self.recent.get(slot)
+            && print == (hash >> 32) as u32
+            && id != NOBODY
+            && same(spelled(&self.text, &self.ends, id), name.as_bytes())
+        {
             return Sym(id);
+        }
+        let id = self.look_up(hash, name);
+        if self.recent.is_empty() {
+            self.recent = vec![(0, NOBODY); RECENT];
+        }
+        self.recent[slot] = ((hash >> 32) as u32, id);
+        Sym(id)
+    }
+
+    fn look_up(&mut self, hash: u64, name: &str) -> u32 {
+        let (text, ends) = (&self.text, &self.ends);
+        if let Some(&id) = self.table.find(hash, |&id| same(spelled(text, ends, id), name.as_bytes())) {
+            return id;
         }
         let id = self.ends.len() as u32;
         self.text.push_str(name);
         self.ends.push(self.text.len() as u32);
         let (text, ends) = (&self.text, &self.ends);
-        self.table.insert_unique(hash, id, |&id| fold_hash(spelled(text, ends, id).as_bytes()));
-        Sym(id)
+        self.table.insert_unique(hash, id, |&id| fold_hash(spelled(text, ends, id)));
+        id
     }
 
     /// The number of this name if it is known.
     pub fn find(&self, name: &str) -> Option<Sym> {
         let hash = fold_hash(name.as_bytes());
-        self.table.find(hash, |&id| spelled(&self.text, &self.ends, id).eq_ignore_ascii_case(name)).map(|&id| Sym(id))
+        self.table.find(hash, |&id| same(spelled(&self.text, &self.ends, id), name.as_bytes())).map(|&id| Sym(id))
     }
 
     /// The spelling seen first.
     pub fn text(&self, name: Sym) -> &str {
-        spelled(&self.text, &self.ends, name.0)
+        let (start, end) = bounds(&self.ends, name.0);
+        &self.text[start..end]
     }
 
     /// How many names there are.
@@ -75,9 +100,19 @@ impl Names {
     }
 }
 
-fn spelled<'a>(text: &'a str, ends: &[u32], id: u32) -> &'a str {
+fn bounds(ends: &[u32], id: u32) -> (usize, usize) {
     let start = if id == 0 { 0 } else { ends[id as usize - 1] };
-    &text[start as usize..ends[id as usize] as usize]
+    (start as usize, ends[id as usize] as usize)
+}
+
+fn spelled<'a>(text: &'a str, ends: &[u32], id: u32) -> &'a [u8] {
+    let (start, end) = bounds(ends, id);
+    &text.as_bytes()[start..end]
+}
+
+/// Whether two spellings are one name; most that are have the same letters.
+fn same(a: &[u8], b: &[u8]) -> bool {
+    a == b || a.eq_ignore_ascii_case(b)
 }
 
 /// A pattern of a deck: `*` is any run of characters, `?` any one, all else itself, without regard to ASCII case.

@@ -218,7 +218,10 @@ impl Card<'_> {
         }
         let last = self.count - 1;
         let (from, to) = (least + names + 1, last.min(self.row.most + names + 1));
-        let known = (from..=to).find(|&index| !self.word(index).quoted && is_model(self.word(index).of(self.text)));
+        // The usual place goes first: a net may be called as a model is.
+        let places = std::iter::once(usual + names + 1).filter(|place| (from..=to).contains(place)).chain(from..=to);
+        let known =
+            places.into_iter().find(|&index| !self.word(index).quoted && is_model(self.word(index).of(self.text)));
         let index = known.unwrap_or_else(|| self.likely_model(from, to));
         self.element(index - 1 - names, Some(self.word(index)), index + 1)
     }
