@@ -233,20 +233,19 @@ pub fn summarise(world: World<'_>, seen: &Seen) -> Summary {
     };
     let mut by_class = vec![0u64; world.deck.classes.len()];
     let mut unjudged = 0u64;
+    let mut by_type = vec![0u64; world.design.types.len()];
     for context in &world.contexts.all {
-        let template = world.design.template(context.variant);
-        let mut by_type = vec![0u64; world.design.types.len()];
-        for kind in &template.types {
-            by_type[kind.0 as usize] += 1;
+        for kind in &world.design.template(context.variant).types {
+            let total = &mut by_type[kind.0 as usize];
+            *total = total.saturating_add(context.count);
         }
-        for (kind, &here) in world.design.types.iter().zip(&by_type) {
-            let count = here.saturating_mul(context.count);
-            summary.devices = summary.devices.saturating_add(count);
-            match kind.class {
-                Some(class) => by_class[class as usize] = by_class[class as usize].saturating_add(count),
-                None if kind.classless || kind.misfit => unjudged = unjudged.saturating_add(count),
-                None => {}
-            }
+    }
+    for (kind, &count) in world.design.types.iter().zip(&by_type) {
+        summary.devices = summary.devices.saturating_add(count);
+        match kind.class {
+            Some(class) => by_class[class as usize] = by_class[class as usize].saturating_add(count),
+            None if kind.classless || kind.misfit => unjudged = unjudged.saturating_add(count),
+            None => {}
         }
     }
     for (class, &count) in world.deck.classes.iter().zip(&by_class).filter(|(_, count)| **count > 0) {

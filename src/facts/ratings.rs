@@ -5,7 +5,7 @@ use crate::declared::Rating;
 use crate::expr::Value;
 use crate::graph::rail;
 use crate::quantity::{Dim, show};
-use crate::reach::trace::{Step, StepBy, trace};
+use crate::reach::trace::{Step, StepBy, trace_in_cell};
 use crate::reach::{Interval, Side};
 
 /// How a rated pair came out over all modes.
@@ -179,8 +179,9 @@ impl DeviceView<'_> {
     /// Notes the devices that brought a pin's net to one end of its range, from the rail on, and where that rail is declared.
     fn note_chain(&self, mode: usize, pin: usize, side: Side) {
         let Some(net) = self.net(pin) else { return };
-        let steps = trace(self.world.reach, self.at, mode, net, 0, side);
-        if steps.len() < 2 {
+        let steps = trace_in_cell(self.world.reach, self.at, mode, net, 0, side);
+        let from_rail = steps.len() < 2 && steps.iter().all(|step| matches!(step.by, StepBy::Rail(_)));
+        if steps.is_empty() || from_rail {
             return;
         }
         let ends = |step: &Step| format!("{} to {}", step.net, show(step.volts, Dim::VOLT));

@@ -212,12 +212,15 @@ impl Work<'_, '_> {
         let pins = template.instance_pins(instance);
         let mut joined = Vec::new();
         let mut marks = Vec::new();
-        let mut first_on: HashMap<NetIx, u32> = HashMap::with_capacity(pins.len());
+        // Sorted, the positions of one net stand side by side, the first of them in front.
+        let mut by_net: Vec<(NetIx, u32)> =
+            pins.iter().zip(0..).map(|(&net, position)| (context.root(net), position)).collect();
+        by_net.sort_unstable();
+        for group in by_net.chunk_by(|a, b| a.0 == b.0) {
+            joined.extend(group[1..].iter().map(|&(_, position)| (group[0].1, position)));
+        }
+        joined.sort_unstable_by_key(|&(_, position)| position);
         for (position, &net) in pins.iter().enumerate() {
-            let first = *first_on.entry(context.root(net)).or_insert(position as u32);
-            if first != position as u32 {
-                joined.push((first, position as u32));
-            }
             let set = context.mark_set(net);
             if set != MarkSet(0) {
                 marks.push((position as u32, set));

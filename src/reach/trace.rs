@@ -52,7 +52,24 @@ struct Here<'w> {
 
 /// Walks back from one end of a net's range, and gives the chain from its beginning.
 pub fn trace(reach: &Reach<'_>, at: ReachIx, mode: usize, net: NetIx, frame: usize, side: Side) -> Vec<Step> {
-    let mut walk = Walk { reach, mode, frame, side, places: Vec::new(), steps: Vec::new() };
+    walk(reach, at, mode, net, (frame, side), true)
+}
+
+/// The same without going down into instances, whose cells would have to be computed again: cheap enough for every finding. A
+/// chain that comes out of an instance begins there.
+pub fn trace_in_cell(reach: &Reach<'_>, at: ReachIx, mode: usize, net: NetIx, frame: usize, side: Side) -> Vec<Step> {
+    walk(reach, at, mode, net, (frame, side), false)
+}
+
+fn walk(
+    reach: &Reach<'_>,
+    at: ReachIx,
+    mode: usize,
+    net: NetIx,
+    (frame, side): (usize, Side),
+    descend: bool,
+) -> Vec<Step> {
+    let mut walk = Walk { reach, mode, frame, side, descend, places: Vec::new(), steps: Vec::new() };
     let first = walk.reach_place(at);
     walk.places.push(first);
     let net = reach.contexts.get(reach.get(at).context).root(net);
@@ -66,6 +83,7 @@ struct Walk<'w, 'r> {
     mode: usize,
     frame: usize,
     side: Side,
+    descend: bool,
     places: Vec<Here<'w>>,
     steps: Vec<Step>,
 }
@@ -101,6 +119,7 @@ impl<'w> Walk<'w, '_> {
                 continue;
             }
             match answer_of(setter) {
+                Some(_) if !self.descend => return,
                 Some(answer) => match self.go_down(place, net, answer) {
                     Some((below, inner)) => (place, net) = (below, inner),
                     None => return,
