@@ -1,0 +1,201 @@
+//! Is the reach sound? Random circuits are simulated with ngspice, and no net that something drives may stand outside the
+//! reach that `drainwise trace` states for it, in any frame, in any mode. How wide the reaches are is measured too, so that
+//! "everything is possible" does not pass for an answer.
+//!
+//! The guarantee under test: if every rail stays in its declared range, current sources stay within their compliance, and no
+//! capacitor or inductor kicks a net, a quasi-static simulation never shows a driven net outside its reach. `bench.rs` says what
+//! the models are and how "driven" is decided; `patterns.rs` lists what the circuits are made of.
+//!
+//! Environment: `DRAINWISE_SOUNDNESS_SEED` (first seed, 1), `DRAINWISE_SOUNDNESS_COUNT` (circuits, 320),
+//! `DRAINWISE_SOUNDNESS_ONLY` (one seed: prints netlist, deck, voltages and reaches). Offending circuits are left in
+//! `target/soundness/`.
+#![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic, clippy::print_stdout, clippy::print_stderr)]
+
+mod analog;
+mod bench;
+mod builder;
+mod compare;
+mod logic;
+mod patterns;
+mod power;
+mod rails;
+mod report;
+mod rng;
+mod spice;
+
+use builder::Builder;
+use compare::{Case, Figures, Reaches};
+use rails::Vector;
+use spice::Outcome;
+use std::path::{Path, PathBuf};
+use std::process::Command;
+use std::sync::Mutex;
+use std::sync::atomic::{AtomicU64, Ordering};
+
+fn setting(name: &str) -> Option<u64> {
+    let text = std::env::var(name).ok()?;
+    Some(text.parse().unwrap_or_else(|_| panic!("{name}={text} is no number")))
+}
+
+fn folder() -> PathBuf {
+    let folder = Path::new(env!("CARGO_TARGET_TMPDIR")).parent().expect("target").join("soundness");
+    std::fs::create_dir_all(&folder).expect("target/soundness can be made");
+    folder
+}
+
+fn circuit(seed: u64) -> (Builder, Vec<Vector>) {
+    let mut b = patterns::grow(seed);
+    let mut rng = rng::Rng::new(seed ^ 0xF00D);
+    let vectors = b.world.vectors(&mut rng);
+    b.nets.retain(|n| !n.path.is_empty());
+    (b, vectors)
+}
+
+/// Runs `each` on every circuit, on as many threads as there are cores. The figures come out in the order of the seeds.
+fn every_circuit(count: u64, each: impl Fn(&Case, &mut Figures) + Sync) -> Figures {
+    let first = setting("DRAINWISE_SOUNDNESS_SEED").unwrap_or(1);
+    let folder = folder();
+    let next = AtomicU64::new(0);
+    let done = Mutex::new(Vec::new());
+    let work = || {
+        loop {
+            let i = next.fetch_add(1, Ordering::Relaxed);
+            if i >= count {
+                break;
+            }
+            let seed = first + i;
+            let (builder, vectors) = circuit(seed);
+            let outcomes = spice::simulate(&builder, seed, &vectors, &folder);
+            let mut figures = Figures::default();
+            let case = Case { seed, builder: &builder, vectors: &vectors, outcomes: &outcomes };
+            compare::count(&case, &mut figures);
+            each(&case, &mut figures);
+            if figures.failed == 0 {
+                let _ = std::fs::remove_file(folder.join(format!("bench{seed}.cir")));
+            }
+            done.lock().expect("no thread panicked").push((seed, figures));
+        }
+    };
+    let threads = std::thread::available_parallelism().map_or(1, usize::from);
+    std::thread::scope(|scope| {
+        for _ in 0..threads {
+            scope.spawn(work);
+        }
+    });
+    let mut done = done.into_inner().expect("no thread panicked");
+    done.sort_by_key(|(seed, _)| *seed);
+    report::total(done.into_iter().map(|(_, figures)| figures))
+}
+
+/// The reaches that the program states. The netlist and the deck stay in the folder where they were needed.
+fn trace(case: &Case, folder: &Path) -> Result<Reaches, String> {
+    let (netlist, deck) = (folder.join(format!("c{}.sp", case.seed)), folder.join(format!("c{}.yaml", case.seed)));
+    std::fs::write(&netlist, bench::netlist(case.builder, case.seed)).map_err(|e| e.to_string())?;
+    std::fs::write(&deck, bench::deck(case.builder)).map_err(|e| e.to_string())?;
+    let out = Command::new(env!("CARGO_BIN_EXE_drainwise"))
+        .arg("trace")
+        .arg(&netlist)
+        .arg("--deck")
+        .arg(&deck)
+        .args(["--format", "json"])
+        .output()
+        .map_err(|e| e.to_string())?;
+    if !out.status.success() {
+        let said = String::from_utf8_lossy(&out.stderr);
+        return Err(format!(
+            "trace ended with {}: {}",
+            out.status,
+            said.lines().take(12).collect::<Vec<_>>().join(" / ")
+        ));
+    }
+    compare::reaches(&String::from_utf8_lossy(&out.stdout))
+}
+
+fn tidy(seed: u64, folder: &Path) {
+    for end in ["sp", "yaml"] {
+        let _ = std::fs::remove_file(folder.join(format!("c{seed}.{end}")));
+    }
+}
+
+#[test]
+#[ignore = "needs ngspice; run by .ci/run"]
+fn no_driven_net_leaves_its_reach() {
+    let folder = folder();
+    if let Some(seed) = setting("DRAINWISE_SOUNDNESS_ONLY") {
+        return one(seed, &folder);
+    }
+    let count = setting("DRAINWISE_SOUNDNESS_COUNT").unwrap_or(320);
+    let figures = every_circuit(count, |case, figures| match trace(case, &folder) {
+        Ok(reaches) => {
+            let escapes = compare::compare(case, &reaches, figures);
+            compare::widths(case, Some(&reaches), figures);
+            if escapes == 0 && figures.trouble.is_empty() {
+                tidy(case.seed, &folder);
+            }
+        }
+        Err(why) => figures.trouble.push(format!("circuit {}: {why}", case.seed)),
+    });
+    let median = report::print(&figures);
+    report::simulations_hold(&figures);
+    assert!(figures.trouble.is_empty(), "{} circuits without an answer to compare", figures.trouble.len());
+    assert!(figures.escapes.is_empty(), "{} values escape their reach", figures.escapes.len());
+    assert!(median <= 1.5, "the median of reach width over simulated width is {median:.2}, above 1.5");
+    if count >= 300 {
+        assert!(figures.circuits >= 300, "only {} circuits", figures.circuits);
+        assert!(figures.in_ground >= 10_000, "only {} values compared against ground", figures.in_ground);
+    }
+}
+
+/// The circuits alone: do they simulate, and does every driven net stand between the supplies, give or take a junction?
+#[test]
+#[ignore = "needs ngspice; run by .ci/run"]
+fn random_circuits_simulate_and_stay_between_their_supplies() {
+    let count = setting("DRAINWISE_SOUNDNESS_COUNT").unwrap_or(40);
+    let figures = every_circuit(count, |case, figures| {
+        assert!((5..=60).contains(&case.builder.devices), "circuit {}: {} devices", case.seed, case.builder.devices);
+        compare::widths(case, None, figures);
+        between_supplies(case, figures);
+    });
+    report::print(&figures);
+    report::simulations_hold(&figures);
+    assert!(figures.trouble.is_empty(), "{} nets stand beyond the supplies", figures.trouble.len());
+    assert!(figures.driven as u64 >= 30 * count, "only {} driven values", figures.driven);
+}
+
+fn between_supplies(case: &Case, figures: &mut Figures) {
+    // A voltage source between nets may lift one of them; each was made with at most 1.5 V.
+    let lift = 1.5
+        * case
+            .builder
+            .cards
+            .iter()
+            .filter(|c| matches!(c, builder::Card::Source { name, .. } if name.starts_with('v')))
+            .count() as f64;
+    for (vector, outcome) in case.vectors.iter().zip(case.outcomes) {
+        let Outcome::Nets(nets) = outcome else { continue };
+        let lo = vector.volts.iter().copied().fold(0.0, f64::min) - 0.9 - lift;
+        let hi = vector.volts.iter().copied().fold(0.0, f64::max) + 0.9 + lift;
+        for (net, v) in case.builder.nets.iter().zip(nets) {
+            if let Some(v) = v.filter(|v| !(lo..=hi).contains(v)) {
+                figures.trouble.push(format!("circuit {}: {} ({}) stands at {v:.3} V", case.seed, net.path, net.kind));
+            }
+        }
+    }
+}
+
+/// One circuit, told in full.
+fn one(seed: u64, folder: &Path) {
+    let (builder, vectors) = circuit(seed);
+    println!("{}\n{}", bench::netlist(&builder, seed), bench::deck(&builder));
+    let outcomes = spice::simulate(&builder, seed, &vectors, folder);
+    let case = Case { seed, builder: &builder, vectors: &vectors, outcomes: &outcomes };
+    let reaches = trace(&case, folder);
+    report::tell(&case, reaches.as_ref().ok());
+    let mut figures = Figures::default();
+    compare::count(&case, &mut figures);
+    let reaches = reaches.unwrap_or_else(|why| panic!("{why}"));
+    compare::compare(&case, &reaches, &mut figures);
+    compare::widths(&case, Some(&reaches), &mut figures);
+    report::print(&figures);
+    assert!(figures.trouble.is_empty() && figures.escapes.is_empty(), "circuit {seed} fails");
+}
