@@ -1,2 +1,7 @@
-//! x
-fn main() {}
+//! The program `drainwise`: everything is in the library.
+
+use std::process::ExitCode;
+
+fn main() -> ExitCode {
+    ExitCode::from(drainwise::cli::run())
+}

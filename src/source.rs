@@ -90,6 +90,12 @@ impl SourceFile {
         LineColumn { line: line as u32, column: self.text[start..offset].chars().count() as u32 + 1 }
     }
 
+    /// Offset of the first byte of a line (from 1); the text's length past the last line.
+    pub fn line_start(&self, line: u32) -> u32 {
+        let at = (line as usize).checked_sub(1).and_then(|index| self.line_starts().get(index)).copied();
+        at.unwrap_or(self.text.len() as u32)
+    }
+
     /// The text of a line (from 1) without its line end; empty past the last line.
     pub fn line(&self, line: u32) -> &str {
         let starts = self.line_starts();

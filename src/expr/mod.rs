@@ -1,20 +1,26 @@
 //! The one expression language of Drainwise: for SPICE parameters and for rules.
 //!
 //! Precedence is that of SPICE parameter expressions (Ngspice User's Manual, version 39, section 2.9.5), each level left to
-//! right, unary operators tightest: `-2**2` is 4, `2**3**2` is 64. Only number literals differ between the two syntaxes,
-//! and rules may also say `and`, `or`, `not` and `if(c, a, b)`.
+//! right, unary operators tightest: `-2**2` is 4, `2**3**2` is 64. A choice inside a choice belongs to the last branch, so
+//! `a ? 1 : b ? 2 : 3` reads as it looks. Only number literals differ between the two syntaxes, and rules may also say `and`,
+//! `or`, `if(c, a, b)` and `not`, which reaches over comparisons: `not width > 5um`.
 
 use crate::quantity::Dim;
 use std::ops::Range;
 
 mod check;
 mod evaluate;
+mod functions;
+mod lex;
 mod parse;
+mod spice;
 mod template;
+mod walk;
 
-pub use check::{Type, Vocabulary, check};
-pub use evaluate::{Scope, Value, evaluate};
+pub use check::{ArgType, Type, Vocabulary, check};
+pub use evaluate::{Arg, Scope, TOLERANCE, Value, evaluate};
 pub use parse::{Fault, Syntax, parse};
+pub use spice::{Parameters, doubts, evaluate_spice};
 pub use template::{Piece, Template};
 
 /// An operator between two operands.

@@ -30,7 +30,7 @@ pub struct Named {
 pub struct Operand {
     /// The text of the expression, without quotes or braces; `expr.places` count from `span.start`.
     pub span: Span,
-    /// The expression; none where it could not be read (that has been reported).
+    /// The expression; none where it could not be read (that has been reported), or is a text in double quotes.
     pub expr: Option<Expr>,
 }
 
@@ -97,6 +97,8 @@ pub struct Cell {
     pub name: Named,
     /// The cell whose text it stands in.
     pub parent: Option<CellIx>,
+    /// The condition that its definition stands under, of the parent's guards.
+    pub guard: Option<GuardIx>,
     /// Its ports in order.
     pub ports: Vec<Named>,
     /// Parameters of its header.
@@ -167,6 +169,7 @@ pub struct Fields {
     /// The words before the first `key=value`, the element's own name first.
     pub words: Vec<Word>,
     /// `key=value` pairs, in order. A positional word after a pair (`m=2 off`) is in neither list.
+    /// Sizes of export comments (`$W=2`) are here too, where the card itself does not give them.
     pub params: Vec<(Word, Word)>,
     /// The model of a `$[model]` export comment.
     pub bracket_model: Option<Word>,
@@ -174,6 +177,8 @@ pub struct Fields {
     pub substrate: Option<Word>,
     /// Index in `words` of the word that followed a lone `/` (the slash itself is no word).
     pub after_slash: Option<usize>,
+    /// The first positional word after a pair: harmless flags (`off`), or the rest of a formula written without quotes.
+    pub stray: Option<Word>,
     /// Past the last byte of the card's last field.
     pub end: u32,
 }

@@ -1,0 +1,240 @@
+//! On and high at once: the state that heats a drain-extended device and ages it.
+
+use super::DeviceView;
+use super::ratings::range_text;
+use crate::declared::{Kind, OnState, Transition};
+use crate::expr::Value;
+use crate::quantity::{Dim, show, show_percent};
+use crate::reach::Interval;
+
+/// What a device does in one mode.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(super) struct ModeState {
+    pub(super) on: bool,
+    pub(super) surely_on: bool,
+    pub(super) high: bool,
+    pub(super) surely_high: bool,
+    pub(super) vds: Interval,
+    pub(super) vgs: Interval,
+}
+
+/// The answer for one device, in order of gravity.
+enum Verdict {
+    Holds,
+    Open(&'static str),
+    Broken,
+}
+
+impl DeviceView<'_> {
+    /// Gate drive and drain-source voltage of a device in a mode, of either polarity counted as for an n-channel device.
+    pub(super) fn mode_state(&self, mode: usize, limit: f64) -> Option<ModeState> {
+        let (d, g, s) = (self.class.pin("d")?, self.class.pin("g")?, self.class.pin("s")?);
+        let upright = |range: Interval| if self.class.kind == Kind::Pmos { range.negated() } else { range };
+        let (vds, vgs) = (upright(self.voltage(mode, d, s)), upright(self.voltage(mode, g, s)));
+        let (least, most) =
+            self.class.threshold.map_or((f64::NEG_INFINITY, f64::INFINITY), |threshold| (threshold.lo, threshold.hi));
+        let nearest = if vds.lo > 0.0 {
+            vds.lo
+        } else if vds.hi < 0.0 {
+            -vds.hi
+        } else {
+            0.0
+        };
+        Some(ModeState {
+            on: vgs.hi > least,
+            surely_on: vgs.lo > most,
+            high: vds.hi > limit || -vds.lo > limit,
+            surely_high: nearest > limit,
+            vds,
+            vgs,
+        })
+    }
+
+    /// Whether the device keeps out of being on and high together, beyond what its class exempts.
+    pub(super) fn overlap_held(&self) -> Value {
+        let Some(limits) = self.class.on_state else { return self.undeclared() };
+        let states: Option<Vec<ModeState>> =
+            (0..self.world.reach.modes.len()).map(|mode| self.mode_state(mode, limits.vds)).collect();
+        let Some(states) = states else { return Value::Bool(true) };
+        let in_modes = self.in_modes(&states, &limits);
+        if matches!(in_modes, Verdict::Broken) {
+            return Value::Bool(false);
+        }
+        let between = self.between_modes(&states, &limits);
+        match (in_modes, between) {
+            (_, Verdict::Broken) => Value::Bool(false),
+            (Verdict::Holds, Verdict::Holds) => Value::Bool(true),
+            (Verdict::Open(why), _) | (_, Verdict::Open(why)) => {
+                self.note_state_pins();
+                self.unknown(why)
+            }
+            _ => Value::Unknown,
+        }
+    }
+
+    fn note_state_pins(&self) {
+        let pins = ["d", "g"].iter().filter_map(|pin| self.class.pin(pin)).collect();
+        self.note(|evidence| evidence.pins = pins);
+    }
+
+    /// On and high in one mode.
+    fn in_modes(&self, states: &[ModeState], limits: &OnState) -> Verdict {
+        let mut answer = Verdict::Holds;
+        for (mode, state) in states.iter().enumerate().filter(|(_, state)| state.on && state.high) {
+            let known = self.known_current();
+            let density = known.and_then(|(amps, exact)| self.density_of(amps).map(|density| (density, exact)));
+            let limit = limits.density;
+            if let (Some((density, _)), Some(limit)) = (density, limit)
+                && density <= limit * (1.0 + 1e-9)
+            {
+                continue;
+            }
+            let dense = matches!((density, limit), (Some((_, true)), Some(_)));
+            if state.surely_on && state.surely_high || dense && self.works_on_and_high() {
+                self.note_mode(mode, state, density.map(|(density, _)| density), limits);
+                return Verdict::Broken;
+            }
+            if matches!(answer, Verdict::Holds) {
+                self.note_mode(mode, state, density.map(|(density, _)| density), limits);
+                answer = Verdict::Open(if self.world.reach.modes.first().is_some_and(Option::is_none) {
+                    "the rails alone allow it to be on at high voltage: declare modes, so that what happens together is known, or the current that it carries"
+                } else {
+                    "in this mode it can be on at high voltage: narrow the mode's rails, or declare the current that it carries"
+                });
+            }
+        }
+        answer
+    }
+
+    fn note_mode(&self, mode: usize, state: &ModeState, density: Option<f64>, limits: &OnState) {
+        let name = self.world.reach.mode_name(mode);
+        let in_mode = name.map_or(String::new(), |name| format!(" in mode `{name}`"));
+        let density = density.map_or(String::new(), |density| format!(", at {}", show(density, Dim::DENSITY)));
+        let limit = limits.density.map_or(String::new(), |limit| format!(" and {}", show(limit, Dim::DENSITY)));
+        let what = format!(
+            "vds {}{in_mode} while vgs is {}{density}: beyond {}{limit}",
+            range_text(state.vds),
+            range_text(state.vgs),
+            show(limits.vds, Dim::VOLT)
+        );
+        self.note_what(what, name);
+        self.note_state_pins();
+    }
+
+    fn note_what(&self, what: String, mode: Option<&str>) {
+        self.note(|evidence| {
+            evidence.values.retain(|(key, _)| key != "what");
+            evidence.values.push(("what".into(), what));
+            evidence.mode = mode.map(str::to_owned);
+            evidence.modes = mode.map(str::to_owned).into_iter().collect();
+        });
+    }
+
+    /// On in one mode and high in another: the changes between them pass through both at once.
+    fn between_modes(&self, states: &[ModeState], limits: &OnState) -> Verdict {
+        let reach = self.world.reach;
+        let state =
+            |deck_mode: usize| reach.modes.iter().position(|mode| *mode == Some(deck_mode)).map(|at| &states[at]);
+        let crosses = |transition: &&Transition| match (state(transition.from), state(transition.to)) {
+            (Some(from), Some(to)) => from.on && to.high || from.high && to.on,
+            _ => false,
+        };
+        let crossing: Vec<&Transition> = self.world.deck.transitions.iter().filter(crosses).collect();
+        let apart = states
+            .iter()
+            .enumerate()
+            .any(|(a, on)| on.on && states.iter().enumerate().any(|(b, high)| a != b && high.high));
+        if crossing.is_empty() {
+            if !apart {
+                return Verdict::Holds;
+            }
+            return Verdict::Open(
+                "it is on in one mode and at high voltage in another: declare the transitions between them (takes, rate)",
+            );
+        }
+        let duty: f64 = crossing.iter().map(|transition| transition.takes * transition.rate).sum();
+        if limits.duty.is_some_and(|limit| duty <= limit * (1.0 + 1e-9)) {
+            return Verdict::Holds;
+        }
+        self.note_transitions(&crossing, duty, limits, states);
+        Verdict::Broken
+    }
+
+    fn note_transitions(&self, crossing: &[&Transition], duty: f64, limits: &OnState, states: &[ModeState]) {
+        let modes = &self.world.deck.modes;
+        let names: Vec<String> =
+            crossing.iter().map(|t| format!("`{}` to `{}`", modes[t.from].name, modes[t.to].name)).collect();
+        let allowed = limits
+            .duty
+            .map_or("no share of time is allowed".to_owned(), |duty| format!("{} is allowed", show_percent(duty)));
+        let volts = states
+            .iter()
+            .map(|state| state.vds.hi.abs().max(state.vds.lo.abs()))
+            .filter(|volts| volts.is_finite())
+            .fold(0.0, f64::max);
+        let loss = self.known_current().map_or(String::new(), |(amps, _)| {
+            let watts: f64 = crossing.iter().map(|t| 0.5 * volts * amps * t.takes * t.rate).sum();
+            format!(", and loses {}", show(watts, Dim::WATT))
+        });
+        self.note_what(
+            format!(
+                "on and high together for {} of the time, going from {}: {allowed}{loss}",
+                show_percent(duty),
+                names.join(" and ")
+            ),
+            None,
+        );
+        self.note(|evidence| {
+            evidence.badness = duty;
+            evidence.places.extend(crossing.iter().map(|t| {
+                (t.place, format!("takes {}, {} times a second", show(t.takes, Dim::SECOND), show(t.rate, Dim::NONE)))
+            }));
+        });
+        self.note_state_pins();
+    }
+
+    /// Whether known power while on stays below the class's limit; unknown where nothing bounds it.
+    pub(super) fn power_held(&self) -> Value {
+        let Some(limit) = self.class.on_state.and_then(|limits| limits.power) else { return self.undeclared() };
+        let (Some((amps, exact)), Some(on_state)) = (self.known_current(), self.class.on_state) else {
+            return Value::Bool(true);
+        };
+        for mode in 0..self.world.reach.modes.len() {
+            let Some(state) = self.mode_state(mode, on_state.vds).filter(|state| state.on) else { continue };
+            let volts = state.vds.hi.max(-state.vds.lo);
+            if exact && volts.is_finite() && amps * volts > limit * (1.0 + 1e-9) {
+                let name = self.world.reach.mode_name(mode);
+                let what = format!(
+                    "{} at up to {} is {}: {} is allowed",
+                    show(amps, Dim::AMPERE),
+                    show(volts, Dim::VOLT),
+                    show(amps * volts, Dim::WATT),
+                    show(limit, Dim::WATT)
+                );
+                self.note_what(what, name);
+                self.note_state_pins();
+                return Value::Bool(false);
+            }
+        }
+        Value::Bool(true)
+    }
+
+    /// The channel current that is known, amperes, and whether it is exact (else an upper bound).
+    pub(super) fn known_current(&self) -> Option<(f64, bool)> {
+        let path = self.path();
+        let declared = self.world.deck.currents_through.iter().find(|current| current.at.matches_path(&path))?;
+        let amps = declared.amps.lo.abs().max(declared.amps.hi.abs());
+        amps.is_finite().then_some((amps, true))
+    }
+
+    fn density_of(&self, amps: f64) -> Option<f64> {
+        let sizes = self.sizes();
+        let total = sizes.width.as_ref().ok()? * sizes.copies.as_ref().ok()?;
+        (total > 0.0).then(|| amps / total)
+    }
+
+    /// Whether its role is one that works on and high all the time.
+    fn works_on_and_high(&self) -> bool {
+        false
+    }
+}

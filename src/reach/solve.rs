@@ -1,0 +1,426 @@
+//! The fixpoint of one context in one mode.
+
+use super::expand::Shared;
+use super::interval::Interval;
+use super::plan::{PairBound, Plan};
+use super::state::{ANSWER, NOTHING, OUTSIDE, Side, State};
+use super::terminals::Terminals;
+use super::touch::{Toucher, Touches};
+use crate::design::{DeviceIx, InstanceIx, NetIx, Template, VariantIx};
+use crate::graph::{Context, ContextIx};
+use hashbrown::HashMap;
+use std::collections::VecDeque;
+
+/// What the surroundings bring to a context in one mode, at its boundary positions. Positions that are one net agree.
+#[derive(Clone, Debug, Default, PartialEq)]
+pub(super) struct Inputs {
+    /// For each position, frame and side; as in [`State`].
+    pub(super) values: Vec<f64>,
+    pub(super) driven: Vec<bool>,
+    /// Rails and nets of which nothing is known.
+    pub(super) fixed: Vec<bool>,
+    /// Whether something outside ties the port to a rail.
+    pub(super) tied: Vec<bool>,
+    /// Whether conducting paths outside lead from the port to an undeclared port or global of the top.
+    pub(super) open: Vec<bool>,
+    /// Clamps outside between ports: positions and range of V(x) − V(y).
+    pub(super) bounds: Vec<(u32, u32, Interval)>,
+}
+
+/// The inputs as a key: values by their bits.
+#[derive(Clone, Debug, PartialEq, Eq, Hash)]
+pub(super) struct InputKey {
+    pub(super) at: ContextIx,
+    pub(super) mode: u32,
+    bits: Vec<u64>,
+    flags: Vec<u8>,
+    bounds: Vec<(u32, u32, u64, u64)>,
+}
+
+impl Inputs {
+    pub(super) fn key(&self, at: ContextIx, mode: u32) -> InputKey {
+        InputKey {
+            at,
+            mode,
+            bits: self.values.iter().map(|value| if *value == 0.0 { 0 } else { value.to_bits() }).collect(),
+            flags: self.flags(),
+            bounds: self.bounds.iter().map(|(x, y, range)| (*x, *y, range.lo.to_bits(), range.hi.to_bits())).collect(),
+        }
+    }
+
+    fn flags(&self) -> Vec<u8> {
+        let flag = |at: usize| {
+            u8::from(self.driven[at])
+                | u8::from(self.fixed[at]) << 1
+                | u8::from(self.tied[at]) << 2
+                | u8::from(self.open[at]) << 3
+        };
+        (0..self.driven.len()).map(flag).collect()
+    }
+}
+
+/// What a context adds to its ports: values and whether they are driven, by boundary position.
+#[derive(Clone, Debug, Default)]
+pub(super) struct Answer {
+    pub(super) values: Vec<f64>,
+    pub(super) driven: Vec<bool>,
+}
+
+/// One run of the fixpoint.
+pub(super) struct Solver<'s> {
+    pub(super) shared: &'s Shared<'s>,
+    pub(super) at: ContextIx,
+    pub(super) mode: u32,
+    pub(super) context: &'s Context,
+    pub(super) variant: VariantIx,
+    pub(super) template: &'s Template,
+    pub(super) plan: &'s Plan,
+    pub(super) terminals: &'s [Terminals],
+    pub(super) state: State,
+    pub(super) tied: Vec<bool>,
+    pub(super) open: Vec<bool>,
+    pub(super) bounds: HashMap<NetIx, Vec<PairBound>>,
+    caps: HashMap<NetIx, Vec<f64>>,
+    queue: VecDeque<u32>,
+    queued: Vec<bool>,
+    asked: Vec<bool>,
+    ask: VecDeque<u32>,
+}
+
+impl<'s> Solver<'s> {
+    /// Sets up a run: rails and unknown nets are fixed, ports have what the surroundings bring.
+    pub(super) fn new(shared: &'s Shared<'s>, at: ContextIx, mode: u32, inputs: &Inputs, remember: bool) -> Solver<'s> {
+        let context = shared.contexts.get(at);
+        let template = shared.design.template(context.variant);
+        let frames = shared.frames.all.len();
+        let mut solver = Solver {
+            shared,
+            at,
+            mode,
+            context,
+            variant: context.variant,
+            template,
+            plan: shared.plans.get(at),
+            terminals: shared.terminals,
+            state: State::new(template.nets.len(), frames, remember),
+            tied: Vec::new(),
+            open: Vec::new(),
+            bounds: HashMap::new(),
+            caps: HashMap::new(),
+            queue: VecDeque::new(),
+            queued: vec![false; template.nets.len()],
+            asked: vec![false; template.instances.len()],
+            ask: VecDeque::new(),
+        };
+        solver.take_inputs(inputs);
+        solver.fix_rails();
+        solver.fix_unknown();
+        solver.follow_sources();
+        solver.make_caps(inputs);
+        solver
+    }
+
+    /// A run that is over, to be asked what it brings to its instances.
+    pub(super) fn finished(
+        shared: &'s Shared<'s>,
+        at: ContextIx,
+        mode: u32,
+        state: State,
+        (tied, open): (Vec<bool>, Vec<bool>),
+        bounds: HashMap<NetIx, Vec<PairBound>>,
+    ) -> Solver<'s> {
+        let context = shared.contexts.get(at);
+        let template = shared.design.template(context.variant);
+        Solver {
+            shared,
+            at,
+            mode,
+            context,
+            variant: context.variant,
+            template,
+            plan: shared.plans.get(at),
+            terminals: shared.terminals,
+            state,
+            tied,
+            open,
+            bounds,
+            caps: HashMap::new(),
+            queue: VecDeque::new(),
+            queued: Vec::new(),
+            asked: Vec::new(),
+            ask: VecDeque::new(),
+        }
+    }
+
+    fn take_inputs(&mut self, inputs: &Inputs) {
+        let frames = self.state.frames;
+        let (mut ports, mut open) = (Vec::with_capacity(inputs.driven.len()), vec![false; self.template.nets.len()]);
+        for (position, net) in self.template.boundary().enumerate() {
+            let net = self.context.root(net);
+            ports.push((net, inputs.tied[position]));
+            open[self.plan.group(net) as usize] |= inputs.open[position];
+            let from = position * frames * 2;
+            let to = self.state.at(net, 0, Side::Hi);
+            self.state.values[to..to + frames * 2].copy_from_slice(&inputs.values[from..from + frames * 2]);
+            self.state.driven[net.0 as usize] |= inputs.driven[position];
+            self.state.fixed[net.0 as usize] |= inputs.fixed[position];
+        }
+        self.tied = self.plan.tied_groups(&ports);
+        self.open = open;
+    }
+
+    /// Rails that the deck declares in this context: those of the top, and those inside an instance.
+    fn fix_rails(&mut self) {
+        for (net, values) in self.shared.rails_in(self.at, self.mode) {
+            for (frame, value) in values.iter().enumerate() {
+                let to = self.state.at(net, frame, Side::Hi);
+                self.state.values[to] = value.hi;
+                self.state.values[to + 1] = -value.lo;
+            }
+            self.state.fixed[net.0 as usize] = true;
+            self.state.driven[net.0 as usize] = true;
+        }
+    }
+
+    /// Nets of which nothing is known: tied to no rail, or on an inductor. As gates they let their channels conduct fully.
+    fn fix_unknown(&mut self) {
+        for net in (0..self.template.nets.len() as u32).map(NetIx) {
+            if self.context.root(net) != net || self.state.fixed[net.0 as usize] {
+                continue;
+            }
+            if !self.tied[self.plan.group(net) as usize] || self.plan.inductor[net.0 as usize] {
+                let from = self.state.at(net, 0, Side::Hi);
+                self.state.values[from..from + self.state.frames * 2].fill(f64::INFINITY);
+                self.state.fixed[net.0 as usize] = true;
+            }
+        }
+    }
+
+    /// A source with one end on a rail makes its other end a rail.
+    fn follow_sources(&mut self) {
+        let mut waiting = self.plan.sources.clone();
+        loop {
+            let before = waiting.len();
+            waiting.retain(|link| {
+                let known = |net: NetIx| self.state.fixed[net.0 as usize] && self.state.driven[net.0 as usize];
+                let (to, from, range) = match (known(link.plus), known(link.minus)) {
+                    (false, true) => (link.plus, link.minus, link.range),
+                    (true, false) => (link.minus, link.plus, link.range.negated()),
+                    (true, true) => return false,
+                    (false, false) => return true,
+                };
+                for frame in 0..self.state.frames {
+                    let (hi, lo) = (self.state.value(from, frame, Side::Hi), self.state.value(from, frame, Side::Lo));
+                    let at = self.state.at(to, frame, Side::Hi);
+                    self.state.values[at] = hi + range.hi;
+                    self.state.values[at + 1] = lo - range.lo;
+                }
+                self.state.fixed[to.0 as usize] = true;
+                self.state.driven[to.0 as usize] = true;
+                false
+            });
+            if waiting.len() == before {
+                return;
+            }
+        }
+    }
+
+    /// Clamps and body diodes against rails cap what is propagated.
+    fn make_caps(&mut self, inputs: &Inputs) {
+        let boundary: Vec<NetIx> =
+            if inputs.bounds.is_empty() { Vec::new() } else { self.template.boundary().collect() };
+        let outside = inputs.bounds.iter().map(|&(x, y, range)| PairBound {
+            x: self.context.root(boundary[x as usize]),
+            y: self.context.root(boundary[y as usize]),
+            range,
+        });
+        for bound in outside {
+            self.bounds.entry(bound.x).or_default().push(bound);
+        }
+        let all: Vec<PairBound> =
+            self.plan.bounds.iter().copied().chain(self.bounds.values().flatten().copied()).collect();
+        for bound in all {
+            let (x, y) = (self.state.fixed[bound.x.0 as usize], self.state.fixed[bound.y.0 as usize]);
+            match (x, y) {
+                (false, true) => self.cap(bound.x, bound.y, bound.range),
+                (true, false) => self.cap(bound.y, bound.x, bound.range.negated()),
+                _ => {}
+            }
+        }
+    }
+
+    /// V(net) − V(rail) stays in the range.
+    fn cap(&mut self, net: NetIx, rail: NetIx, range: Interval) {
+        let frames = self.state.frames;
+        let caps = self.caps.entry(net).or_insert_with(|| vec![f64::INFINITY; frames * 2]);
+        for frame in 0..frames {
+            let (hi, lo) = (self.state.value(rail, frame, Side::Hi), self.state.value(rail, frame, Side::Lo));
+            caps[frame * 2] = caps[frame * 2].min(hi + range.hi);
+            caps[frame * 2 + 1] = caps[frame * 2 + 1].min(lo - range.lo);
+        }
+    }
+
+    /// Runs to the fixpoint.
+    pub(super) fn run(&mut self) {
+        for device in self.template.devices() {
+            self.apply(device);
+        }
+        for instance in 0..self.template.instances.len() as u32 {
+            self.ask.push_back(instance);
+            self.asked[instance as usize] = true;
+        }
+        let pins = Touches::new(self.template, self.context, &self.state.fixed);
+        loop {
+            self.settle_devices(&pins);
+            let Some(instance) = self.ask.pop_front() else { break };
+            self.asked[instance as usize] = false;
+            self.ask_instance(InstanceIx(instance));
+        }
+    }
+
+    fn settle_devices(&mut self, touches: &Touches) {
+        while let Some(net) = self.queue.pop_front() {
+            self.queued[net as usize] = false;
+            for toucher in touches.on(NetIx(net)) {
+                match toucher {
+                    Toucher::Device(device) => self.apply(device),
+                    Toucher::Instance(instance) => {
+                        if !std::mem::replace(&mut self.asked[instance.0 as usize], true) {
+                            self.ask.push_back(instance.0);
+                        }
+                    }
+                }
+            }
+        }
+    }
+
+    fn ask_instance(&mut self, instance: InstanceIx) {
+        let child = self.context.children[instance.0 as usize];
+        let inputs = self.inputs_for(instance);
+        let (number, answer) = self.shared.answer(child, self.mode, inputs);
+        let pins = self.template.instance_pins(instance);
+        let by = ANSWER | self.state.answers.len() as u32;
+        self.state.answers.push((instance.0, number));
+        let frames = self.state.frames;
+        for (position, &net) in pins.iter().enumerate() {
+            let net = self.context.root(net);
+            for frame in 0..frames {
+                for side in Side::BOTH {
+                    self.raise(net, frame, side, answer.values[(position * frames + frame) * 2 + side.index()], by);
+                }
+            }
+            if answer.driven[position] && !self.state.driven[net.0 as usize] {
+                self.set_driven(net);
+            }
+        }
+    }
+
+    /// What this state brings to an instance.
+    pub(super) fn inputs_for(&self, instance: InstanceIx) -> Inputs {
+        let pins = self.template.instance_pins(instance);
+        let frames = self.state.frames;
+        let mut inputs = Inputs::default();
+        let mut positions: HashMap<NetIx, u32> = HashMap::new();
+        for (position, &net) in pins.iter().enumerate() {
+            let net = self.context.root(net);
+            let from = self.state.at(net, 0, Side::Hi);
+            inputs.values.extend_from_slice(&self.state.values[from..from + frames * 2]);
+            inputs.driven.push(self.state.driven[net.0 as usize]);
+            inputs.fixed.push(self.state.fixed[net.0 as usize]);
+            inputs.tied.push(self.tied[self.plan.group(net) as usize]);
+            inputs.open.push(self.open[self.plan.group(net) as usize]);
+            positions.entry(net).or_insert(position as u32);
+        }
+        if !self.plan.bounds.is_empty() || !self.bounds.is_empty() {
+            for (&net, &x) in &positions {
+                for bound in self.bounds_from(net) {
+                    if let Some(&y) = positions.get(&bound.y) {
+                        inputs.bounds.push((x, y, bound.range));
+                    }
+                }
+            }
+            inputs.bounds.sort_by(|a, b| {
+                (a.0, a.1, a.2.lo, a.2.hi).partial_cmp(&(b.0, b.1, b.2.lo, b.2.hi)).unwrap_or(std::cmp::Ordering::Equal)
+            });
+            inputs.bounds.dedup();
+        }
+        inputs
+    }
+
+    /// Bounds whose `x` is this net, from inside and outside.
+    fn bounds_from(&self, net: NetIx) -> impl Iterator<Item = PairBound> + '_ {
+        let inside = self.plan.bounds_at.get(&net).into_iter().flatten().map(|&at| self.plan.bounds[at as usize]);
+        inside.filter(move |bound| bound.x == net).chain(self.bounds.get(&net).into_iter().flatten().copied())
+    }
+
+    /// What clamps and body diodes say of V(x) − V(y).
+    pub(super) fn pair_bound(&self, x: NetIx, y: NetIx) -> Interval {
+        if self.plan.bounds.is_empty() && self.bounds.is_empty() {
+            return Interval::ANY;
+        }
+        if self.state.fixed[x.0 as usize] && self.state.fixed[y.0 as usize] {
+            return Interval::ANY;
+        }
+        let forward = self.bounds_from(x).filter(|bound| bound.y == y).map(|bound| bound.range);
+        let back = self.bounds_from(y).filter(|bound| bound.y == x).map(|bound| bound.range.negated());
+        forward.chain(back).fold(Interval::ANY, Interval::and)
+    }
+
+    pub(super) fn source_range(&self, device: DeviceIx) -> Option<(f64, f64)> {
+        self.shared.design.source_range(self.variant, device)
+    }
+
+    pub(super) fn raise(&mut self, net: NetIx, frame: usize, side: Side, value: f64, by: u32) {
+        if value == NOTHING || self.state.fixed[net.0 as usize] {
+            return;
+        }
+        let value = match self.caps.get(&net) {
+            Some(caps) => value.min(caps[frame * 2 + side.index()]),
+            None => value,
+        };
+        let at = self.state.at(net, frame, side);
+        if value > self.state.values[at] + 1e-12 {
+            self.state.values[at] = value;
+            if let Some(setter) = self.state.setters.get_mut(at) {
+                *setter = by;
+            }
+            self.touch(net);
+        }
+    }
+
+    /// A raise that may feed itself through a loop of sources: past the span of all rails and sources nothing is known.
+    pub(super) fn raise_bounded(&mut self, net: NetIx, frame: usize, side: Side, value: f64, by: u32) {
+        let value = if value > self.shared.span { f64::INFINITY } else { value };
+        self.raise(net, frame, side, value, by);
+    }
+
+    pub(super) fn set_driven(&mut self, net: NetIx) {
+        self.state.driven[net.0 as usize] = true;
+        self.touch(net);
+    }
+
+    fn touch(&mut self, net: NetIx) {
+        if !self.state.fixed[net.0 as usize] && !std::mem::replace(&mut self.queued[net.0 as usize], true) {
+            self.queue.push_back(net.0);
+        }
+    }
+}
+
+impl Answer {
+    /// The boundary values of a finished state.
+    pub(super) fn of(state: &State, template: &Template, context: &Context) -> Answer {
+        let mut answer = Answer::default();
+        for net in template.boundary() {
+            let net = context.root(net);
+            let from = state.at(net, 0, Side::Hi);
+            answer.values.extend_from_slice(&state.values[from..from + state.frames * 2]);
+            answer.driven.push(state.driven[net.0 as usize]);
+        }
+        answer
+    }
+}
+
+/// Whether a setter is an instance's answer, and which.
+pub(super) fn answer_of(setter: u32) -> Option<u32> {
+    (setter != OUTSIDE && setter & ANSWER != 0).then_some(setter & !ANSWER)
+}

@@ -1,0 +1,98 @@
+//! The state of one cell's nets in one mode: all values as raises from nothing.
+
+use super::interval::Interval;
+use crate::design::NetIx;
+
+/// Which end of a range: the highest voltage, or the lowest one (kept negated, so that both ends grow upward).
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Hash)]
+pub enum Side {
+    /// Highest voltage.
+    Hi,
+    /// Negated lowest voltage.
+    Lo,
+}
+
+impl Side {
+    /// Both ends.
+    pub const BOTH: [Side; 2] = [Side::Hi, Side::Lo];
+    pub(super) fn index(self) -> usize {
+        self as usize
+    }
+}
+
+/// No value yet: nothing has reached the net on that side.
+pub(super) const NOTHING: f64 = f64::NEG_INFINITY;
+
+/// Who set an end: nobody (a rail, or a value from outside the cell).
+pub(super) const OUTSIDE: u32 = u32::MAX;
+/// The mark of an instance's answer among setters.
+pub(super) const ANSWER: u32 = 1 << 31;
+
+/// Values of all nets of one cell in all frames, in one mode.
+#[derive(Clone, Debug, Default, PartialEq)]
+pub struct State {
+    pub(super) frames: usize,
+    /// For each net, frame and side.
+    pub(super) values: Vec<f64>,
+    /// Who set each value; empty where nobody asked to remember.
+    pub(super) setters: Vec<u32>,
+    /// Whether something conducting connects the net with a rail in this mode.
+    pub(super) driven: Vec<bool>,
+    /// Rails, and nets of which nothing is known: never raised.
+    pub(super) fixed: Vec<bool>,
+    /// Answers of instances that raised something: the instance and the answer's number.
+    pub(super) answers: Vec<(u32, u32)>,
+}
+
+impl State {
+    pub(super) fn new(nets: usize, frames: usize, remember: bool) -> State {
+        State {
+            frames,
+            values: vec![NOTHING; nets * frames * 2],
+            setters: if remember { vec![OUTSIDE; nets * frames * 2] } else { Vec::new() },
+            driven: vec![false; nets],
+            fixed: vec![false; nets],
+            answers: Vec::new(),
+        }
+    }
+
+    pub(super) fn at(&self, net: NetIx, frame: usize, side: Side) -> usize {
+        (net.0 as usize * self.frames + frame) * 2 + side.index()
+    }
+
+    pub(super) fn value(&self, net: NetIx, frame: usize, side: Side) -> f64 {
+        self.values[self.at(net, frame, side)]
+    }
+
+    /// The reach of a (root) net in a frame; an end that nothing reached, or that is not known, is infinite.
+    pub fn reach(&self, net: NetIx, frame: usize) -> Interval {
+        let (hi, lo) = (self.value(net, frame, Side::Hi), self.value(net, frame, Side::Lo));
+        Interval {
+            lo: if lo == NOTHING { f64::NEG_INFINITY } else { -lo },
+            hi: if hi == NOTHING { f64::INFINITY } else { hi },
+        }
+    }
+
+    /// Whether something conducting connects the (root) net with a rail in this mode.
+    pub fn is_driven(&self, net: NetIx) -> bool {
+        self.driven[net.0 as usize]
+    }
+
+    /// Whether a (root) net's value is given: a rail, or a net of which nothing is known.
+    pub fn is_fixed(&self, net: NetIx) -> bool {
+        self.fixed[net.0 as usize]
+    }
+
+    /// The highest that `x` can be above `y` by the frames alone; [`NOTHING`] while one of them has no value yet.
+    pub(super) fn above(&self, x: NetIx, y: NetIx) -> f64 {
+        let mut least = f64::INFINITY;
+        for frame in 0..self.frames {
+            let (hi, lo) = (self.value(x, frame, Side::Hi), self.value(y, frame, Side::Lo));
+            if hi == NOTHING || lo == NOTHING {
+                return NOTHING;
+            }
+            least = least.min(hi + lo);
+        }
+        least
+    }
+}

@@ -1,0 +1,68 @@
+//! Which terminal of a device is which, worked out once for each kind of device.
+
+use crate::declared::Class;
+use crate::design::{Design, DeviceType, Element};
+
+/// The terminals of a kind of device, as indices of its pins, and what its channel needs to conduct.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(super) enum Terminals {
+    /// Drain, gate, source, body; `n` for n-channel. Threshold in volts: `-∞` where it is not declared.
+    Mos { d: u8, g: u8, s: u8, b: Option<u8>, n: bool, threshold: f64 },
+    /// Collector, base, emitter; `n` for npn.
+    Bipolar { c: u8, b: u8, e: u8, n: bool },
+    /// Drain, gate, source; `n` for n-channel.
+    Jfet { d: u8, g: u8, s: u8, n: bool },
+    /// Anode, cathode.
+    Diode { a: u8, k: u8 },
+    /// Passes voltage both ways between two terminals.
+    Through { a: u8, b: u8, resistor: bool },
+    /// Lifts its nets beyond its supplies.
+    Inductor { a: u8, b: u8 },
+    /// Holds a voltage between two terminals.
+    Source { plus: u8, minus: u8 },
+    /// Says nothing.
+    Mute,
+}
+
+/// The terminals of all kinds of device of a design.
+pub(super) fn table(design: &Design<'_>) -> Vec<Terminals> {
+    design.types.iter().map(|kind| terminals(kind, kind.class.map(|class| &design.classes[class as usize]))).collect()
+}
+
+fn terminals(kind: &DeviceType, class: Option<&Class>) -> Terminals {
+    let pin = |name: &str, default: u8| match class {
+        Some(class) => class.pin(name).map(|at| at as u8),
+        None => Some(default),
+    };
+    let found = match kind.element {
+        _ if kind.misfit => None,
+        Element::Nmos | Element::Pmos => mos(kind, class, &pin),
+        Element::Npn | Element::Pnp => {
+            let pins = (pin("c", 0), pin("b", 1), pin("e", 2));
+            let n = kind.element == Element::Npn;
+            three(pins).map(|(c, b, e)| Terminals::Bipolar { c, b, e, n })
+        }
+        Element::Njf | Element::Pjf => {
+            let n = kind.element == Element::Njf;
+            three((pin("d", 0), pin("g", 1), pin("s", 2))).map(|(d, g, s)| Terminals::Jfet { d, g, s, n })
+        }
+        Element::Diode => Some(Terminals::Diode { a: pin("a", 0).unwrap_or(0), k: pin("k", 1).unwrap_or(1) }),
+        Element::Resistor => Some(Terminals::Through { a: 0, b: 1, resistor: true }),
+        Element::CurrentSource | Element::Switch => Some(Terminals::Through { a: 0, b: 1, resistor: false }),
+        Element::Line => Some(Terminals::Through { a: 0, b: if kind.letter == b'u' { 1 } else { 2 }, resistor: false }),
+        Element::Inductor => Some(Terminals::Inductor { a: 0, b: 1 }),
+        Element::VoltageSource => Some(Terminals::Source { plus: 0, minus: 1 }),
+        Element::Capacitor | Element::Controlled | Element::Opaque => None,
+    };
+    found.unwrap_or(Terminals::Mute)
+}
+
+fn mos(kind: &DeviceType, class: Option<&Class>, pin: &dyn Fn(&str, u8) -> Option<u8>) -> Option<Terminals> {
+    let (d, g, s) = three((pin("d", 0), pin("g", 1), pin("s", 2)))?;
+    let threshold = class.and_then(|class| class.threshold).map_or(f64::NEG_INFINITY, |threshold| threshold.lo);
+    Some(Terminals::Mos { d, g, s, b: pin("b", 3), n: kind.element == Element::Nmos, threshold })
+}
+
+fn three(pins: (Option<u8>, Option<u8>, Option<u8>)) -> Option<(u8, u8, u8)> {
+    Some((pins.0?, pins.1?, pins.2?))
+}
