@@ -6,7 +6,7 @@ use crate::rng::Rng;
 
 /// An internal net.
 pub(crate) struct Net {
-    /// As seen from inside the top cell: `n7`, `x3.mid`.
+    /// As seen from inside the top cell: `w7`, `x3.mid`.
     pub(crate) path: String,
     /// The pattern that made it.
     pub(crate) kind: &'static str,
@@ -82,7 +82,8 @@ impl Builder {
 
     /// A net inside a pattern, no signal for others.
     pub(crate) fn node(&mut self, domain: usize) -> String {
-        let path = format!("n{}", self.number());
+        // Not `n7`: ngspice takes a net `n5` for the model of that name.
+        let path = format!("w{}", self.number());
         self.nets.push(Net { path: path.clone(), kind: self.kind, domain, gates_only: false });
         path
     }

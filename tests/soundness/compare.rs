@@ -39,6 +39,13 @@ pub(crate) fn reaches(json: &str) -> Result<Reaches, String> {
     Ok(out)
 }
 
+/// A simulated value outside of its reach.
+pub(crate) struct Escape {
+    pub(crate) seed: u64,
+    pub(crate) net: String,
+    pub(crate) text: String,
+}
+
 #[derive(Default)]
 pub(crate) struct Figures {
     pub(crate) circuits: usize,
@@ -55,7 +62,7 @@ pub(crate) struct Figures {
     /// Values of driven nets held against a reach with at least one known end, each frame counted.
     pub(crate) compared: usize,
     pub(crate) in_ground: usize,
-    pub(crate) escapes: Vec<String>,
+    pub(crate) escapes: Vec<Escape>,
     /// Driven nets with a simulated width above 0.1 V: their pattern, reach width over simulated width.
     pub(crate) widths: Vec<(&'static str, f64)>,
     /// The same for "anything between the lowest and the highest supply", which is what no analysis at all would say.
@@ -131,7 +138,7 @@ fn compare_value(case: &Case, reaches: &Reaches, (i, vector, v): (usize, &Vector
         if lo.is_some_and(|lo| against < lo - TOLERANCE) || hi.is_some_and(|hi| against > hi + TOLERANCE) {
             let rails: Vec<String> =
                 case.builder.world.rails.iter().zip(&vector.volts).map(|(r, v)| format!("{}={v}", r.name)).collect();
-            figures.escapes.push(format!(
+            let text = format!(
                 "circuit {} net {} ({}) mode {} frame {frame}: simulated {against:.4} V, reach [{}, {}] V, at {}",
                 case.seed,
                 net.path,
@@ -140,7 +147,8 @@ fn compare_value(case: &Case, reaches: &Reaches, (i, vector, v): (usize, &Vector
                 show(*lo),
                 show(*hi),
                 rails.join(" ")
-            ));
+            );
+            figures.escapes.push(Escape { seed: case.seed, net: net.path.clone(), text });
         }
     }
 }

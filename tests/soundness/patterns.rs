@@ -127,10 +127,10 @@ fn any_gate(b: &mut Builder) -> String {
 }
 
 fn any_end(b: &mut Builder) -> String {
-    if b.rng.chance(0.5) {
-        if let Some(net) = any_net(b) {
-            return net;
-        }
+    if b.rng.chance(0.5)
+        && let Some(net) = any_net(b)
+    {
+        return net;
     }
     let i = b.rng.int(0, b.world.rails.len() - 1);
     b.world.rails[i].name.clone()

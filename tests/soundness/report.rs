@@ -34,8 +34,15 @@ pub(crate) fn print(f: &Figures) -> f64 {
     println!("net values: {} driven, {} floating (skipped)", f.driven, f.floating);
     println!("compared: {} ({} against ground); driven but unknown: {}", f.compared, f.in_ground, f.unknown);
     println!("escapes: {}", f.escapes.len());
-    for line in f.escapes.iter().take(40) {
-        println!("  {line}");
+    let mut nets = BTreeMap::new();
+    for e in &f.escapes {
+        nets.entry((e.seed, &e.net)).or_insert((e, 0)).1 += 1;
+    }
+    for (e, count) in nets.values().take(60) {
+        println!("  {} ({count} times)", e.text);
+    }
+    if nets.len() > 60 {
+        println!("  and {} more nets: target/soundness/escapes.txt", nets.len() - 60);
     }
     for line in f.trouble.iter().take(20) {
         println!("  {line}");
