@@ -42,7 +42,7 @@ pub(crate) fn print(f: &Figures) -> f64 {
         println!("  {} ({count} times)", e.text);
     }
     if nets.len() > 60 {
-        println!("  and {} more nets: target/soundness/escapes.txt", nets.len() - 60);
+        println!("  and {} more nets: target/simulated/escapes.txt", nets.len() - 60);
     }
     for line in f.trouble.iter().take(20) {
         println!("  {line}");

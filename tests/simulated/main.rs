@@ -6,9 +6,9 @@
 //! capacitor or inductor kicks a net, a quasi-static simulation never shows a driven net outside its reach. `bench.rs` says what
 //! the models are and how "driven" is decided; `patterns.rs` lists what the circuits are made of.
 //!
-//! Environment: `DRAINWISE_SOUNDNESS_SEED` (first seed, 1), `DRAINWISE_SOUNDNESS_COUNT` (circuits, 320),
-//! `DRAINWISE_SOUNDNESS_ONLY` (one seed: prints netlist, deck, voltages and reaches). Offending circuits are left in
-//! `target/soundness/`.
+//! Environment: `DRAINWISE_SIMULATED_SEED` (first seed, 1), `DRAINWISE_SIMULATED_COUNT` (circuits, 320),
+//! `DRAINWISE_SIMULATED_ONLY` (one seed: prints netlist, deck, voltages and reaches). Offending circuits are left in
+//! `target/simulated/`.
 #![allow(clippy::unwrap_used, clippy::expect_used, clippy::panic, clippy::print_stdout, clippy::print_stderr)]
 
 mod analog;
@@ -38,8 +38,8 @@ fn setting(name: &str) -> Option<u64> {
 }
 
 fn folder() -> PathBuf {
-    let folder = Path::new(env!("CARGO_TARGET_TMPDIR")).parent().expect("target").join("soundness");
-    std::fs::create_dir_all(&folder).expect("target/soundness can be made");
+    let folder = Path::new(env!("CARGO_TARGET_TMPDIR")).parent().expect("target").join("simulated");
+    std::fs::create_dir_all(&folder).expect("target/simulated can be made");
     folder
 }
 
@@ -52,7 +52,7 @@ fn circuit(seed: u64) -> (Builder, Vec<Vector>) {
 
 /// Runs `each` on every circuit, on as many threads as there are cores. The figures come out in the order of the seeds.
 fn every_circuit(count: u64, each: impl Fn(&Case, &mut Figures) + Sync) -> Figures {
-    let first = setting("DRAINWISE_SOUNDNESS_SEED").unwrap_or(1);
+    let first = setting("DRAINWISE_SIMULATED_SEED").unwrap_or(1);
     let folder = folder();
     let next = AtomicU64::new(0);
     let done = Mutex::new(Vec::new());
@@ -120,10 +120,10 @@ fn tidy(seed: u64, folder: &Path) {
 #[ignore = "needs ngspice; run by .ci/run"]
 fn no_driven_net_leaves_its_reach() {
     let folder = folder();
-    if let Some(seed) = setting("DRAINWISE_SOUNDNESS_ONLY") {
+    if let Some(seed) = setting("DRAINWISE_SIMULATED_ONLY") {
         return one(seed, &folder);
     }
-    let count = setting("DRAINWISE_SOUNDNESS_COUNT").unwrap_or(320);
+    let count = setting("DRAINWISE_SIMULATED_COUNT").unwrap_or(320);
     let figures = every_circuit(count, |case, figures| match trace(case, &folder) {
         Ok(reaches) => {
             let escapes = compare::compare(case, &reaches, figures);
@@ -157,7 +157,7 @@ fn no_driven_net_leaves_its_reach() {
 #[test]
 #[ignore = "needs ngspice; run by .ci/run"]
 fn random_circuits_simulate_and_stay_between_their_supplies() {
-    let count = setting("DRAINWISE_SOUNDNESS_COUNT").unwrap_or(40);
+    let count = setting("DRAINWISE_SIMULATED_COUNT").unwrap_or(40);
     let figures = every_circuit(count, |case, figures| {
         assert!((5..=60).contains(&case.builder.devices), "circuit {}: {} devices", case.seed, case.builder.devices);
         compare::widths(case, None, figures);
