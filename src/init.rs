@@ -16,7 +16,7 @@ use std::path::Path;
 /// Reads a netlist and proposes a deck for it.
 pub fn propose(files: &dyn Files, netlist: &Path, progress: &dyn Progress) -> (Outcome, Option<String>) {
     let plain = Job { netlists: vec![netlist.to_owned()], decks: vec!["builtin:ldmos".into()], ..Job::default() };
-    let models = match with_deck(files, &plain, progress, |world| models(world)) {
+    let models = match with_deck(files, &plain, progress, models) {
         Ok((_, models)) => models,
         Err(outcome) => return (*outcome, None),
     };
@@ -197,7 +197,7 @@ fn rails(world: World<'_>, text: &mut String) {
             }
         }
     }
-    lines.sort_by(|a, b| b.0.cmp(&a.0));
+    lines.sort_by_key(|line| std::cmp::Reverse(line.0));
     text.push_str("\nrails:\n");
     for (_, line) in lines {
         text.push_str(&line);

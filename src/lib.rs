@@ -13,8 +13,9 @@
 #![warn(missing_docs)]
 
 pub mod names;
-pub mod quantity;
 pub mod source;
+
+pub mod quantity;
 
 pub mod diag;
 
@@ -34,8 +35,9 @@ pub mod reach;
 
 pub mod facts;
 
-pub mod catalogue;
 pub mod deck;
+
+pub mod catalogue;
 
 pub mod engine;
 

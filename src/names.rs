@@ -160,7 +160,7 @@ fn wild_match(pattern: &[u8], name: &[u8], dots: Dots) -> bool {
                 byte => byte.eq_ignore_ascii_case(&name[n]),
             };
         if same {
-            p += if pattern[p] == b'?' { 1 } else { 1 };
+            p += 1;
             n += if pattern[p - 1] == b'?' { char_len(name[n]) } else { 1 };
             continue;
         }

@@ -96,7 +96,7 @@ pub fn names() -> String {
 
 /// The rules of the program as a Markdown table.
 pub fn rule_table(rules: &[Rule]) -> String {
-    let mut text = "| rule | for | severity | what holds where it is quiet |\n|---|---|---|---|\n".to_owned();
+    let mut text = "| rule | for | severity | it says that |\n|---|---|---|---|\n".to_owned();
     for rule in rules {
         let _ =
             writeln!(text, "| `{}` | {} | {} | {} |", rule.id, rule.subject.word(), rule.severity.word(), rule.title);

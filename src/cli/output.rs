@@ -12,7 +12,16 @@ pub(super) struct Output {
 
 enum To {
     Terminal(BufWriter<io::Stdout>),
-    File { writer: BufWriter<File>, partial: Partial, target: PathBuf },
+    File {
+        writer: BufWriter<File>,
+        partial: Partial,
+        target: PathBuf,
+    },
+    /// What is there already and is no file (`/dev/null`, a named pipe): written into, never replaced.
+    Device {
+        writer: BufWriter<File>,
+        target: PathBuf,
+    },
 }
 
 /// A file that is removed again unless it was finished.
@@ -38,6 +47,10 @@ impl Output {
         };
         let named =
             |error: io::Error| io::Error::new(error.kind(), format!("cannot write {}: {error}", target.display()));
+        if fs::metadata(target).is_ok_and(|there| !there.is_file()) {
+            let writer = BufWriter::new(File::options().write(true).open(target).map_err(named)?);
+            return Ok(Output { to: To::Device { writer, target: target.to_owned() } });
+        }
         let name = target.file_name().map_or_else(|| "report".into(), |name| name.to_string_lossy().into_owned());
         let path = target.with_file_name(format!(".{name}.{}.part", std::process::id()));
         let writer = BufWriter::with_capacity(1 << 16, File::create(&path).map_err(named)?);
@@ -58,7 +71,7 @@ impl Output {
     pub(super) fn write(&mut self, work: impl FnOnce(&mut dyn Write) -> io::Result<()>) -> io::Result<()> {
         match &mut self.to {
             To::Terminal(writer) => forgiving(work(writer)),
-            To::File { writer, target, .. } => work(writer)
+            To::File { writer, target, .. } | To::Device { writer, target } => work(writer)
                 .map_err(|error| io::Error::new(error.kind(), format!("cannot write {}: {error}", target.display()))),
         }
     }
@@ -67,6 +80,9 @@ impl Output {
     pub(super) fn finish(self) -> io::Result<()> {
         match self.to {
             To::Terminal(mut writer) => forgiving(writer.flush()),
+            To::Device { mut writer, target } => writer
+                .flush()
+                .map_err(|error| io::Error::new(error.kind(), format!("cannot write {}: {error}", target.display()))),
             To::File { mut writer, mut partial, target } => {
                 let named = |error: io::Error| {
                     io::Error::new(error.kind(), format!("cannot write {}: {error}", target.display()))

@@ -1,9 +1,9 @@
-//! Decks in memory, and a few words for rules, for tests.
+//! Decks in memory, for tests.
 
 use super::*;
 use crate::declared::Subject;
-use crate::expr::{ArgType, Type, Vocabulary};
-use crate::quantity::Dim;
+use crate::expr::Vocabulary;
+use crate::facts::vocabulary::vocabulary;
 use std::io;
 use std::path::Path;
 
@@ -17,50 +17,9 @@ impl DeckFiles for InMemory<'_> {
     }
 }
 
-/// A few attributes of each subject, enough for the rule pages.
-struct Words(Subject);
-
-const KINDS: &[&str] = &["nmos", "pmos", "npn", "diode"];
-
-impl Vocabulary for Words {
-    fn name(&self, name: &str) -> Option<Type> {
-        let length = Type::Number(Dim::METRE);
-        let volts = Type::Number(Dim::VOLT);
-        let count = Type::Number(Dim::NONE);
-        Some(match (self.0, name) {
-            (_, "name") | (Subject::Device, "class.name" | "model" | "body_ties" | "off_ties") => Type::Text,
-            (Subject::Device, "d.net" | "g.net" | "s.net" | "b.net") => Type::Text,
-            (Subject::Device, "width" | "length" | "finger_width") => length,
-            (Subject::Device, "class.length.min" | "class.length.max") => length,
-            (Subject::Device, "class.fingers.width.min" | "class.fingers.width.max") => length,
-            (Subject::Device, "fingers" | "copies" | "class.fingers.min" | "class.fingers.multiple_of") => count,
-            (Subject::Device, "class.high_voltage" | "body_held" | "ties_held" | "idle" | "dummy") => Type::Bool,
-            (Subject::Device, "class.kind") => Type::Word(KINDS),
-            (Subject::Class, "rating.vds" | "drift.limit" | "junction.limit") => volts,
-            (Subject::Run, "model" | "found" | "wanted" | "class" | "pins" | "file" | "reason" | "near") => Type::Text,
-            (Subject::Run, "rule" | "at" | "until" | "devices") => Type::Text,
-            _ => return None,
-        })
-    }
-
-    fn call(&self, name: &str, args: &[ArgType<'_>]) -> Option<Result<Type, String>> {
-        let known = args.len() == 1 && args[0].kind.is_some();
-        (name == "has").then(|| if known { Ok(Type::Bool) } else { Err("`has` takes one attribute".to_string()) })
-    }
-
-    fn names(&self) -> Vec<String> {
-        vec!["fingers".to_string(), "width".to_string()]
-    }
-}
-
-/// A vocabulary for each subject.
+/// The vocabulary of each subject, as rules meet it.
 pub(super) fn words(subject: Subject) -> &'static dyn Vocabulary {
-    match subject {
-        Subject::Device => &Words(Subject::Device),
-        Subject::Class => &Words(Subject::Class),
-        Subject::Run => &Words(Subject::Run),
-        _ => &Words(Subject::Net),
-    }
+    vocabulary(subject)
 }
 
 /// Loads `own` decks out of `files`.

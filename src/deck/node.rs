@@ -107,7 +107,7 @@ fn options() -> Options {
         duplicate_keys: DuplicateKeyPolicy::PassThrough,
         non_finite_float_policy: NonFiniteFloatPolicy::AsString,
         with_snippet: false,
-        budget: serde_saphyr::budget! { max_depth: DEEPEST, flow_nesting_limit: DEEPEST, max_nodes: MOST_NODES },
+        budget: serde_saphyr::budget! { max_depth: DEEPEST, flow_nesting_limit: DEEPEST, max_nodes: MOST_NODES, max_buffered_comment_events: MOST_NODES },
         alias_limits: serde_saphyr::alias_limits! { max_total_replayed_events: MOST_NODES },
     }
 }

@@ -613,7 +613,7 @@ rules:
   too-wide:
     for: device
     where: class.kind == nmoss and class.high_voltage
-#                        ^^^^^ `nmoss` is none of the words that can stand here => did you mean `nmos`? The words are nmos, pmos, npn, diode
+#                        ^^^^^ `nmoss` is none of the words that can stand here => did you mean `nmos`? The words are nmos, pmos, npn, pnp, njf, pjf, diode, resistor, capacitor, inductor, box
     require: width <= 40uA
 #            ^^^^^^^^^^^^^ a length cannot be compared with a current
     say: "{name} is {widht} wide"

@@ -248,7 +248,7 @@ pub fn elaborate<'a>(
     classes: &'a [Class],
     top: Option<(&str, Span)>,
 ) -> Design<'a> {
-    let globals = params::Globals::new(&tree, sources, &names);
+    let globals = params::Globals::new(&tree, &names);
     let mut design = Design {
         sources,
         names,

@@ -7,7 +7,7 @@ use super::Design;
 use crate::expr::{self, Expr, Node};
 use crate::names::{Names, Sym};
 use crate::netlist::tree::{CellIx, Function, GuardIx, Operand, Tree};
-use crate::source::{SourceMap, Span};
+use crate::source::Span;
 use hashbrown::HashMap;
 
 /// A value that a card gives, or why it is not known.
@@ -31,6 +31,16 @@ impl Trouble {
         Trouble { span: None, message: message.into(), help: None, quiet: true }
     }
 
+    /// What is wrong with an expression that begins at `place.start`.
+    pub(super) fn at(place: Span, fault: expr::Fault) -> Trouble {
+        Trouble {
+            span: Some(Span { start: place.start + fault.at.start, end: place.start + fault.at.end, ..place }),
+            quiet: fault.message.is_empty(),
+            message: fault.message,
+            help: fault.help,
+        }
+    }
+
     pub(super) fn missing(message: impl Into<String>) -> Trouble {
         Trouble { span: None, message: message.into(), help: None, quiet: false }
     }
@@ -50,14 +60,14 @@ pub(crate) struct Globals {
 }
 
 impl Globals {
-    pub(super) fn new(tree: &Tree, sources: &SourceMap, names: &Names) -> Globals {
+    pub(super) fn new(tree: &Tree, names: &Names) -> Globals {
         let functions =
             tree.functions.iter().enumerate().map(|(index, function)| (function.name.name, index as u32)).collect();
         let mut globals = Globals { functions, scale: 1.0, ..Globals::default() };
         if tree.cells.is_empty() {
             return globals;
         }
-        let outer = Outer { tree, sources, names, globals: &globals, around: &[] };
+        let outer = Outer { tree, names, globals: &globals, around: &[] };
         let settled = settle(&outer, CellIx(0), &[]);
         let around = [settled.env.as_slice()];
         let scope = Scope { outer: Outer { around: &around, ..outer }, own: Own::Nothing, depth: 0 };
@@ -79,7 +89,6 @@ impl Globals {
 #[derive(Clone, Copy)]
 pub(super) struct Outer<'a> {
     pub(super) tree: &'a Tree,
-    pub(super) sources: &'a SourceMap,
     pub(super) names: &'a Names,
     pub(super) globals: &'a Globals,
     /// Environments around, the innermost first (the global one is asked after them).
@@ -143,12 +152,7 @@ impl Scope<'_> {
 
     /// Evaluates an expression that begins at `place.start`.
     pub(super) fn expr(&self, expr: &Expr, place: Span) -> Reading {
-        expr::evaluate_spice(expr, self).map_err(|fault| Trouble {
-            span: Some(Span { start: place.start + fault.at.start, end: place.start + fault.at.end, ..place }),
-            quiet: fault.message.is_empty(),
-            message: fault.message,
-            help: fault.help,
-        })
+        expr::evaluate_spice(expr, self).map_err(|fault| Trouble::at(place, fault))
     }
 
     fn call(&self, function: &Function, args: &[f64]) -> Result<f64, String> {
@@ -357,13 +361,7 @@ impl Design<'_> {
             around.push(&variant.env);
             at = variant.lexical;
         }
-        let outer = Outer {
-            tree: &self.tree,
-            sources: self.sources,
-            names: &self.names,
-            globals: &self.globals,
-            around: &around,
-        };
+        let outer = Outer { tree: &self.tree, names: &self.names, globals: &self.globals, around: &around };
         work(&Scope { outer, own: Own::Nothing, depth: 0 })
     }
 }

@@ -10,6 +10,8 @@ use crate::netlist::tree::{CellIx, Fields, Word};
 use crate::netlist::values::{number, operand};
 use crate::netlist::waveforms::{Waveform, waveform};
 use crate::source::{FileId, Span};
+use hashbrown::HashMap;
+use std::cell::RefCell;
 
 /// The sizes of one device in one variant, in metres and plain numbers.
 #[derive(Clone, Debug, PartialEq)]
@@ -50,6 +52,11 @@ impl Card<'_> {
             .map(|&(_, value)| value)
     }
 
+    /// Whether it is the call of a cell.
+    fn is_call(&self) -> bool {
+        self.text.as_bytes().get(self.start as usize).is_some_and(|letter| letter.eq_ignore_ascii_case(&b'x'))
+    }
+
     /// The whole card, from its letter to its last field.
     pub fn span(&self) -> Span {
         Span::new(self.file, self.start, self.fields.end.max(self.start))
@@ -85,11 +92,22 @@ impl<'a> Design<'a> {
 
     /// The value of a word of a card.
     pub(super) fn word(&self, scope: &Scope<'_>, card: &Card<'_>, word: Word) -> Reading {
+        self.word_behind(scope, card, word, None)
+    }
+
+    fn word_behind(&self, scope: &Scope<'_>, card: &Card<'_>, word: Word, behind: Option<&OnCall<'_>>) -> Reading {
         let mega = self.tree.mega.contains(&card.file);
         if let Some(value) = number(card.text, word, mega).filter(|_| !word.quoted) {
             return Ok(value);
         }
         match operand(card.text, word, card.file, mega) {
+            Ok(operand) if card.is_call() => {
+                let Some(expr) = &operand.expr else { return scope.operand(&operand) };
+                let fresh = RefCell::new(HashMap::new());
+                let known = behind.map_or(&fresh, |behind| behind.known);
+                let own = OnCall { design: self, scope, card, word, known, behind };
+                expr::evaluate_spice(expr, &own).map_err(|fault| Trouble::at(operand.span, fault))
+            }
             Ok(operand) => scope.operand(&operand),
             Err(complaint) => {
                 let diagnostic = complaint.diagnostic(card.file);
@@ -156,8 +174,7 @@ impl<'a> Design<'a> {
 
     /// The cell that the netlist defines under a leaf's model name, for its header's defaults.
     fn header_of(&self, variant: VariantIx, card: &Card<'_>) -> Option<CellIx> {
-        let first = card.text.as_bytes().get(card.start as usize)?;
-        if !first.eq_ignore_ascii_case(&b'x') {
+        if !card.is_call() {
             return None;
         }
         let word = card.fields.after_slash.and_then(|at| card.fields.words.get(at)).or(card.fields.words.last())?;
@@ -172,6 +189,69 @@ impl<'a> Design<'a> {
             scope = source.parent;
         }
         None
+    }
+}
+
+/// The scope of a parameter on a cell's call: the other parameters of the same card, then the scope around. So a call may say
+/// `nf=2 ad='w/nf'`; one that says `w=w` means the `w` around. (Observed with the circuit simulator ngspice, version 39.)
+struct OnCall<'s> {
+    design: &'s Design<'s>,
+    scope: &'s Scope<'s>,
+    card: &'s Card<'s>,
+    word: Word,
+    /// What the others came to, by where they stand: each is worked out once.
+    known: &'s RefCell<HashMap<u32, Reading>>,
+    /// The parameter whose value asks for this one.
+    behind: Option<&'s OnCall<'s>>,
+}
+
+impl OnCall<'_> {
+    fn is_being_asked(&self, word: Word) -> bool {
+        let mut at = Some(self);
+        while let Some(asked) = at {
+            if asked.word.start == word.start {
+                return true;
+            }
+            at = asked.behind;
+        }
+        false
+    }
+
+    fn depth(&self) -> u32 {
+        let (mut depth, mut at) = (0, self.behind);
+        while let Some(asked) = at {
+            (depth, at) = (depth + 1, asked.behind);
+        }
+        depth
+    }
+}
+
+impl expr::Parameters for OnCall<'_> {
+    fn name(&self, name: &str) -> Result<Option<f64>, String> {
+        match self.card.param(name).filter(|&word| !self.is_being_asked(word)) {
+            Some(_) if self.depth() >= DEFAULT_DEPTH => {
+                Err("the parameters of this card refer to one another".to_owned())
+            }
+            Some(word) => {
+                let known = self.known.borrow().get(&word.start).cloned();
+                let reading = known.unwrap_or_else(|| {
+                    let reading = self.design.word_behind(self.scope, self.card, word, Some(self));
+                    self.known.borrow_mut().insert(word.start, reading.clone());
+                    reading
+                });
+                reading.map(Some).map_err(|trouble| if trouble.quiet { String::new() } else { trouble.message })
+            }
+            None => expr::Parameters::name(self.scope, name),
+        }
+    }
+
+    fn call(&self, name: &str, args: &[f64]) -> Result<Option<f64>, String> {
+        expr::Parameters::call(self.scope, name, args)
+    }
+
+    fn names(&self) -> Vec<String> {
+        let own = self.card.fields.params.iter().map(|(key, _)| key.of(self.card.text).to_owned());
+        own.chain(expr::Parameters::names(self.scope)).collect()
     }
 }
 

@@ -152,13 +152,7 @@ impl Work<'_, '_> {
             around.push(&variant.env);
             at = variant.lexical;
         }
-        let outer = Outer {
-            tree: &design.tree,
-            sources: design.sources,
-            names: &design.names,
-            globals: &design.globals,
-            around: &around,
-        };
+        let outer = Outer { tree: &design.tree, names: &design.names, globals: &design.globals, around: &around };
         settle(&outer, cell, given)
     }
 

@@ -25,16 +25,21 @@ pub(super) fn of_device(world: World<'_>, rules: &[&Rule], folded: Folded<(Reach
     };
     let view = DeviceView::new(world, *at, *device, class);
     let nets = class.pins.iter().enumerate().map(|(pin, name)| (name.clone(), view.net_text(pin).to_owned())).collect();
-    let finding = Finding { nets, ..in_cell(world, *at, view.name(), &folded) };
+    let finding = Finding { nets, ..in_cell(world, rules, *at, view.name(), &folded) };
     word(rule, verdict, &view, evidence, finding, statement)
 }
 
 /// The parts of a finding about something that stands in a cell.
-pub(super) fn in_cell<S>(world: World<'_>, at: ReachIx, name: &str, folded: &Folded<S>) -> Finding {
+pub(super) fn in_cell<S>(world: World<'_>, rules: &[&Rule], at: ReachIx, name: &str, folded: &Folded<S>) -> Finding {
     let above = world.reach.path(at);
     let path = if above.is_empty() { name.to_owned() } else { format!("{above}.{name}") };
     let cell = world.design.template(world.context(at).variant).cell;
-    let (paths, paths_complete) = paths(world, &folded.contexts, name);
+    let id = &rules[folded.statement.0 as usize].id;
+    // Only waivers read the list of paths, and making it is what a finding costs most.
+    let (paths, paths_complete) = match world.deck.waivers.iter().any(|waiver| waiver.rule == *id) {
+        true => paths(world, &folded.contexts, name),
+        false => (vec![path.clone()], folded.instances <= 1),
+    };
     let evidence = &folded.worst.1;
     Finding {
         verdict: folded.statement.1,

@@ -51,7 +51,7 @@ fn judge_nets(world: World<'_>, rules: &[&Rule], asked: &[u32]) -> Vec<Diagnosti
 fn of_net(world: World<'_>, rules: &[&Rule], folded: Folded<(ReachIx, NetIx)>) -> Diagnostic {
     let (at, net) = folded.worst.0;
     let view = NetView::new(world, at, net);
-    let finding = in_cell(world, at, view.name(), &folded);
+    let finding = in_cell(world, rules, at, view.name(), &folded);
     let (rule, verdict, statement) = folded.statement;
     word(rules[rule as usize], verdict, &view, &folded.worst.1, finding, statement)
 }
@@ -78,7 +78,7 @@ fn judge_instances(world: World<'_>, rules: &[&Rule], asked: &[u32]) -> Vec<Diag
 fn of_instance(world: World<'_>, rules: &[&Rule], folded: Folded<(ReachIx, InstanceIx)>) -> Diagnostic {
     let (at, instance) = folded.worst.0;
     let view = InstanceView::new(world, at, instance);
-    let finding = in_cell(world, at, view.name(), &folded);
+    let finding = in_cell(world, rules, at, view.name(), &folded);
     let (rule, verdict, statement) = folded.statement;
     word(rules[rule as usize], verdict, &view, &folded.worst.1, finding, statement)
 }

@@ -5,7 +5,8 @@ use crate::expr::Value;
 
 impl DeviceView<'_> {
     /// Whether the gate's net is driven: some conducting path ties it to a rail, and in every mode one of these paths can
-    /// conduct. Unknown where it hangs on a port or global of the top that no rail declares.
+    /// conduct. Unknown where it hangs on a port or global of the top that no rail declares, or where
+    /// the deck declares none at all: what drives such a netlist stands outside of it.
     pub(super) fn gate_driven(&self) -> Value {
         let Some((pin, net)) = self.class.pin("g").and_then(|pin| Some((pin, self.net(pin)?))) else {
             return Value::Bool(true);
@@ -32,6 +33,9 @@ impl DeviceView<'_> {
         if reach.is_open(self.at, net) {
             let net = self.net_text(pin).to_owned();
             return self.unknown(format!("net `{net}` leads to a port or global of the top that no rail declares"));
+        }
+        if self.world.deck.rails.is_empty() && self.world.deck.modes.is_empty() {
+            return self.unknown("the deck declares no rails".to_owned());
         }
         Value::Bool(false)
     }

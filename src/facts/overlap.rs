@@ -56,6 +56,9 @@ impl DeviceView<'_> {
         let states: Option<Vec<ModeState>> =
             (0..self.world.reach.modes.len()).map(|mode| self.mode_state(mode, limits.vds)).collect();
         let Some(states) = states else { return Value::Bool(true) };
+        if self.carries_little(&limits) {
+            return Value::Bool(true);
+        }
         let in_modes = self.in_modes(&states, &limits);
         if matches!(in_modes, Verdict::Broken) {
             return Value::Bool(false);
@@ -72,6 +75,12 @@ impl DeviceView<'_> {
         }
     }
 
+    /// Whether its current per width is known to stay within what may flow all the time: then no state and no edge is too much.
+    fn carries_little(&self, limits: &OnState) -> bool {
+        let density = self.known_current().and_then(|(amps, _)| self.density_of(amps));
+        matches!((density, limits.density), (Some(density), Some(limit)) if density <= limit * (1.0 + 1e-9))
+    }
+
     fn note_state_pins(&self) {
         let pins = ["d", "g"].iter().filter_map(|pin| self.class.pin(pin)).collect();
         self.note(|evidence| evidence.pins = pins);
@@ -83,13 +92,7 @@ impl DeviceView<'_> {
         for (mode, state) in states.iter().enumerate().filter(|(_, state)| state.on && state.high) {
             let known = self.known_current();
             let density = known.and_then(|(amps, exact)| self.density_of(amps).map(|density| (density, exact)));
-            let limit = limits.density;
-            if let (Some((density, _)), Some(limit)) = (density, limit)
-                && density <= limit * (1.0 + 1e-9)
-            {
-                continue;
-            }
-            let dense = matches!((density, limit), (Some((_, true)), Some(_)));
+            let dense = matches!((density, limits.density), (Some((_, true)), Some(_)));
             if state.surely_on && state.surely_high || dense && self.works_on_and_high() {
                 self.note_mode(mode, state, density.map(|(density, _)| density), limits);
                 return Verdict::Broken;
@@ -121,6 +124,12 @@ impl DeviceView<'_> {
         self.note_state_pins();
     }
 
+    fn has_noted(&self, key: &str) -> bool {
+        let mut found = false;
+        self.note(|evidence| found = evidence.values.iter().any(|(name, _)| name == key));
+        found
+    }
+
     fn note_what(&self, what: String, mode: Option<&str>) {
         self.note(|evidence| {
             evidence.values.retain(|(key, _)| key != "what");
@@ -140,16 +149,18 @@ impl DeviceView<'_> {
             _ => false,
         };
         let crossing: Vec<&Transition> = self.world.deck.transitions.iter().filter(crosses).collect();
-        let apart = states
-            .iter()
-            .enumerate()
-            .any(|(a, on)| on.on && states.iter().enumerate().any(|(b, high)| a != b && high.high));
         if crossing.is_empty() {
-            if !apart {
-                return Verdict::Holds;
+            let apart = |&(a, b): &(usize, usize)| a != b && states[a].on && states[b].high;
+            let pairs = (0..states.len()).flat_map(|a| (0..states.len()).map(move |b| (a, b)));
+            let Some((on, high)) = pairs.into_iter().find(apart) else { return Verdict::Holds };
+            if !self.has_noted("what") {
+                let name = |mode: usize| reach.mode_name(mode).unwrap_or("");
+                let (on, high, limit) = (name(on), name(high), show(limits.vds, Dim::VOLT));
+                let what = format!("it is on in mode `{on}` and above {limit} in mode `{high}`, and nothing says how long the change takes");
+                self.note_what(what, None);
             }
             return Verdict::Open(
-                "it is on in one mode and at high voltage in another: declare the transitions between them (takes, rate)",
+                "declare the transitions between the modes in which it is on and those in which its drain is high (takes, rate)",
             );
         }
         let duty: f64 = crossing.iter().map(|transition| transition.takes * transition.rate).sum();
@@ -174,13 +185,13 @@ impl DeviceView<'_> {
             .fold(0.0, f64::max);
         let loss = self.known_current().map_or(String::new(), |(amps, _)| {
             let watts: f64 = crossing.iter().map(|t| 0.5 * volts * amps * t.takes * t.rate).sum();
-            format!(", and loses {}", show(watts, Dim::WATT))
+            format!(", and loses {} at {} and {}", show(watts, Dim::WATT), show(volts, Dim::VOLT), show(amps, Dim::AMPERE))
         });
         self.note_what(
             format!(
                 "on and high together for {} of the time, going from {}: {allowed}{loss}",
                 show_percent(duty),
-                names.join(" and ")
+                names.join(", ")
             ),
             None,
         );

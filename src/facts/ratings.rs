@@ -173,7 +173,7 @@ impl DeviceView<'_> {
             (x.hi - y.lo) - (x.lo - y.hi)
         };
         let best = (0..frames.len()).reduce(|a, b| if width(b) < width(a) { b } else { a }).unwrap_or(0);
-        frames[best].name.clone()
+        if best == 0 { "ground".to_owned() } else { format!("net {}", frames[best].name) }
     }
 
     fn note_open(&self, open: &[&Rating]) {

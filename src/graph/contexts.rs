@@ -225,7 +225,7 @@ impl Work<'_, '_> {
         }
         let pending = match context.pending.as_slice() {
             [] => Vec::new(),
-            pending => self.marks.into_instance(self.deck, pending, self.design.instance_name(template, instance)),
+            pending => self.marks.below_instance(self.deck, pending, self.design.instance_name(template, instance)),
         };
         Key { variant: child, joined, marks, pending }
     }

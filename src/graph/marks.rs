@@ -138,7 +138,7 @@ impl Marks {
     }
 
     /// The rail paths that lead into an instance of this name.
-    pub(super) fn into_instance(&self, deck: &Deck, pending: &[Pending], name: &str) -> Vec<Pending> {
+    pub(super) fn below_instance(&self, deck: &Deck, pending: &[Pending], name: &str) -> Vec<Pending> {
         let leads = |pending: &&Pending| {
             let rail = rail(deck, pending.slot);
             let rest = after_segments(rail.net.text(), pending.segment);

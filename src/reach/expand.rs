@@ -2,7 +2,7 @@
 
 use super::frames::{Frames, TopFacts};
 use super::interval::Interval;
-use super::plan::{Ground, PairBound, Plans};
+use super::plan::{Ground, PairBounds, Plans};
 use super::solve::{Answer, InputKey, Inputs, Solver};
 use super::state::State;
 use super::terminals::{Terminals, table};
@@ -33,10 +33,11 @@ pub struct ReachContext {
     pub children: Vec<ReachIx>,
     /// Its nets in each mode.
     pub states: Vec<State>,
-    pub(super) inputs: Vec<Inputs>,
     pub(super) tied: Vec<bool>,
     pub(super) open: Vec<bool>,
-    pub(super) bounds: HashMap<NetIx, Vec<PairBound>>,
+    /// For each mode.
+    pub(super) bounds: Vec<PairBounds>,
+    pub(super) caps: Vec<HashMap<NetIx, Vec<f64>>>,
 }
 
 /// The reach of everything.
@@ -104,8 +105,12 @@ impl<'s> Shared<'s> {
         let answer = Rc::new(Answer::of(&solver.state, solver.template, solver.context));
         let number = self.answers.borrow().len() as u32;
         self.answers.borrow_mut().push(Rc::clone(&answer));
+        let mut known = self.known.borrow_mut();
+        // Told its own answer, the context adds nothing more: asking again is answered at once, at every level.
+        known.insert(inputs.with(&answer).key(at, mode), number);
+        known.insert(key, number);
+        drop(known);
         self.asked.borrow_mut().push((at, mode, inputs));
-        self.known.borrow_mut().insert(key, number);
         (number, answer)
     }
 
@@ -345,6 +350,7 @@ impl<'e> Expander<'e> {
             fixed: vec![false; ports],
             tied: template.boundary().map(tied).collect(),
             open: template.boundary().map(|net| !tied(net)).collect(),
+            caps: Vec::new(),
             bounds: Vec::new(),
         }
     }
@@ -352,12 +358,14 @@ impl<'e> Expander<'e> {
     fn add(&mut self, at: ContextIx, inputs: Vec<Inputs>) -> ReachIx {
         let index = ReachIx(self.base + self.all.len() as u32);
         let mut states = Vec::with_capacity(inputs.len());
-        let (mut tied, mut open, mut bounds) = (Vec::new(), Vec::new(), HashMap::new());
+        let (mut tied, mut open, mut bounds, mut caps) = (Vec::new(), Vec::new(), Vec::new(), Vec::new());
         for (mode, inputs) in inputs.iter().enumerate() {
             let mut solver = Solver::new(&self.shared, at, mode as u32, inputs, true);
             solver.run();
             states.push(std::mem::take(&mut solver.state));
-            (tied, open, bounds) = (solver.tied, solver.open, solver.bounds);
+            (tied, open) = (solver.tied, solver.open);
+            bounds.push(solver.bounds);
+            caps.push(solver.caps);
         }
         self.all.push(ReachContext {
             context: at,
@@ -366,10 +374,10 @@ impl<'e> Expander<'e> {
             parents: Vec::new(),
             children: Vec::new(),
             states,
-            inputs,
             tied,
             open,
             bounds,
+            caps,
         });
         index
     }
@@ -406,14 +414,15 @@ impl<'e> Expander<'e> {
         let mut per_instance = vec![Vec::new(); instances as usize];
         for mode in 0..self.shared.modes.len() {
             let here = &mut self.all[index];
-            let (state, bounds) = (std::mem::take(&mut here.states[mode]), std::mem::take(&mut here.bounds));
+            let state = std::mem::take(&mut here.states[mode]);
+            let limits = (std::mem::take(&mut here.bounds[mode]), std::mem::take(&mut here.caps[mode]));
             let groups = (std::mem::take(&mut here.tied), std::mem::take(&mut here.open));
-            let solver = Solver::finished(&self.shared, at, mode as u32, state, groups, bounds);
+            let solver = Solver::finished(&self.shared, at, mode as u32, state, groups, limits);
             for (instance, inputs) in per_instance.iter_mut().enumerate() {
                 inputs.push(solver.inputs_for(InstanceIx(instance as u32)));
             }
             let here = &mut self.all[index];
-            (here.states[mode], here.bounds) = (solver.state, solver.bounds);
+            (here.states[mode], here.bounds[mode], here.caps[mode]) = (solver.state, solver.bounds, solver.caps);
             (here.tied, here.open) = (solver.tied, solver.open);
         }
         per_instance

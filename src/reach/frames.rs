@@ -133,10 +133,15 @@ impl Frames {
                 End::Volts(_) => None,
             })
             .collect();
+        // A rail that a steady source makes of another stands at a fixed distance from it: as a frame it would say nothing new.
+        let own_range = |net: NetIx| {
+            let declared = top.modes.iter().any(|&mode| slot(top, net, mode).is_some());
+            declared || top.sources.iter().any(|link| (link.plus == net || link.minus == net) && link.range.hi > link.range.lo)
+        };
         let mut wanted: Vec<(bool, NetIx)> = self
             .rails
             .iter()
-            .filter(|&&net| varies(net) && (named.contains(&net) || (top.carries)(net)))
+            .filter(|&&net| varies(net) && own_range(net) && (named.contains(&net) || (top.carries)(net)))
             .map(|&net| (!named.contains(&net), net))
             .collect();
         wanted.sort_unstable();

@@ -47,18 +47,12 @@ impl Reach<'_> {
             let (of_x, of_y) = (state.reach(x, frame), state.reach(y, frame));
             between = between.and(Interval { lo: of_x.lo - of_y.hi, hi: of_x.hi - of_y.lo });
         }
-        if state.is_fixed(x) && state.is_fixed(y) { between } else { between.and(self.bound(here, x, y)) }
+        if state.is_fixed(x) && state.is_fixed(y) { between } else { between.and(self.bound(here, mode, x, y)) }
     }
 
     /// What clamps and body diodes say of V(x) − V(y), for roots.
-    fn bound(&self, here: &ReachContext, x: NetIx, y: NetIx) -> Interval {
-        let plan = self.plans.get(here.context);
-        let inside = |net: NetIx| plan.bounds_at.get(&net).into_iter().flatten().map(|&at| plan.bounds[at as usize]);
-        let outside = |net: NetIx| here.bounds.get(&net).into_iter().flatten().copied();
-        let forward = inside(x).chain(outside(x)).filter(|bound| bound.x == x && bound.y == y).map(|bound| bound.range);
-        let back =
-            inside(y).chain(outside(y)).filter(|bound| bound.x == y && bound.y == x).map(|bound| bound.range.negated());
-        forward.chain(back).fold(Interval::ANY, Interval::and)
+    fn bound(&self, here: &ReachContext, mode: usize, x: NetIx, y: NetIx) -> Interval {
+        self.plans.get(here.context).bounds.between(x, y).and(here.bounds[mode].between(x, y))
     }
 
     /// The reach of a net in a frame and mode.

@@ -13,12 +13,41 @@ use petgraph::unionfind::UnionFind;
 /// A diode drop, volts: how far a body diode lets its drain go beyond its source (0.9 V: common practice, no source).
 pub(super) const DIODE_DROP: f64 = 0.9;
 
-/// V(x) − V(y) stays in the range, by a clamp or a body diode.
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub(super) struct PairBound {
-    pub(super) x: NetIx,
-    pub(super) y: NetIx,
-    pub(super) range: Interval,
+/// What clamps and body diodes say of the voltage between two nets. Looked up by the pair, so that a rail with a million devices
+/// on it costs no more than any net.
+#[derive(Clone, Debug, Default, PartialEq)]
+pub(super) struct PairBounds {
+    by_pair: HashMap<(NetIx, NetIx), Interval>,
+}
+
+impl PairBounds {
+    /// V(x) − V(y) stays in the range, too.
+    pub(super) fn add(&mut self, x: NetIx, y: NetIx, range: Interval) {
+        if x == y {
+            return;
+        }
+        let (key, range) = if x < y { ((x, y), range) } else { ((y, x), range.negated()) };
+        let known = self.by_pair.entry(key).or_insert(Interval::ANY);
+        *known = known.and(range);
+    }
+
+    /// What is known of V(x) − V(y).
+    pub(super) fn between(&self, x: NetIx, y: NetIx) -> Interval {
+        if self.by_pair.is_empty() {
+            return Interval::ANY;
+        }
+        let found = |x: NetIx, y: NetIx| self.by_pair.get(&(x, y)).copied();
+        if x < y { found(x, y) } else { found(y, x).map(Interval::negated) }.unwrap_or(Interval::ANY)
+    }
+
+    pub(super) fn is_empty(&self) -> bool {
+        self.by_pair.is_empty()
+    }
+
+    /// All pairs, in no particular order: V(x) − V(y) is in the range.
+    pub(super) fn iter(&self) -> impl Iterator<Item = (NetIx, NetIx, Interval)> + '_ {
+        self.by_pair.iter().map(|(&(x, y), &range)| (x, y, range))
+    }
 }
 
 /// What a context shows at its boundary.
@@ -47,9 +76,7 @@ pub(super) struct Plan {
     pub(super) inductor: Vec<bool>,
     /// Nets that a body, source, resistor or diode stands on.
     pub(super) carries: Vec<bool>,
-    pub(super) bounds: Vec<PairBound>,
-    /// Bounds by net, for pairs.
-    pub(super) bounds_at: HashMap<NetIx, Vec<u32>>,
+    pub(super) bounds: PairBounds,
     pub(super) sources: Vec<SourceLink>,
     shown: Shown,
 }
@@ -154,10 +181,6 @@ impl<'m> Maker<'m> {
             }
         }
         self.plan.group_has_rail = has_rail;
-        for (index, bound) in self.plan.bounds.iter().enumerate() {
-            self.plan.bounds_at.entry(bound.x).or_default().push(index as u32);
-            self.plan.bounds_at.entry(bound.y).or_default().push(index as u32);
-        }
         self.show();
         self.plan
     }
@@ -180,7 +203,7 @@ impl<'m> Maker<'m> {
                         } else {
                             Interval { lo: f64::NEG_INFINITY, hi: DIODE_DROP }
                         };
-                        self.bound(d, s, range);
+                        self.plan.bounds.add(d, s, range);
                     }
                 }
             }
@@ -194,7 +217,7 @@ impl<'m> Maker<'m> {
                 self.tie(root(g), root(s));
                 self.carry(&[root(s)]);
             }
-            Terminals::Diode { a, k } => {
+            Terminals::Diode { a, k, .. } => {
                 let (a, k) = (root(a), root(k));
                 self.tie(a, k);
                 self.carry(&[a, k]);
@@ -202,7 +225,7 @@ impl<'m> Maker<'m> {
                     .class
                     .map(|class| &self.ground.design.classes[class as usize]);
                 if let Some(clamp) = class.and_then(|class| class.clamp) {
-                    self.bound(k, a, Interval { lo: clamp.lo, hi: clamp.hi });
+                    self.plan.bounds.add(k, a, Interval { lo: clamp.lo, hi: clamp.hi });
                 }
             }
             Terminals::Through { a, b, resistor } => {
@@ -238,12 +261,6 @@ impl<'m> Maker<'m> {
         }
     }
 
-    fn bound(&mut self, x: NetIx, y: NetIx, range: Interval) {
-        if x != y {
-            self.plan.bounds.push(PairBound { x, y, range });
-        }
-    }
-
     fn instance(&mut self, instance: InstanceIx, shown: &Shown) {
         let pins = self.template.instance_pins(instance);
         let net = |position: u32| self.context.root(pins[position as usize]);
@@ -258,10 +275,7 @@ impl<'m> Maker<'m> {
             self.plan.carries[here.0 as usize] |= shown.carries[at];
         }
         for &(x, y, range) in &shown.bounds {
-            let (x, y) = (net(x), net(y));
-            if x != y {
-                self.plan.bounds.push(PairBound { x, y, range });
-            }
+            self.plan.bounds.add(net(x), net(y), range);
         }
         for &(plus, minus, range) in &shown.sources {
             self.plan.sources.push(SourceLink { plus: net(plus), minus: net(minus), range });
@@ -281,11 +295,12 @@ impl<'m> Maker<'m> {
             plan.shown.carries.push(plan.carries[net.0 as usize]);
             positions.entry(net).or_insert(position as u32);
         }
-        for bound in &plan.bounds {
-            if let (Some(&x), Some(&y)) = (positions.get(&bound.x), positions.get(&bound.y)) {
-                plan.shown.bounds.push((x, y, bound.range));
+        for (x, y, range) in plan.bounds.iter() {
+            if let (Some(&x), Some(&y)) = (positions.get(&x), positions.get(&y)) {
+                plan.shown.bounds.push((x, y, range));
             }
         }
+        plan.shown.bounds.sort_unstable_by_key(|&(x, y, _)| (x, y));
         plan.shown.sources = shown_sources(&plan.sources, &positions);
     }
 }
@@ -293,6 +308,9 @@ impl<'m> Maker<'m> {
 /// Sources between boundary nets, chains of them through inner nets included.
 fn shown_sources(sources: &[SourceLink], positions: &HashMap<NetIx, u32>) -> Vec<(u32, u32, Interval)> {
     let mut shown = Vec::new();
+    if sources.is_empty() {
+        return shown;
+    }
     for (&start, &from) in positions {
         let mut seen = vec![start];
         let mut stack = vec![(start, Interval::point(0.0))];
@@ -313,6 +331,6 @@ fn shown_sources(sources: &[SourceLink], positions: &HashMap<NetIx, u32>) -> Vec
             }
         }
     }
-    shown.sort_by(|a, b| (a.0, a.1).cmp(&(b.0, b.1)));
+    shown.sort_by_key(|edge| (edge.0, edge.1));
     shown
 }

@@ -2,7 +2,7 @@
 
 use super::expand::Shared;
 use super::interval::Interval;
-use super::plan::{PairBound, Plan};
+use super::plan::{PairBounds, Plan};
 use super::state::{ANSWER, NOTHING, OUTSIDE, Side, State};
 use super::terminals::Terminals;
 use super::touch::{Toucher, Touches};
@@ -23,6 +23,9 @@ pub(super) struct Inputs {
     pub(super) tied: Vec<bool>,
     /// Whether conducting paths outside lead from the port to an undeclared port or global of the top.
     pub(super) open: Vec<bool>,
+    /// What clamps and body diodes outside hold the ports to: as `values`, infinite where they say nothing; empty where they say
+    /// nothing of any port.
+    pub(super) caps: Vec<f64>,
     /// Clamps outside between ports: positions and range of V(x) − V(y).
     pub(super) bounds: Vec<(u32, u32, Interval)>,
 }
@@ -42,10 +45,25 @@ impl Inputs {
         InputKey {
             at,
             mode,
-            bits: self.values.iter().map(|value| if *value == 0.0 { 0 } else { value.to_bits() }).collect(),
+            bits: self.values.iter().chain(&self.caps).map(|value| if *value == 0.0 { 0 } else { value.to_bits() }).collect(),
             flags: self.flags(),
             bounds: self.bounds.iter().map(|(x, y, range)| (*x, *y, range.lo.to_bits(), range.hi.to_bits())).collect(),
         }
+    }
+
+    /// These inputs after the context has added its answer.
+    pub(super) fn with(&self, answer: &Answer) -> Inputs {
+        let mut joined = self.clone();
+        let per_port = self.values.len() / self.driven.len().max(1);
+        for (at, value) in joined.values.iter_mut().enumerate() {
+            if !self.fixed[at / per_port] {
+                *value = value.max(answer.values[at]);
+            }
+        }
+        for (driven, &answered) in joined.driven.iter_mut().zip(&answer.driven) {
+            *driven |= answered;
+        }
+        joined
     }
 
     fn flags(&self) -> Vec<u8> {
@@ -79,8 +97,8 @@ pub(super) struct Solver<'s> {
     pub(super) state: State,
     pub(super) tied: Vec<bool>,
     pub(super) open: Vec<bool>,
-    pub(super) bounds: HashMap<NetIx, Vec<PairBound>>,
-    caps: HashMap<NetIx, Vec<f64>>,
+    pub(super) bounds: PairBounds,
+    pub(super) caps: HashMap<NetIx, Vec<f64>>,
     queue: VecDeque<u32>,
     queued: Vec<bool>,
     asked: Vec<bool>,
@@ -105,7 +123,7 @@ impl<'s> Solver<'s> {
             state: State::new(template.nets.len(), frames, remember),
             tied: Vec::new(),
             open: Vec::new(),
-            bounds: HashMap::new(),
+            bounds: PairBounds::default(),
             caps: HashMap::new(),
             queue: VecDeque::new(),
             queued: vec![false; template.nets.len()],
@@ -127,7 +145,7 @@ impl<'s> Solver<'s> {
         mode: u32,
         state: State,
         (tied, open): (Vec<bool>, Vec<bool>),
-        bounds: HashMap<NetIx, Vec<PairBound>>,
+        (bounds, caps): (PairBounds, HashMap<NetIx, Vec<f64>>),
     ) -> Solver<'s> {
         let context = shared.contexts.get(at);
         let template = shared.design.template(context.variant);
@@ -144,7 +162,7 @@ impl<'s> Solver<'s> {
             tied,
             open,
             bounds,
-            caps: HashMap::new(),
+            caps,
             queue: VecDeque::new(),
             queued: Vec::new(),
             asked: Vec::new(),
@@ -227,24 +245,31 @@ impl<'s> Solver<'s> {
 
     /// Clamps and body diodes against rails cap what is propagated.
     fn make_caps(&mut self, inputs: &Inputs) {
+        if !inputs.caps.is_empty() {
+            self.take_caps(inputs);
+        }
         let boundary: Vec<NetIx> =
             if inputs.bounds.is_empty() { Vec::new() } else { self.template.boundary().collect() };
-        let outside = inputs.bounds.iter().map(|&(x, y, range)| PairBound {
-            x: self.context.root(boundary[x as usize]),
-            y: self.context.root(boundary[y as usize]),
-            range,
-        });
-        for bound in outside {
-            self.bounds.entry(bound.x).or_default().push(bound);
+        for &(x, y, range) in &inputs.bounds {
+            self.bounds.add(self.context.root(boundary[x as usize]), self.context.root(boundary[y as usize]), range);
         }
-        let all: Vec<PairBound> =
-            self.plan.bounds.iter().copied().chain(self.bounds.values().flatten().copied()).collect();
-        for bound in all {
-            let (x, y) = (self.state.fixed[bound.x.0 as usize], self.state.fixed[bound.y.0 as usize]);
-            match (x, y) {
-                (false, true) => self.cap(bound.x, bound.y, bound.range),
-                (true, false) => self.cap(bound.y, bound.x, bound.range.negated()),
+        let all: Vec<(NetIx, NetIx, Interval)> = self.plan.bounds.iter().chain(self.bounds.iter()).collect();
+        for (x, y, range) in all {
+            match (self.state.fixed[x.0 as usize], self.state.fixed[y.0 as usize]) {
+                (false, true) => self.cap(x, y, range),
+                (true, false) => self.cap(y, x, range.negated()),
                 _ => {}
+            }
+        }
+    }
+
+    fn take_caps(&mut self, inputs: &Inputs) {
+        let ends = self.state.frames * 2;
+        for (position, net) in self.template.boundary().enumerate() {
+            let outside = &inputs.caps[position * ends..(position + 1) * ends];
+            if outside.iter().any(|cap| cap.is_finite()) {
+                let caps = self.caps.entry(self.context.root(net)).or_insert_with(|| vec![f64::INFINITY; ends]);
+                caps.iter_mut().zip(outside).for_each(|(cap, &outside)| *cap = cap.min(outside));
             }
         }
     }
@@ -320,7 +345,7 @@ impl<'s> Solver<'s> {
         let pins = self.template.instance_pins(instance);
         let frames = self.state.frames;
         let mut inputs = Inputs::default();
-        let mut positions: HashMap<NetIx, u32> = HashMap::new();
+        let mut distinct: Vec<(NetIx, u32)> = Vec::new();
         for (position, &net) in pins.iter().enumerate() {
             let net = self.context.root(net);
             let from = self.state.at(net, 0, Side::Hi);
@@ -329,41 +354,37 @@ impl<'s> Solver<'s> {
             inputs.fixed.push(self.state.fixed[net.0 as usize]);
             inputs.tied.push(self.tied[self.plan.group(net) as usize]);
             inputs.open.push(self.open[self.plan.group(net) as usize]);
-            positions.entry(net).or_insert(position as u32);
+            distinct.push((net, position as u32));
+        }
+        if distinct.iter().any(|(net, _)| self.caps.contains_key(net)) {
+            for (net, _) in &distinct {
+                match self.caps.get(net) {
+                    Some(caps) => inputs.caps.extend_from_slice(caps),
+                    None => inputs.caps.extend(std::iter::repeat_n(f64::INFINITY, frames * 2)),
+                }
+            }
         }
         if !self.plan.bounds.is_empty() || !self.bounds.is_empty() {
-            for (&net, &x) in &positions {
-                for bound in self.bounds_from(net) {
-                    if let Some(&y) = positions.get(&bound.y) {
-                        inputs.bounds.push((x, y, bound.range));
+            distinct.sort_unstable();
+            distinct.dedup_by_key(|&mut (net, _)| net);
+            for &(x, at_x) in distinct.iter().filter(|(net, _)| !self.state.fixed[net.0 as usize]) {
+                for &(y, at_y) in &distinct {
+                    let range = self.plan.bounds.between(x, y).and(self.bounds.between(x, y));
+                    if range != Interval::ANY && (self.state.fixed[y.0 as usize] || x < y) {
+                        inputs.bounds.push((at_x, at_y, range));
                     }
                 }
             }
-            inputs.bounds.sort_by(|a, b| {
-                (a.0, a.1, a.2.lo, a.2.hi).partial_cmp(&(b.0, b.1, b.2.lo, b.2.hi)).unwrap_or(std::cmp::Ordering::Equal)
-            });
-            inputs.bounds.dedup();
         }
         inputs
     }
 
-    /// Bounds whose `x` is this net, from inside and outside.
-    fn bounds_from(&self, net: NetIx) -> impl Iterator<Item = PairBound> + '_ {
-        let inside = self.plan.bounds_at.get(&net).into_iter().flatten().map(|&at| self.plan.bounds[at as usize]);
-        inside.filter(move |bound| bound.x == net).chain(self.bounds.get(&net).into_iter().flatten().copied())
-    }
-
     /// What clamps and body diodes say of V(x) − V(y).
     pub(super) fn pair_bound(&self, x: NetIx, y: NetIx) -> Interval {
-        if self.plan.bounds.is_empty() && self.bounds.is_empty() {
-            return Interval::ANY;
-        }
         if self.state.fixed[x.0 as usize] && self.state.fixed[y.0 as usize] {
             return Interval::ANY;
         }
-        let forward = self.bounds_from(x).filter(|bound| bound.y == y).map(|bound| bound.range);
-        let back = self.bounds_from(y).filter(|bound| bound.y == x).map(|bound| bound.range.negated());
-        forward.chain(back).fold(Interval::ANY, Interval::and)
+        self.plan.bounds.between(x, y).and(self.bounds.between(x, y))
     }
 
     pub(super) fn source_range(&self, device: DeviceIx) -> Option<(f64, f64)> {

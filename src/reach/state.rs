@@ -65,8 +65,14 @@ impl State {
     }
 
     /// The reach of a (root) net in a frame; an end that nothing reached, or that is not known, is infinite.
+    ///
+    /// Where what pulls up ends below where what pulls down ends, neither conducts in between, and the net floats there: the
+    /// range is that gap.
     pub fn reach(&self, net: NetIx, frame: usize) -> Interval {
         let (hi, lo) = (self.value(net, frame, Side::Hi), self.value(net, frame, Side::Lo));
+        if hi != NOTHING && lo != NOTHING && -lo > hi {
+            return Interval { lo: hi, hi: -lo };
+        }
         Interval {
             lo: if lo == NOTHING { f64::NEG_INFINITY } else { -lo },
             hi: if hi == NOTHING { f64::INFINITY } else { hi },

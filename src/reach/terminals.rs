@@ -12,8 +12,8 @@ pub(super) enum Terminals {
     Bipolar { c: u8, b: u8, e: u8, n: bool },
     /// Drain, gate, source; `n` for n-channel.
     Jfet { d: u8, g: u8, s: u8, n: bool },
-    /// Anode, cathode.
-    Diode { a: u8, k: u8 },
+    /// Anode, cathode; `breaks`: it has a breakdown that it is meant to be used in, so that it conducts both ways.
+    Diode { a: u8, k: u8, breaks: bool },
     /// Passes voltage both ways between two terminals.
     Through { a: u8, b: u8, resistor: bool },
     /// Lifts its nets beyond its supplies.
@@ -46,7 +46,10 @@ fn terminals(kind: &DeviceType, class: Option<&Class>) -> Terminals {
             let n = kind.element == Element::Njf;
             three((pin("d", 0), pin("g", 1), pin("s", 2))).map(|(d, g, s)| Terminals::Jfet { d, g, s, n })
         }
-        Element::Diode => Some(Terminals::Diode { a: pin("a", 0).unwrap_or(0), k: pin("k", 1).unwrap_or(1) }),
+        Element::Diode => {
+            let breaks = class.and_then(|class| class.clamp).is_some_and(|clamp| clamp.hi.is_finite());
+            Some(Terminals::Diode { a: pin("a", 0).unwrap_or(0), k: pin("k", 1).unwrap_or(1), breaks })
+        }
         Element::Resistor => Some(Terminals::Through { a: 0, b: 1, resistor: true }),
         Element::CurrentSource | Element::Switch => Some(Terminals::Through { a: 0, b: 1, resistor: false }),
         Element::Line => Some(Terminals::Through { a: 0, b: if kind.letter == b'u' { 1 } else { 2 }, resistor: false }),

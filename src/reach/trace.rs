@@ -251,7 +251,7 @@ impl Walk<'_, '_> {
                 let best = [d, s, g].into_iter().map(root).find(|&of| of != net && value(of) >= own)?;
                 Some((best, format!("its channel from `{}`", name(best))))
             }
-            Terminals::Diode { a, k } => {
+            Terminals::Diode { a, k, .. } => {
                 let other = if root(a) == net { root(k) } else { root(a) };
                 Some((other, self.capped(own, value(other), format!("from `{}`", name(other)))))
             }

@@ -32,7 +32,10 @@ impl Solver<'_> {
                     if n { self.diode(root(g), end, by) } else { self.diode(end, root(g), by) }
                 }
             }
-            Terminals::Diode { a, k } => {
+            // A zener in breakdown pulls its cathode down and its anode up. Where its breakdown begins is not declared, only
+            // where it is sure to hold (the cap), so the whole way is taken.
+            Terminals::Diode { a, k, breaks: true } => self.through(root(a), root(k), by),
+            Terminals::Diode { a, k, breaks: false } => {
                 self.diode(root(a), root(k), by);
                 self.drive(root(a), root(k));
             }

@@ -46,8 +46,13 @@ pub fn write(report: &Report, sources: &SourceMap, look: Look, out: &mut dyn Wri
             continue;
         }
         let mut page = String::new();
-        handler.render_report(&mut page, &Shown::new(diagnostic, sources)).map_err(io::Error::other)?;
-        writeln!(out, "{}\n", page.trim_matches('\n'))?;
+        let shown = Shown::new(diagnostic, sources);
+        handler.render_report(&mut page, &shown).map_err(io::Error::other)?;
+        writeln!(out, "{}", page.trim_matches('\n'))?;
+        for other in &shown.elsewhere {
+            writeln!(out, "{}", picture_alone(&handler, other)?)?;
+        }
+        writeln!(out)?;
     }
     let mut more: Vec<(&str, usize)> = drawn.into_iter().filter(|(_, count)| *count > MOST_OF_A_RULE).collect();
     more.sort_unstable();
@@ -64,6 +69,14 @@ pub fn write(report: &Report, sources: &SourceMap, look: Look, out: &mut dyn Wri
         writeln!(out, "{}{}", strong.style(head), visible(rest))?;
     }
     writeln!(out, "\n{CAUTION}")
+}
+
+/// The picture of places in another file, without a head of its own.
+fn picture_alone(handler: &GraphicalReportHandler, shown: &Shown) -> io::Result<String> {
+    let mut page = String::new();
+    handler.render_report(&mut page, shown).map_err(io::Error::other)?;
+    let picture: Vec<&str> = page.lines().skip_while(|line| !line.contains('╭')).collect();
+    Ok(picture.join("\n"))
 }
 
 fn theme(colour: bool) -> GraphicalTheme {
@@ -184,13 +197,6 @@ impl miette::Diagnostic for Shown {
 
     fn labels(&self) -> Option<Box<dyn Iterator<Item = LabeledSpan> + '_>> {
         Some(Box::new(self.labels.iter().cloned()))
-    }
-
-    fn related<'a>(&'a self) -> Option<Box<dyn Iterator<Item = &'a dyn miette::Diagnostic> + 'a>> {
-        if self.elsewhere.is_empty() {
-            return None;
-        }
-        Some(Box::new(self.elsewhere.iter().map(|shown| shown as &dyn miette::Diagnostic)))
     }
 }
 
