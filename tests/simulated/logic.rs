@@ -113,6 +113,18 @@ pub(crate) fn latch(b: &mut Builder, d: usize) {
     }
 }
 
+/// Two crossed inverters that a pass device writes: while it is off they keep what they were left with.
+pub(crate) fn keeper(b: &mut Builder, d: usize) {
+    let (data, write) = (b.signal(d), b.signal(d));
+    let (q, qb) = (b.output(d), b.output(d));
+    let (lo, hi) = (b.lo(d), b.hi(d));
+    for (y, a) in [(&q, &qb), (&qb, &q)] {
+        b.mos(Pol::P, d, y, a, &hi);
+        b.mos(Pol::N, d, y, a, &lo);
+    }
+    b.mos_with("n5", [&q, &write, &data, &lo]);
+}
+
 /// A gate or input held by a resistor, pulled by one switch.
 pub(crate) fn pulled(b: &mut Builder, d: usize) {
     let pol = if b.rng.chance(0.5) { Pol::N } else { Pol::P };

@@ -37,6 +37,7 @@ const PATTERNS: &[Pattern] = &[
     pattern("multiplexer", 4, Place::Small, logic::multiplexer),
     pattern("pass", 5, Place::Any, logic::pass),
     pattern("latch", 3, Place::Small, logic::latch),
+    pattern("keeper", 3, Place::Small, logic::keeper),
     pattern("pulled", 6, Place::Any, logic::pulled),
     pattern("mirror", 6, Place::Any, analog::mirror),
     pattern("cascode-mirror", 3, Place::Any, analog::cascode_mirror),
@@ -67,8 +68,11 @@ const PATTERNS: &[Pattern] = &[
     pattern("stray-mos", 5, Place::Any, stray_mos),
 ];
 
-/// The circuit of one seed: 5 to 60 devices.
-pub(crate) fn grow(seed: u64) -> Builder {
+/// Patterns that keep a state of their own: what they hold depends on what came before, not on the rails of this vector alone.
+const MEMORY: [&str; 2] = ["latch", "keeper"];
+
+/// The circuit of one seed: 5 to 60 devices, with patterns that keep a state or without them.
+pub(crate) fn grow(seed: u64, memory: bool) -> Builder {
     let mut rng = Rng::new(seed);
     let world = rails::world(&mut rng);
     let target = rng.int(5, 46);
@@ -83,7 +87,7 @@ pub(crate) fn grow(seed: u64) -> Builder {
         });
         let Some(p) = chosen else { continue };
         let places = places(&b, p.place);
-        if places.is_empty() {
+        if places.is_empty() || (MEMORY.contains(&p.name) && !memory) {
             continue;
         }
         let domain = *b.rng.pick(&places);
