@@ -4,7 +4,7 @@ use super::{Evidence, World};
 use crate::declared::Class;
 use crate::design::{Card, Design, DeviceIx, DeviceType, NetIx, Reading, Sizes};
 use crate::expr::Value;
-use crate::graph::{Context, Mark, RailSlot, rail};
+use crate::graph::{Context, Mark, rail, rail_in_mode};
 use crate::quantity::Dim;
 use crate::reach::ReachIx;
 use std::cell::{OnceCell, RefCell};
@@ -149,18 +149,7 @@ impl<'w> DeviceView<'w> {
         let deck_mode = reach.modes[mode];
         for &pin in pins {
             let Some(net) = self.net(pin) else { continue };
-            let slots = self.world.marks_of(self.at, net).iter().filter_map(|mark| match mark {
-                Mark::Rail(slot) => Some(*slot),
-                Mark::Named(_) => None,
-            });
-            let rank = |slot: RailSlot| match slot {
-                RailSlot::InMode(of, _) if Some(of as usize) == deck_mode => {
-                    Some((0, rail(self.world.deck, slot).net.is_wild(), slot))
-                }
-                RailSlot::InMode(..) => None,
-                RailSlot::Always(_) => Some((1, rail(self.world.deck, slot).net.is_wild(), slot)),
-            };
-            if let Some((_, _, slot)) = slots.filter_map(rank).min() {
+            if let Some(slot) = rail_in_mode(self.world.deck, self.world.marks_of(self.at, net), deck_mode) {
                 let place = rail(self.world.deck, slot).place;
                 let words = format!(
                     "{} of `{}` is this rail: {}",

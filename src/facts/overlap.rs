@@ -92,8 +92,7 @@ impl DeviceView<'_> {
         for (mode, state) in states.iter().enumerate().filter(|(_, state)| state.on && state.high) {
             let known = self.known_current();
             let density = known.and_then(|(amps, exact)| self.density_of(amps).map(|density| (density, exact)));
-            let dense = matches!((density, limits.density), (Some((_, true)), Some(_)));
-            if state.surely_on && state.surely_high || dense && self.works_on_and_high() {
+            if state.surely_on && state.surely_high {
                 self.note_mode(mode, state, density.map(|(density, _)| density), limits);
                 return Verdict::Broken;
             }
@@ -258,10 +257,5 @@ impl DeviceView<'_> {
         let sizes = self.sizes();
         let total = sizes.width.as_ref().ok()? * sizes.copies.as_ref().ok()?;
         (total > 0.0).then(|| amps / total)
-    }
-
-    /// Whether its role is one that works on and high all the time.
-    fn works_on_and_high(&self) -> bool {
-        false
     }
 }

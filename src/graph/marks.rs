@@ -208,6 +208,24 @@ pub fn rail(deck: &Deck, slot: RailSlot) -> &Rail {
     }
 }
 
+/// The declaration that holds for a net with these marks in a mode (index in the deck; none where it has no modes): the mode's own
+/// goes first, an exact name before a pattern.
+pub fn rail_in_mode(deck: &Deck, marks: &[Mark], mode: Option<usize>) -> Option<RailSlot> {
+    let rank = |slot: RailSlot| {
+        let outside = match slot {
+            RailSlot::InMode(of, _) if Some(of as usize) == mode => 0,
+            RailSlot::InMode(..) => return None,
+            RailSlot::Always(_) => 1,
+        };
+        Some((outside, rail(deck, slot).net.is_wild(), slot))
+    };
+    let slots = marks.iter().filter_map(|mark| match mark {
+        Mark::Rail(slot) => rank(*slot),
+        Mark::Named(_) => None,
+    });
+    slots.min().map(|(_, _, slot)| slot)
+}
+
 /// All rail declarations with their slots.
 pub fn all_rails(deck: &Deck) -> impl Iterator<Item = (RailSlot, &Rail)> {
     let always = deck.rails.iter().enumerate().map(|(index, rail)| (RailSlot::Always(index as u32), rail));

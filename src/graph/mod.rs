@@ -12,5 +12,5 @@ pub mod paths;
 mod pins;
 
 pub use contexts::{Context, ContextIx, Contexts};
-pub use marks::{Mark, MarkSet, Marks, RailSlot, all_rails, rail};
+pub use marks::{Mark, MarkSet, Marks, RailSlot, all_rails, rail, rail_in_mode};
 pub use pins::{Pin, PinTable};

@@ -9,7 +9,7 @@ use super::terminals::{Terminals, table};
 use crate::declared::{Deck, End};
 use crate::design::{Design, InstanceIx, NetIx};
 use crate::diag::Diagnostic;
-use crate::graph::{ContextIx, Contexts, Mark, RailSlot, paths, rail};
+use crate::graph::{ContextIx, Contexts, Mark, paths, rail, rail_in_mode};
 use hashbrown::HashMap;
 use std::cell::RefCell;
 use std::rc::Rc;
@@ -158,19 +158,7 @@ impl<'s> Shared<'s> {
 
     /// A rail inside an instance: its ends are converted through ground.
     fn inner_rail(&self, marks: &[Mark], mode: u32) -> Option<Vec<Interval>> {
-        let wanted = self.modes[mode as usize];
-        let rank = |slot: RailSlot| match slot {
-            RailSlot::InMode(of, _) if Some(of as usize) == wanted => {
-                Some((0, rail(self.deck, slot).net.is_wild(), slot))
-            }
-            RailSlot::InMode(..) => None,
-            RailSlot::Always(_) => Some((1, rail(self.deck, slot).net.is_wild(), slot)),
-        };
-        let slots = marks.iter().filter_map(|mark| match mark {
-            Mark::Rail(slot) => rank(*slot),
-            Mark::Named(_) => None,
-        });
-        let (_, _, slot) = slots.min()?;
+        let slot = rail_in_mode(self.deck, marks, self.modes[mode as usize])?;
         let declared = rail(self.deck, slot);
         let frames = 0..self.frames.all.len();
         Some(

@@ -7,7 +7,7 @@ use super::interval::Interval;
 use crate::declared::{Deck, End, Rail};
 use crate::design::NetIx;
 use crate::diag::Diagnostic;
-use crate::graph::{ContextIx, Contexts, Mark, RailSlot, rail};
+use crate::graph::{ContextIx, Contexts, RailSlot, rail, rail_in_mode};
 use hashbrown::HashMap;
 
 /// A reference net.
@@ -216,20 +216,7 @@ fn against(bounds: &Bounds, base: usize) -> Vec<Interval> {
 
 /// The rail declaration that holds for a net in a mode: the mode's own goes first, an exact name before a pattern.
 fn slot(top: &TopFacts<'_>, net: NetIx, mode: Option<usize>) -> Option<RailSlot> {
-    let marks = top.contexts.marks_of(top.at, net);
-    let rank = |slot: RailSlot| {
-        let in_mode = match slot {
-            RailSlot::InMode(of, _) if Some(of as usize) == mode => 0,
-            RailSlot::InMode(..) => return None,
-            RailSlot::Always(_) => 1,
-        };
-        Some((in_mode, rail(top.deck, slot).net.is_wild(), slot))
-    };
-    let slots = marks.iter().filter_map(|mark| match mark {
-        Mark::Rail(slot) => rank(*slot),
-        Mark::Named(_) => None,
-    });
-    slots.min().map(|(_, _, slot)| slot)
+    rail_in_mode(top.deck, top.contexts.marks_of(top.at, net), mode)
 }
 
 fn bounds(top: &TopFacts<'_>, mode: Option<usize>, diagnostics: &mut Vec<Diagnostic>) -> Bounds {
