@@ -33,6 +33,10 @@ pub mod graph;
 
 pub mod reach;
 
+pub mod roles;
+
+pub mod current;
+
 pub mod facts;
 
 pub mod deck;

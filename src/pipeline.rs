@@ -10,7 +10,9 @@ use crate::facts::{World, ratings::count_pairs};
 use crate::graph::Contexts;
 use crate::load::{Files, LoadRequest, load};
 use crate::names::{Names, nearest};
+use crate::current::caps;
 use crate::reach::Reach;
+use crate::roles::{MOST_SURROUNDINGS, Roles};
 use crate::report::{Pairs, Report, Summary};
 use crate::source::{SourceMap, Span};
 use crate::waiver::{self, Date};
@@ -139,7 +141,14 @@ pub fn with_world<R>(
     } else {
         Reach::structural(&design, &contexts, &deck)
     };
+    if !reach.modes.is_empty() {
+        let caps = caps(&Roles::new(&reach));
+        if !caps.is_empty() {
+            reach = Reach::narrowed(&design, &contexts, &deck, &modes, &caps);
+        }
+    }
     diagnostics.append(&mut reach.diagnostics);
+    let roles = Roles::new(&reach);
     let seen = Seen {
         diagnostics,
         cards,
@@ -149,7 +158,8 @@ pub fn with_world<R>(
         shown_netlists,
         shown_decks,
     };
-    let result = work(World { deck: &deck, design: &design, contexts: &contexts, reach: &reach }, seen);
+    let result = work(World { deck: &deck, design: &design, contexts: &contexts, reach: &reach, roles: &roles }, seen);
+    drop(roles);
     drop(reach);
     drop(contexts);
     drop(design);
@@ -201,6 +211,11 @@ fn judge(world: World<'_>, mut seen: Seen, job: &Job) -> (Report, bool) {
     diagnostics.extend(hygiene.into_iter().filter_map(|diagnostic| engine::adopt(diagnostic, &rules)));
     let judged = engine::judge(world, &rules);
     diagnostics.extend(judged.findings);
+    if world.roles.unseen() > 0 {
+        let (unseen, most) = (world.roles.unseen(), MOST_SURROUNDINGS);
+        let line = format!("roles of {unseen} instances: their cell stands in more than {most} different surroundings");
+        summary.not_looked_at.push(line);
+    }
     diagnostics.extend(engine::hygiene(world.design, world.contexts, world.deck, &rules, summary.devices));
     diagnostics.extend(engine::rails_unmatched(world.design, world.contexts, world.deck, &rules));
     diagnostics.retain(|diagnostic| diagnostic.severity != Severity::Silent);

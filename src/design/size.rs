@@ -8,7 +8,7 @@ use crate::netlist::fields::read_fields;
 use crate::netlist::letters::interpret;
 use crate::netlist::tree::{CellIx, Fields, Word};
 use crate::netlist::values::{number, operand};
-use crate::netlist::waveforms::{Waveform, waveform};
+use crate::netlist::waveforms::{Waveform, value_word, waveform};
 use crate::source::{FileId, Span};
 use hashbrown::HashMap;
 use std::cell::RefCell;
@@ -141,6 +141,22 @@ impl<'a> Design<'a> {
                 ends.iter().copied().fold(f64::NEG_INFINITY, f64::max),
             ))
         })
+    }
+
+    /// A resistor's value, ohms, with all copies in parallel; none where a model alone gives it.
+    pub fn resistance(&self, variant: VariantIx, device: DeviceIx) -> Option<f64> {
+        let card = self.device_card(variant, device);
+        let element = interpret(card.text, &card.fields, &mut |_| false).ok()?;
+        let word = value_word(card.text, &card.fields, &element)?;
+        let ohms = self.in_scope(variant, |scope| self.word(scope, &card, word)).ok()?;
+        Some(ohms / self.copies(variant, device)?)
+    }
+
+    /// How many copies of a device stand in parallel, with those of the instances above.
+    pub fn copies(&self, variant: VariantIx, device: DeviceIx) -> Option<f64> {
+        let card = self.device_card(variant, device);
+        let own = self.parameter(variant, &card, "m").unwrap_or(Ok(1.0)).ok()?;
+        Some(own * self.variants[variant.0 as usize].multiplier)
     }
 
     /// The sizes of a device by its class.

@@ -1,7 +1,7 @@
 //! Rules for devices.
 
 use super::finding;
-use super::fold::Folds;
+use super::fold::{Folds, Standing};
 use super::verdict::{Asked, ask};
 use crate::declared::{Class, Rule, Subject};
 use crate::design::DeviceIx;
@@ -33,20 +33,26 @@ pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> (Vec<Diagnostic>, Vec<
     let by_class: Vec<Vec<(u32, Rule)>> = world.deck.classes.iter().map(|class| rules_for(class, rules)).collect();
     let mut folds: Folds<(ReachIx, DeviceIx)> = Folds::new();
     for at in world.reach.indices() {
-        let (context, count) = (world.context(at), world.reach.get(at).count);
-        let template = world.design.template(context.variant);
+        let template = world.design.template(world.context(at).variant);
         for device in template.devices() {
             let Some(class) = world.design.device_type(template, device).class else { continue };
             let asked = &by_class[class as usize];
             if asked.is_empty() {
                 continue;
             }
-            let view = DeviceView::for_verdict(world, at, device, &world.deck.classes[class as usize]);
+            let mut view = DeviceView::for_verdict(world, at, device, &world.deck.classes[class as usize]);
             for (rule, asked) in asked {
-                if let Some((verdict, evidence)) = ask(asked, &view) {
-                    let (file, start) = template.device_card(device);
-                    let statement = (*rule, verdict, Span::new(file, start, start));
-                    folds.add(statement, at, count, (at, device), evidence);
+                loop {
+                    if let Some((verdict, mut evidence)) = ask(asked, &view) {
+                        let (file, start) = template.device_card(device);
+                        let statement = (*rule, verdict, Span::new(file, start, start));
+                        evidence.way = view.way();
+                        let (above, below) = view.stands();
+                        folds.add(statement, Standing { at: above, below }, view.instances(), (at, device), evidence);
+                    }
+                    if !view.next_surroundings() {
+                        break;
+                    }
                 }
             }
         }

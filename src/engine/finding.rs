@@ -1,6 +1,6 @@
 //! From a folded result to a diagnostic: its words, places and values, made for the worst instance.
 
-use super::fold::Folded;
+use super::fold::{Folded, Standing};
 use super::verdict::{Asked, ask};
 use crate::declared::Rule;
 use crate::design::DeviceIx;
@@ -23,10 +23,11 @@ pub(super) fn of_device(world: World<'_>, rules: &[&Rule], folded: Folded<(Reach
     let Some(class) = world.design.class(template, *device) else {
         return Diagnostic::new(rule.id.clone(), rule.severity, statement, rule.title.clone());
     };
-    let view = DeviceView::new(world, *at, *device, class);
+    let view = DeviceView::seen_along(world, *at, *device, class, &brief.way);
     let evidence = &ask(rule, &view).map_or_else(|| brief.clone(), |(_, evidence)| evidence);
     let nets = class.pins.iter().enumerate().map(|(pin, name)| (name.clone(), view.net_text(pin).to_owned())).collect();
-    let finding = Finding { nets, ..in_cell(world, rules, *at, view.name(), &folded, evidence) };
+    let mut finding = Finding { nets, ..in_cell(world, rules, *at, view.name(), &folded, evidence) };
+    finding.worst.path = view.path();
     word(rule, verdict, &view, evidence, finding, statement)
 }
 
@@ -45,7 +46,7 @@ pub(super) fn in_cell<S>(
     let id = &rules[folded.statement.0 as usize].id;
     // Only waivers read the list of paths, and making it is what a finding costs most.
     let (paths, paths_complete) = match world.deck.waivers.iter().any(|waiver| waiver.rule == *id) {
-        true => paths(world, &folded.contexts, name),
+        true => paths(world, &folded.places, name),
         false => (vec![path.clone()], folded.instances <= 1),
     };
     Finding {
@@ -63,15 +64,17 @@ pub(super) fn in_cell<S>(
 }
 
 /// Paths of the concerned instances, as far as they are listed.
-fn paths(world: World<'_>, contexts: &[ReachIx], name: &str) -> (Vec<String>, bool) {
+fn paths(world: World<'_>, places: &[Standing], name: &str) -> (Vec<String>, bool) {
     let mut all = Vec::new();
     let mut complete = true;
-    for &at in contexts {
-        let (found, whole) = world.reach.paths(at, MOST_PATHS - all.len());
+    for place in places {
+        let (found, whole) = world.reach.paths(place.at, MOST_PATHS - all.len());
         complete &= whole;
-        all.extend(
-            found.into_iter().map(|above| if above.is_empty() { name.to_owned() } else { format!("{above}.{name}") }),
-        );
+        let path = |above: String| {
+            let parts = [above.as_str(), place.below.as_str(), name];
+            parts.into_iter().filter(|part| !part.is_empty()).collect::<Vec<_>>().join(".")
+        };
+        all.extend(found.into_iter().map(path));
     }
     (all, complete)
 }

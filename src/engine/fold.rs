@@ -9,13 +9,27 @@ use hashbrown::HashMap;
 /// Which finding something belongs to: rule (by index), verdict, and the place of its statement.
 pub(super) type Statement = (u32, Verdict, Span);
 
+/// Where instances of a cell stand: below all instances of a context, at a dotted path from there (empty: these themselves).
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub(super) struct Standing {
+    pub(super) at: ReachIx,
+    pub(super) below: String,
+}
+
+impl Standing {
+    /// All instances of a context.
+    pub(super) fn of(at: ReachIx) -> Standing {
+        Standing { at, below: String::new() }
+    }
+}
+
 /// What was found about one statement, over all contexts.
 pub(super) struct Folded<S> {
     pub(super) statement: Statement,
     /// Instances concerned, saturating.
     pub(super) instances: u64,
-    /// Contexts concerned, in the order found.
-    pub(super) contexts: Vec<ReachIx>,
+    /// Where the instances concerned stand, in the order found.
+    pub(super) places: Vec<Standing>,
     /// The worst subject and its notes.
     pub(super) worst: (S, Evidence),
     badness: f64,
@@ -50,8 +64,8 @@ impl<S> Folds<S> {
         left
     }
 
-    /// Adds what was found in one context that stands for `count` instances.
-    pub(super) fn add(&mut self, statement: Statement, context: ReachIx, count: u64, subject: S, evidence: Evidence) {
+    /// Adds what was found where `count` instances stand.
+    pub(super) fn add(&mut self, statement: Statement, place: Standing, count: u64, subject: S, evidence: Evidence) {
         let badness = evidence.badness;
         let Some(&at) = self.index.get(&statement) else {
             let (listed, left_out) = self.counts.entry((statement.0, statement.1)).or_default();
@@ -65,7 +79,7 @@ impl<S> Folds<S> {
             self.all.push(Folded {
                 statement,
                 instances: count,
-                contexts: vec![context],
+                places: vec![place],
                 worst: (subject, evidence),
                 badness,
                 pairs,
@@ -74,7 +88,7 @@ impl<S> Folds<S> {
         };
         let folded = &mut self.all[at];
         folded.instances = folded.instances.saturating_add(count);
-        folded.contexts.push(context);
+        folded.places.push(place);
         for pair in &evidence.pairs {
             if !folded.pairs.contains(pair) {
                 folded.pairs.push(pair.clone());

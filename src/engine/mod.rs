@@ -6,6 +6,7 @@
 mod devices;
 mod finding;
 mod fold;
+mod groups;
 mod hygiene;
 mod others;
 mod verdict;
@@ -13,7 +14,7 @@ mod verdict;
 pub use fold::MOST_FINDINGS;
 pub use hygiene::{adopt, hygiene, rails_unmatched, waivers};
 
-use crate::declared::Rule;
+use crate::declared::{Rule, Subject};
 use crate::diag::{Diagnostic, Severity, Verdict};
 use crate::facts::World;
 
@@ -21,6 +22,12 @@ use crate::facts::World;
 pub fn judge(world: World<'_>, rules: &[&Rule]) -> Judged {
     let (mut findings, left_out) = devices::judge(world, rules);
     findings.extend(others::judge(world, rules));
+    for subject in [Subject::Mirror, Subject::Pair] {
+        let asked = others::of_subject(rules, subject);
+        if !asked.is_empty() {
+            findings.extend(groups::judge(world, rules, subject, &asked));
+        }
+    }
     let beyond = left_out.into_iter().map(|(rule, verdict, instances)| {
         let rule = rules[rule as usize];
         let severity = if verdict == Verdict::Violated { rule.severity } else { rule.unproven };

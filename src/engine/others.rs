@@ -1,7 +1,7 @@
 //! Rules for nets, instance calls and classes.
 
 use super::finding::{in_cell, word};
-use super::fold::{Folded, Folds};
+use super::fold::{Folded, Folds, Standing};
 use super::verdict::{Asked, ask};
 use crate::declared::{Class, Rule, Subject};
 use crate::design::{InstanceIx, NetIx};
@@ -13,9 +13,7 @@ use std::collections::BTreeMap;
 
 /// Asks the rules for nets, instances and classes.
 pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> Vec<Diagnostic> {
-    let of = |subject: Subject| -> Vec<u32> {
-        rules.iter().enumerate().filter(|(_, rule)| rule.subject == subject).map(|(index, _)| index as u32).collect()
-    };
+    let of = |subject: Subject| of_subject(rules, subject);
     let mut findings = Vec::new();
     let (nets, instances, classes) = (of(Subject::Net), of(Subject::Instance), of(Subject::Class));
     if !nets.is_empty() {
@@ -26,6 +24,11 @@ pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> Vec<Diagnostic> {
     }
     findings.extend(judge_classes(world, rules, &classes));
     findings
+}
+
+/// The rules for one subject, by index.
+pub(super) fn of_subject(rules: &[&Rule], subject: Subject) -> Vec<u32> {
+    rules.iter().enumerate().filter(|(_, rule)| rule.subject == subject).map(|(index, _)| index as u32).collect()
 }
 
 fn judge_nets(world: World<'_>, rules: &[&Rule], asked: &[u32]) -> Vec<Diagnostic> {
@@ -40,7 +43,7 @@ fn judge_nets(world: World<'_>, rules: &[&Rule], asked: &[u32]) -> Vec<Diagnosti
                 if let (Some((verdict, evidence)), Some(place)) =
                     (ask(rules[rule as usize], &view), Asked::place(&view, "name"))
                 {
-                    folds.add((rule, verdict, place), at, count, (at, net), evidence);
+                    folds.add((rule, verdict, place), Standing::of(at), count, (at, net), evidence);
                 }
             }
         }
@@ -67,7 +70,7 @@ fn judge_instances(world: World<'_>, rules: &[&Rule], asked: &[u32]) -> Vec<Diag
                 if let Some((verdict, evidence)) = ask(rules[rule as usize], &view) {
                     let card = &template.instances[instance.0 as usize];
                     let statement = (rule, verdict, Span::new(card.file, card.card, card.card));
-                    folds.add(statement, at, count, (at, instance), evidence);
+                    folds.add(statement, Standing::of(at), count, (at, instance), evidence);
                 }
             }
         }

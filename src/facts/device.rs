@@ -6,8 +6,11 @@ use crate::design::{Card, Design, DeviceIx, DeviceType, NetIx, Reading, Sizes};
 use crate::expr::Value;
 use crate::graph::{Context, Mark, rail, rail_in_mode};
 use crate::quantity::Dim;
+use crate::current::Current;
 use crate::reach::ReachIx;
+use crate::roles::{Unit, Walker};
 use std::cell::{OnceCell, RefCell};
+use std::rc::Rc;
 
 /// A device of a declared class, in one context.
 pub struct DeviceView<'w> {
@@ -21,6 +24,12 @@ pub struct DeviceView<'w> {
     pub class: &'w Class,
     /// Whether notes are wanted in words, or only what was concerned and how badly.
     pub(super) in_words: bool,
+    /// As the walk around it knows it.
+    pub(super) unit: Unit,
+    /// Which surroundings to see it in.
+    pub(super) way: Vec<u32>,
+    pub(super) walk: OnceCell<Rc<RefCell<Walker<'w>>>>,
+    pub(super) current: OnceCell<Option<Current>>,
     card: OnceCell<Card<'w>>,
     sizes: OnceCell<Sizes>,
     evidence: RefCell<Evidence>,
@@ -29,12 +38,26 @@ pub struct DeviceView<'w> {
 impl<'w> DeviceView<'w> {
     /// Looks at a device.
     pub fn new(world: World<'w>, at: ReachIx, device: DeviceIx, class: &'w Class) -> DeviceView<'w> {
+        DeviceView::of(world, at, device, class, true)
+    }
+
+    pub(super) fn of(
+        world: World<'w>,
+        at: ReachIx,
+        device: DeviceIx,
+        class: &'w Class,
+        in_words: bool,
+    ) -> DeviceView<'w> {
         DeviceView {
             world,
             at,
             device,
             class,
-            in_words: true,
+            in_words,
+            unit: Walker::start(device),
+            way: Vec::new(),
+            walk: OnceCell::new(),
+            current: OnceCell::new(),
             card: OnceCell::new(),
             sizes: OnceCell::new(),
             evidence: RefCell::default(),
@@ -43,7 +66,7 @@ impl<'w> DeviceView<'w> {
 
     /// Looks at a device for a verdict alone: words are made only for findings that are reported.
     pub fn for_verdict(world: World<'w>, at: ReachIx, device: DeviceIx, class: &'w Class) -> DeviceView<'w> {
-        DeviceView { in_words: false, ..DeviceView::new(world, at, device, class) }
+        DeviceView::of(world, at, device, class, false)
     }
 
     /// The design.
@@ -86,8 +109,11 @@ impl<'w> DeviceView<'w> {
         self.device_type().model.map_or("", |model| self.design().names.text(model))
     }
 
-    /// Its dotted path, by the first instance of its context.
+    /// Its dotted path, by the first instance in its surroundings.
     pub fn path(&self) -> String {
+        if let Some(walk) = self.walk.get() {
+            return walk.borrow().unit_path(self.unit);
+        }
         let above = self.world.reach.path(self.at);
         if above.is_empty() { self.name().to_owned() } else { format!("{above}.{}", self.name()) }
     }

@@ -21,6 +21,8 @@ pub struct Evidence {
     pub modes: Vec<String>,
     /// How bad it is, for choosing the instance to show; larger is worse.
     pub badness: f64,
+    /// The surroundings that were looked at.
+    pub way: Vec<u32>,
     /// Whether the class leaves out something that was asked for.
     pub undeclared: bool,
 }

@@ -8,10 +8,12 @@ mod class;
 mod device;
 mod evidence;
 mod gates;
+mod group;
 mod instance;
 mod net;
 mod orientation;
 mod overlap;
+mod part;
 mod place;
 pub mod ratings;
 mod ties;
@@ -20,13 +22,16 @@ pub mod vocabulary;
 pub use class::ClassView;
 pub use device::DeviceView;
 pub use evidence::Evidence;
+pub use group::{GroupView, MIRROR, PAIR};
 pub use instance::InstanceView;
 pub use net::NetView;
+pub use part::ROLES;
 
 use crate::declared::Deck;
 use crate::design::{Design, NetIx};
 use crate::graph::{Context, Contexts, Mark};
 use crate::reach::{Reach, ReachIx};
+use crate::roles::Roles;
 
 /// Everything that was computed about a design.
 #[derive(Clone, Copy)]
@@ -39,6 +44,8 @@ pub struct World<'w> {
     pub contexts: &'w Contexts,
     /// Which voltages its nets can have.
     pub reach: &'w Reach<'w>,
+    /// What its devices do there, asked on demand.
+    pub roles: &'w Roles<'w>,
 }
 
 impl<'w> World<'w> {

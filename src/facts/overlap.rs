@@ -2,6 +2,7 @@
 
 use super::DeviceView;
 use super::ratings::range_text;
+use crate::current::Current;
 use crate::declared::{Kind, OnState, Transition};
 use crate::expr::Value;
 use crate::quantity::{Dim, show, show_percent};
@@ -77,8 +78,12 @@ impl DeviceView<'_> {
 
     /// Whether its current per width is known to stay within what may flow all the time: then no state and no edge is too much.
     fn carries_little(&self, limits: &OnState) -> bool {
-        let density = self.known_current().and_then(|(amps, _)| self.density_of(amps));
-        matches!((density, limits.density), (Some(density), Some(limit)) if density <= limit * (1.0 + 1e-9))
+        matches!((self.density(), limits.density), (Some(density), Some(limit)) if density <= limit * (1.0 + 1e-9))
+    }
+
+    /// Whether its role is one that is on and high by design, not only in passing.
+    fn works_all_the_time(&self) -> bool {
+        self.roles().iter().any(|played| played.role.works_all_the_time())
     }
 
     fn note_state_pins(&self) {
@@ -90,14 +95,15 @@ impl DeviceView<'_> {
     fn in_modes(&self, states: &[ModeState], limits: &OnState) -> Verdict {
         let mut answer = Verdict::Holds;
         for (mode, state) in states.iter().enumerate().filter(|(_, state)| state.on && state.high) {
-            let known = self.known_current();
-            let density = known.and_then(|(amps, exact)| self.density_of(amps).map(|density| (density, exact)));
-            if state.surely_on && state.surely_high {
-                self.note_mode(mode, state, density.map(|(density, _)| density), limits);
+            let density = self.density();
+            let exact = density.is_some() && self.current().is_some_and(|current| current.exact);
+            if state.surely_on && state.surely_high || exact && self.works_all_the_time() {
+                self.note_mode(mode, state, density, limits);
+                self.note_current();
                 return Verdict::Broken;
             }
             if matches!(answer, Verdict::Holds) {
-                self.note_mode(mode, state, density.map(|(density, _)| density), limits);
+                self.note_mode(mode, state, density, limits);
                 answer = Verdict::Open(if self.world.reach.modes.first().is_some_and(Option::is_none) {
                     "the rails alone allow it to be on at high voltage: declare modes, so that what happens together is known, or the current that it carries"
                 } else {
@@ -144,13 +150,7 @@ impl DeviceView<'_> {
     /// On in one mode and high in another: the changes between them pass through both at once.
     fn between_modes(&self, states: &[ModeState], limits: &OnState) -> Verdict {
         let reach = self.world.reach;
-        let state =
-            |deck_mode: usize| reach.modes.iter().position(|mode| *mode == Some(deck_mode)).map(|at| &states[at]);
-        let crosses = |transition: &&Transition| match (state(transition.from), state(transition.to)) {
-            (Some(from), Some(to)) => from.on && to.high || from.high && to.on,
-            _ => false,
-        };
-        let crossing: Vec<&Transition> = self.world.deck.transitions.iter().filter(crosses).collect();
+        let crossing = self.crossing(states);
         if crossing.is_empty() {
             let apart = |&(a, b): &(usize, usize)| a != b && states[a].on && states[b].high;
             let pairs = (0..states.len()).flat_map(|a| (0..states.len()).map(move |b| (a, b)));
@@ -167,7 +167,7 @@ impl DeviceView<'_> {
                 "declare the transitions between the modes in which it is on and those in which its drain is high (takes, rate)",
             );
         }
-        let duty: f64 = crossing.iter().map(|transition| transition.takes * transition.rate).sum();
+        let duty = duty_of(&crossing);
         if limits.duty.is_some_and(|limit| duty <= limit * (1.0 + 1e-9)) {
             return Verdict::Holds;
         }
@@ -190,7 +190,7 @@ impl DeviceView<'_> {
             .map(|state| state.vds.hi.abs().max(state.vds.lo.abs()))
             .filter(|volts| volts.is_finite())
             .fold(0.0, f64::max);
-        let loss = self.known_current().map_or(String::new(), |(amps, _)| {
+        let loss = self.current().map_or(String::new(), |&Current { amps, .. }| {
             let watts: f64 = crossing.iter().map(|t| 0.5 * volts * amps * t.takes * t.rate).sum();
             format!(
                 ", and loses {} at {} and {}",
@@ -219,7 +219,7 @@ impl DeviceView<'_> {
     /// Whether known power while on stays below the class's limit; unknown where nothing bounds it.
     pub(super) fn power_held(&self) -> Value {
         let Some(limit) = self.class.on_state.and_then(|limits| limits.power) else { return self.undeclared() };
-        let (Some((amps, exact)), Some(on_state)) = (self.known_current(), self.class.on_state) else {
+        let (Some(&Current { amps, exact, .. }), Some(on_state)) = (self.current(), self.class.on_state) else {
             return Value::Bool(true);
         };
         for mode in 0..self.world.reach.modes.len() {
@@ -236,26 +236,46 @@ impl DeviceView<'_> {
                 );
                 self.note_what(what, name);
                 self.note_state_pins();
+                self.note_current();
                 return Value::Bool(false);
             }
         }
         Value::Bool(true)
     }
 
-    /// The channel current that is known, amperes, and whether it is exact (else an upper bound).
-    pub(super) fn known_current(&self) -> Option<(f64, bool)> {
-        if self.world.deck.currents_through.is_empty() {
-            return None;
-        }
-        let path = self.path();
-        let declared = self.world.deck.currents_through.iter().find(|current| current.at.matches_path(&path))?;
-        let amps = declared.amps.lo.abs().max(declared.amps.hi.abs());
-        amps.is_finite().then_some((amps, true))
+    /// The transitions between modes of which one has it on and one has it high.
+    fn crossing(&self, states: &[ModeState]) -> Vec<&Transition> {
+        let modes = &self.world.reach.modes;
+        let state = |deck_mode: usize| modes.iter().position(|mode| *mode == Some(deck_mode)).map(|at| &states[at]);
+        let crosses = |transition: &&Transition| match (state(transition.from), state(transition.to)) {
+            (Some(from), Some(to)) => from.on && to.high || from.high && to.on,
+            _ => false,
+        };
+        self.world.deck.transitions.iter().filter(crosses).collect()
     }
 
-    fn density_of(&self, amps: f64) -> Option<f64> {
-        let sizes = self.sizes();
-        let total = sizes.width.as_ref().ok()? * sizes.copies.as_ref().ok()?;
-        (total > 0.0).then(|| amps / total)
+    /// The share of time that it spends between modes of which one has it on and one has it high.
+    pub(super) fn duty(&self) -> Value {
+        let Some(limits) = self.class.on_state else { return self.undeclared() };
+        let states: Option<Vec<ModeState>> =
+            (0..self.world.reach.modes.len()).map(|mode| self.mode_state(mode, limits.vds)).collect();
+        match states {
+            Some(states) => Value::Number { value: duty_of(&self.crossing(&states)), dim: Dim::NONE },
+            None => self.undeclared(),
+        }
     }
+
+    /// Whether its gate can turn it on in some mode.
+    pub(super) fn can_be_on(&self) -> Value {
+        let modes = self.world.reach.modes.len();
+        let states: Option<Vec<ModeState>> = (0..modes).map(|mode| self.mode_state(mode, 0.0)).collect();
+        match states {
+            Some(states) => Value::Bool(states.iter().any(|state| state.on)),
+            None => self.undeclared(),
+        }
+    }
+}
+
+fn duty_of(crossing: &[&Transition]) -> f64 {
+    crossing.iter().map(|transition| transition.takes * transition.rate).sum()
 }

@@ -1,7 +1,7 @@
 //! The names that rules may use: one table of subject, name, type, one-line explanation and getter. The deck checker, the
 //! evaluator, suggestions and the reference page all read it.
 
-use super::{ClassView, DeviceView, InstanceView, NetView};
+use super::{ClassView, DeviceView, GroupView, InstanceView, MIRROR, NetView, PAIR, ROLES};
 use crate::declared::{Class, Rule, Subject};
 use crate::expr::{Arg, ArgType, Expr, Node, Piece, Scope, Template, Type, Value, Vocabulary};
 use crate::quantity::Dim;
@@ -16,6 +16,7 @@ pub(super) enum Get {
     OfClass(fn(&Class) -> Option<Value>),
     Net(fn(&NetView<'_>) -> Value),
     Instance(fn(&InstanceView<'_>) -> Value),
+    Group(fn(&GroupView<'_>) -> Value),
     Class(fn(&ClassView<'_>) -> Option<Value>),
     /// Filled in by the finding itself.
     Noted,
@@ -49,6 +50,7 @@ pub struct Function {
 }
 
 const VOLTS: Type = Type::Number(Dim::VOLT);
+const AMPERES: Type = Type::Number(Dim::AMPERE);
 const METRES: Type = Type::Number(Dim::METRE);
 const PLAIN: Type = Type::Number(Dim::NONE);
 
@@ -152,6 +154,30 @@ pub const ATTRIBUTES: &[Attribute] = &[
     device("power_held", Type::Bool, "its known power while on stays below the limit of its class", |view| {
         view.power_held()
     }),
+    device("role", Type::Word(ROLES), "its main role in the circuit", |view| text(view.role())),
+    device("roles", Type::Text, "all its roles, in words", |view| {
+        let roles: Vec<&str> = view.roles().iter().map(|played| played.role.word()).collect();
+        text(&roles.join(", "))
+    }),
+    device("mirrored", Type::Bool, "it is reference or output of a current mirror", |view| view.is_mirrored()),
+    device("amplifies", Type::Bool, "it is half of a differential pair or a common-source gain stage", |view| {
+        view.is_amplifying()
+    }),
+    device("current", AMPERES, "the current through its channel, or the most that it can be", |view| {
+        view.current_value()
+    }),
+    device("density", Type::Number(Dim::DENSITY), "that current for each metre of its width", |view| {
+        view.density_value()
+    }),
+    device("power", Type::Number(Dim::WATT), "that current at its highest drain-source voltage", |view| {
+        view.power_value()
+    }),
+    device("on", Type::Bool, "its gate can turn it on, in some mode", |view| view.can_be_on()),
+    device("duty", PLAIN, "the share of time it spends between modes that have it on and modes that have it high", |view| {
+        view.duty()
+    }),
+    noted(Subject::Device, "part", "what it is in a mirror or stage, in words"),
+    noted(Subject::Device, "partners", "the other devices of that mirror or stage, in words"),
     noted(Subject::Device, "pair", "the rated pair that is farthest outside"),
     noted(Subject::Device, "range", "the range of that pair's voltage"),
     noted(Subject::Device, "extreme", "the end of that range that is outside"),
@@ -209,6 +235,27 @@ pub const ATTRIBUTES: &[Attribute] = &[
         kind: VOLTS,
         doc: "highest voltage against ground, in any mode",
         get: Get::Net(|view| view.extreme(true)),
+    },
+    Attribute {
+        subject: Subject::Mirror,
+        name: "name",
+        kind: Type::Text,
+        doc: "its output's own name",
+        get: Get::Group(|view| text(view.main().name())),
+    },
+    Attribute {
+        subject: Subject::Mirror,
+        name: "ratio",
+        kind: PLAIN,
+        doc: "by how much the output repeats the reference's current: width × copies / length of both",
+        get: Get::Group(|view| view.ratio()),
+    },
+    Attribute {
+        subject: Subject::Pair,
+        name: "name",
+        kind: Type::Text,
+        doc: "the name of its left device",
+        get: Get::Group(|view| text(view.main().name())),
     },
     Attribute {
         subject: Subject::Instance,
@@ -306,6 +353,12 @@ pub const FUNCTIONS: &[Function] = &[
         doc: "whether two pins share a net, through drawn shorts too",
     },
     Function {
+        subjects: &[Subject::Device],
+        call: "plays(\"cascode\")",
+        kind: Type::Bool,
+        doc: "whether one of its roles is this",
+    },
+    Function {
         subjects: &[Subject::Device, Subject::Instance],
         call: "param(\"x\")",
         kind: Type::AnyNumber,
@@ -322,6 +375,21 @@ pub const PATTERNS: &[(&str, &str, Type)] = &[
     ("vds.min", "lowest voltage of a pair of pins, in any mode; other pins as `v(iso, s).min`", VOLTS),
     ("vds.max", "highest voltage of that pair, in any mode", VOLTS),
 ];
+
+/// The devices that a rule for mirrors or pairs may name; what follows their name is an attribute of the device.
+pub fn members(subject: Subject) -> &'static [&'static str] {
+    match subject {
+        Subject::Mirror => &MIRROR,
+        Subject::Pair => &PAIR,
+        _ => &[],
+    }
+}
+
+/// An attribute of a device of a structure (`ref.width`): the attribute.
+fn of_member(subject: Subject, name: &str) -> Option<&str> {
+    let (member, rest) = name.split_once('.')?;
+    members(subject).contains(&member).then_some(rest)
+}
 
 fn volts(value: f64) -> Option<Value> {
     value.is_finite().then(|| number(value, Dim::VOLT))
@@ -404,8 +472,15 @@ fn pin_type(what: &str) -> Option<Type> {
 
 /// Whether a rule asks for a voltage, or for something that follows from one.
 pub fn asks_for_voltages(rule: &Rule) -> bool {
+    if matches!(rule.subject, Subject::Mirror | Subject::Pair) {
+        return true;
+    }
+    let of_part = |name: &str| {
+        matches!(name, "role" | "roles" | "plays" | "mirrored" | "amplifies" | "current" | "density" | "power" | "on" | "duty")
+    };
     let of_voltage = |name: &str| {
-        matches!(name, "ratings_held" | "swapped" | "gate_driven" | "overlap_held" | "power_held" | "v.min" | "v.max")
+        of_part(name)
+            || matches!(name, "ratings_held" | "swapped" | "gate_driven" | "overlap_held" | "power_held" | "v.min" | "v.max")
             || name.contains("reach.")
             || pair_name(name).is_some()
     };
@@ -437,6 +512,9 @@ impl Vocabulary for Words {
         if let Some(attribute) = find(self.0, name) {
             return Some(attribute.kind);
         }
+        if let Some(rest) = of_member(self.0, name) {
+            return Words(Subject::Device).name(rest);
+        }
         if self.0 != Subject::Device {
             return None;
         }
@@ -465,6 +543,9 @@ impl Vocabulary for Words {
             .filter(|attribute| attribute.subject == self.0)
             .map(|attribute| attribute.name.to_owned())
             .collect();
+        for member in members(self.0) {
+            names.extend(Words(Subject::Device).names().into_iter().map(|name| format!("{member}.{name}")));
+        }
         if self.0 == Subject::Device {
             names.extend(PATTERNS.iter().map(|(name, ..)| (*name).to_owned()));
             for pair in ["vgs", "vgd", "vsb", "vsd", "vsg", "vdb", "vgb"] {
@@ -498,6 +579,10 @@ impl Words {
                     Err(format!("`has` asks about a name that rules may use; `{}` is none", arg.name.unwrap_or("this")))
                 }
                 _ => Err("`has` takes one name, as in `has(class.length.min)`".to_owned()),
+            },
+            "plays" => match args {
+                [ArgType { kind: Some(Type::Text), .. }] => Ok(()),
+                _ => Err(format!("`plays` takes one role in quotes: {}", ROLES.join(", "))),
             },
             _ => match args {
                 [arg] if arg.kind == Some(Type::Text) => Ok(()),
@@ -562,6 +647,10 @@ impl Scope for DeviceView<'_> {
                 Value::Text(name) => Some(self.param(name)),
                 _ => None,
             },
+            "plays" => match &args.first()?.value {
+                Value::Text(name) => Some(self.plays(name)),
+                _ => None,
+            },
             "v.min" | "v.max" => {
                 let (plus, minus) = pins()?;
                 Some(self.of_pair(plus, minus, name == "v.max"))
@@ -619,6 +708,20 @@ impl Scope for NetView<'_> {
         match find(Subject::Net, name).map(|attribute| attribute.get) {
             Some(Get::Net(get)) => get(self),
             _ => Value::Unknown,
+        }
+    }
+
+    fn call(&self, _: &str, _: &[Arg<'_>]) -> Option<Value> {
+        None
+    }
+}
+
+impl Scope for GroupView<'_> {
+    fn name(&self, name: &str) -> Value {
+        let subject = if self.member(MIRROR[1]).is_some() { Subject::Mirror } else { Subject::Pair };
+        match find(subject, name).map(|attribute| attribute.get) {
+            Some(Get::Group(get)) => get(self),
+            _ => self.of_member(name).unwrap_or(Value::Unknown),
         }
     }
 

@@ -16,27 +16,52 @@ pub enum Pin {
 pub struct PinTable {
     first: Vec<u32>,
     pins: Vec<(u32, u32)>,
+    /// Nets whose pins are left out, in order.
+    crowded: Vec<u32>,
 }
 
 /// The mark of an instance in the packed pin number.
 const INSTANCE: u32 = 1 << 31;
 
 impl PinTable {
-    /// Counts, then fills: two passes, no allocation per net.
+    /// All nets of a cell.
     pub fn new(template: &Template) -> PinTable {
-        let mut first = vec![0u32; template.nets.len() + 1];
-        visit(template, |net, _, _| first[net.0 as usize + 1] += 1);
-        for at in 1..first.len() {
-            first[at] += first[at - 1];
+        PinTable::rooted(template, &|net| net, usize::MAX)
+    }
+
+    /// Counts, then fills: two passes, no allocation per net. `root` says which net stands for those that are one with it; the
+    /// pins of nets with more than `most` are left out.
+    pub fn rooted(template: &Template, root: &dyn Fn(NetIx) -> NetIx, most: usize) -> PinTable {
+        let mut counts = vec![0u32; template.nets.len()];
+        visit(template, |net, _, _| counts[root(net).0 as usize] += 1);
+        let mut crowded = Vec::new();
+        let mut first = Vec::with_capacity(counts.len() + 1);
+        let mut total = 0;
+        first.push(0);
+        for (net, &count) in (0u32..).zip(&counts) {
+            match count as usize > most {
+                true => crowded.push(net),
+                false => total += count,
+            }
+            first.push(total);
         }
-        let mut next = first.clone();
-        let mut pins = vec![(0, 0); first.last().copied().unwrap_or(0) as usize];
+        let mut next = counts;
+        next.copy_from_slice(&first[..first.len() - 1]);
+        let mut pins = vec![(0, 0); total as usize];
         visit(template, |net, owner, pin| {
-            let at = &mut next[net.0 as usize];
-            pins[*at as usize] = (owner, pin);
-            *at += 1;
+            let net = root(net).0;
+            let at = &mut next[net as usize];
+            if crowded.binary_search(&net).is_err() {
+                pins[*at as usize] = (owner, pin);
+                *at += 1;
+            }
         });
-        PinTable { first, pins }
+        PinTable { first, pins, crowded }
+    }
+
+    /// Whether a net has too many pins to be listed.
+    pub fn is_crowded(&self, net: NetIx) -> bool {
+        self.crowded.binary_search(&net.0).is_ok()
     }
 
     /// What stands on a net.

@@ -2,7 +2,7 @@
 
 use super::frames::{Frames, TopFacts};
 use super::interval::Interval;
-use super::plan::{Ground, PairBounds, Plans};
+use super::plan::{Cap, Ground, PairBounds, Plans};
 use super::solve::{Answer, InputKey, Inputs, Solver};
 use super::state::State;
 use super::terminals::{Terminals, table};
@@ -196,12 +196,23 @@ impl<'s> Shared<'s> {
 impl<'r> Reach<'r> {
     /// Computes the reach of every net in every mode (`modes`: indices of the deck's modes to judge; empty: all).
     pub fn new(design: &'r Design<'r>, contexts: &'r Contexts, deck: &'r Deck, only: &[usize]) -> Reach<'r> {
+        Reach::narrowed(design, contexts, deck, only, &[])
+    }
+
+    /// The same under further bounds between nets, sorted by context.
+    pub fn narrowed(
+        design: &'r Design<'r>,
+        contexts: &'r Contexts,
+        deck: &'r Deck,
+        only: &[usize],
+        caps: &[Cap],
+    ) -> Reach<'r> {
         let modes: Vec<Option<usize>> = match deck.modes.len() {
             0 => vec![None],
             all => (0..all).filter(|mode| only.is_empty() || only.contains(mode)).map(Some).collect(),
         };
         let terminals = table(design);
-        let plans = Plans::new(Ground { design, contexts, deck, terminals: &terminals });
+        let plans = Plans::new(Ground { design, contexts, deck, terminals: &terminals, caps });
         let mut reach = Reach {
             design,
             contexts,

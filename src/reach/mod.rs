@@ -29,4 +29,6 @@ pub use expand::{Reach, ReachContext, ReachIx};
 pub use frames::{Frame, Frames};
 pub use interval::Interval;
 pub use pairs::Unknown;
+pub use plan::Cap;
 pub use state::{Side, State};
+pub use terminals::{Terminals, table as terminals};

@@ -52,6 +52,19 @@ impl PairBounds {
     }
 }
 
+/// A bound of the voltage between two nets of a context that something other than its devices' kinds gives.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Cap {
+    /// The context.
+    pub context: ContextIx,
+    /// A net.
+    pub net: NetIx,
+    /// The other, a rail.
+    pub rail: NetIx,
+    /// V(net) − V(rail), volts.
+    pub range: Interval,
+}
+
 /// What a context shows at its boundary.
 #[derive(Clone, Debug, Default)]
 struct Shown {
@@ -118,6 +131,8 @@ pub(super) struct Ground<'g> {
     pub(super) contexts: &'g Contexts,
     pub(super) deck: &'g Deck,
     pub(super) terminals: &'g [Terminals],
+    /// Sorted by context.
+    pub(super) caps: &'g [Cap],
 }
 
 impl Plans {
@@ -154,6 +169,7 @@ fn callees_first(contexts: &Contexts) -> Vec<ContextIx> {
 
 struct Maker<'m> {
     ground: Ground<'m>,
+    at: ContextIx,
     context: &'m Context,
     template: &'m Template,
     groups: UnionFind<u32>,
@@ -168,7 +184,7 @@ impl<'m> Maker<'m> {
         let template = ground.design.template(context.variant);
         let nets = template.nets.len();
         let plan = Plan { inductor: vec![false; nets], carries: vec![false; nets], ..Plan::default() };
-        Maker { ground, context, template, groups: UnionFind::new(nets), open: Vec::new(), plan }
+        Maker { ground, at, context, template, groups: UnionFind::new(nets), open: Vec::new(), plan }
     }
 
     fn make(mut self, plans: &Plans) -> Plan {
@@ -177,6 +193,11 @@ impl<'m> Maker<'m> {
         }
         for (instance, &child) in self.template.instance_indices().zip(&self.context.children) {
             self.instance(instance, &plans.get(child).shown);
+        }
+        let caps = self.ground.caps;
+        let first = caps.partition_point(|cap| cap.context < self.at);
+        for cap in caps[first..].iter().take_while(|cap| cap.context == self.at) {
+            self.plan.bounds.add(cap.net, cap.rail, cap.range);
         }
         let (context, marks) = (self.context, &self.ground.contexts.marks);
         let mut groups = std::mem::replace(&mut self.groups, UnionFind::new(0));

@@ -5,7 +5,8 @@ use crate::design::{Design, DeviceType, Element};
 
 /// The terminals of a kind of device, as indices of its pins, and what its channel needs to conduct.
 #[derive(Clone, Copy, Debug, PartialEq)]
-pub(super) enum Terminals {
+#[allow(missing_docs)]
+pub enum Terminals {
     /// Drain, gate, source, body; `n` for n-channel. Threshold in volts: `-∞` where it is not declared.
     Mos { d: u8, g: u8, s: u8, b: Option<u8>, n: bool, threshold: f64 },
     /// Collector, base, emitter; `n` for npn.
@@ -25,7 +26,7 @@ pub(super) enum Terminals {
 }
 
 /// The terminals of all kinds of device of a design.
-pub(super) fn table(design: &Design<'_>) -> Vec<Terminals> {
+pub fn table(design: &Design<'_>) -> Vec<Terminals> {
     design.types.iter().map(|kind| terminals(kind, kind.class.map(|class| &design.classes[class as usize]))).collect()
 }
 

@@ -1,0 +1,229 @@
+//! Currents through channels, worked out on demand from those that are known.
+//!
+//! Known currents are declared ones (`currents:`), those of current sources, and the most that a resistor carries between nets of
+//! known reach. They travel by Kirchhoff's current law at a net where all other currents are known (a series connection is the
+//! plainest case), and between the members of a mirror of one class by the ratio of width × copies / length. Half of a pair carries at
+//! most what its tail does. What cannot be had that way stays unknown.
+//!
+//! A current is **exact** if it is declared, a source's, or follows from such by series, sums and ratios; else it is a **bound**
+//! of the magnitude. A ratio leaves out what the drain's voltage adds (channel-length modulation): exact means as exact as a
+//! designer's own ratio. A reference or output with a resistor in its source gives bounds alone.
+
+mod narrow;
+mod sums;
+
+pub use narrow::caps;
+
+use crate::declared::DeclaredCurrent;
+use crate::roles::{Member, Net, SpotIx, Touch, Unit, Walker};
+use crate::source::Span;
+use hashbrown::{HashMap, HashSet};
+
+/// What is known of the current through a channel.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Current {
+    /// Its magnitude, or the most that it can be, amperes.
+    pub amps: f64,
+    /// Whether it is that current, and not only a bound of it.
+    pub exact: bool,
+    /// Whether a mirror's ratio stands behind it: the drain's voltage adds to such a current.
+    pub by_ratio: bool,
+    /// How it was found, from the known current on.
+    pub steps: Vec<Step>,
+}
+
+/// One step on the way of a current.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Step {
+    /// The device that it goes through, where it is one.
+    pub unit: Option<Unit>,
+    /// The declaration that says it, where it is one.
+    pub place: Option<Span>,
+    /// The current there, amperes.
+    pub amps: f64,
+    /// Why.
+    pub by: By,
+}
+
+/// Why a current is known.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub enum By {
+    /// It is declared.
+    Declared,
+    /// A current source says it.
+    Source,
+    /// The most that a resistor carries.
+    Resistor,
+    /// What other currents at a net leave for it.
+    Sum,
+    /// The most that the others at a net leave for it.
+    Most,
+    /// A mirror's ratio.
+    Ratio(f64),
+}
+
+/// How far currents are followed.
+const DEEPEST: usize = 24;
+
+/// Currents around one walk.
+pub struct Currents<'c, 'w> {
+    pub(super) walker: &'c mut Walker<'w>,
+    known: HashMap<Unit, Option<Current>>,
+    busy: HashSet<Unit>,
+}
+
+impl<'c, 'w> Currents<'c, 'w> {
+    /// Currents as seen from the start of a walk.
+    pub fn new(walker: &'c mut Walker<'w>) -> Currents<'c, 'w> {
+        Currents { walker, known: HashMap::new(), busy: HashSet::new() }
+    }
+
+    /// The current through a device's channel; none where it is not known.
+    pub fn of(&mut self, unit: Unit) -> Option<Current> {
+        if let Some(known) = self.known.get(&unit) {
+            return known.clone();
+        }
+        if self.busy.len() >= DEEPEST || !self.busy.insert(unit) {
+            return None;
+        }
+        let found = self.look(unit);
+        self.busy.remove(&unit);
+        // What was not found on the way of another question may be for lack of that one's answer.
+        if self.busy.is_empty() || found.as_ref().is_some_and(|current| current.exact) {
+            self.known.insert(unit, found.clone());
+        }
+        found
+    }
+
+    fn look(&mut self, unit: Unit) -> Option<Current> {
+        if let Some(declared) = self.declared_through(unit) {
+            return Some(declared);
+        }
+        let own = self.by_its_nets(unit);
+        if own.as_ref().is_some_and(|current| current.exact) {
+            return own;
+        }
+        better(own, self.by_mirror(unit))
+    }
+
+    /// What the nets at its ends leave for it.
+    fn by_its_nets(&mut self, unit: Unit) -> Option<Current> {
+        let mos = self.walker.working(unit)?;
+        let at_drain = self.left_for(unit, mos.d, Touch::Drain { n: mos.n });
+        if at_drain.as_ref().is_some_and(|current| current.exact) {
+            return at_drain;
+        }
+        better(at_drain, self.left_for(unit, mos.s, Touch::Source { n: mos.n }))
+    }
+
+    /// What its mirror's ratio makes of another member's current.
+    fn by_mirror(&mut self, unit: Unit) -> Option<Current> {
+        let mirror = self.walker.mirror(unit)?;
+        let own = self.strength(unit)?;
+        let mut best = None;
+        for &other in mirror.references.iter().chain(&mirror.outputs).filter(|&&other| other != unit) {
+            let (Some((its_class, its)), Some(sources)) = (self.strength(other), self.sources(unit, other, &mirror)) else {
+                continue;
+            };
+            if its_class != own.0 {
+                continue;
+            }
+            if !self.busy.insert(other) {
+                continue;
+            }
+            let current = match self.declared_through(other) {
+                Some(declared) => Some(declared),
+                None => self.by_its_nets(other),
+            };
+            self.busy.remove(&other);
+            let Some(mut current) = current else { continue };
+            let ratio = own.1 / its;
+            current.amps *= ratio;
+            current.exact &= sources == Sources::Joined;
+            current.by_ratio = true;
+            current.steps.push(Step { unit: Some(unit), place: None, amps: current.amps, by: By::Ratio(ratio) });
+            best = better(best, Some(current));
+            if best.as_ref().is_some_and(|current: &Current| current.exact) {
+                break;
+            }
+        }
+        best
+    }
+
+    /// Whether the ratio of two members holds as it stands, or bounds the first one's current; none where it does neither.
+    fn sources(&mut self, unit: Unit, other: Unit, mirror: &crate::roles::Mirror) -> Option<Sources> {
+        let (own, its) = (self.walker.mos(unit)?, self.walker.mos(other)?);
+        if self.walker.same(own.s, its.s) {
+            return Some(Sources::Joined);
+        }
+        // A resistor in this device's source only takes from its drive; one in the other's does not say.
+        let reference = mirror.member == Member::Output && mirror.references.contains(&other);
+        (reference && self.walker.is_rail(its.s)).then_some(Sources::Degenerated)
+    }
+
+    /// Its class, and width × copies / length.
+    fn strength(&mut self, unit: Unit) -> Option<(u32, f64)> {
+        let class = self.walker.mos(unit)?.class?;
+        let width = self.walker.total_width(unit)?;
+        let sizes = self.walker.sizes(unit)?;
+        let length = *sizes.length.as_ref().ok()?;
+        (length > 0.0 && length.is_finite()).then(|| (class, width / length))
+    }
+
+    fn declared_through(&mut self, unit: Unit) -> Option<Current> {
+        let ground = self.walker.ground;
+        if ground.deck().currents_through.is_empty() {
+            return None;
+        }
+        self.reach_the_top(unit.spot);
+        let path = self.walker.unit_path(unit);
+        let declared = ground.deck().currents_through.iter().find(|current| current.at.matches_path(&path))?;
+        declared_current(declared, Some(unit))
+    }
+
+    /// The declared current that enters a net from outside.
+    fn declared_into(&mut self, net: Net) -> Option<&'w DeclaredCurrent> {
+        let deck = self.walker.ground.deck();
+        if deck.currents_into.is_empty() {
+            return None;
+        }
+        let net = self.walker.climb(net);
+        let inner = deck.currents_into.iter().any(|current| current.at.text().contains('.'));
+        if inner {
+            self.reach_the_top(net.spot);
+        } else if !self.walker.context(net.spot).parents.is_empty() {
+            return None;
+        }
+        let above = self.walker.path(net.spot);
+        let name = self.walker.net_name(net);
+        let path = if above.is_empty() { name.to_owned() } else { format!("{above}.{name}") };
+        deck.currents_into.iter().find(|current| current.at.matches_path(&path))
+    }
+
+    /// Makes the walk choose its callers up to the top, where a full path is wanted.
+    fn reach_the_top(&mut self, spot: SpotIx) {
+        self.walker.choose_all(spot);
+    }
+}
+
+#[derive(Clone, Copy, PartialEq)]
+enum Sources {
+    Joined,
+    Degenerated,
+}
+
+fn declared_current(declared: &DeclaredCurrent, unit: Option<Unit>) -> Option<Current> {
+    let amps = declared.amps.lo.abs().max(declared.amps.hi.abs());
+    let step = Step { unit, place: Some(declared.place), amps, by: By::Declared };
+    amps.is_finite().then(|| Current { amps, exact: true, by_ratio: false, steps: vec![step] })
+}
+
+/// Of two answers the exact one, else the smaller bound.
+fn better(a: Option<Current>, b: Option<Current>) -> Option<Current> {
+    match (a, b) {
+        (Some(a), Some(b)) => {
+            Some(if a.exact != b.exact { if a.exact { a } else { b } } else if b.amps < a.amps { b } else { a })
+        }
+        (a, b) => a.or(b),
+    }
+}

@@ -1,0 +1,97 @@
+//! Rules for mirrors and pairs: one subject for each output of a mirror, one for each pair.
+
+use super::finding::{in_cell, word};
+use super::fold::{Folded, Folds, Standing};
+use super::verdict::{Asked, ask};
+use crate::declared::{Rule, Subject};
+use crate::design::DeviceIx;
+use crate::diag::Diagnostic;
+use crate::facts::{DeviceView, Evidence, GroupView, World};
+use crate::reach::ReachIx;
+use crate::source::Span;
+
+/// Asks the rules of one of these subjects.
+pub(super) fn judge(world: World<'_>, rules: &[&Rule], subject: Subject, asked: &[u32]) -> Vec<Diagnostic> {
+    let mut folds: Folds<(ReachIx, DeviceIx)> = Folds::new();
+    for at in world.reach.indices() {
+        let template = world.design.template(world.context(at).variant);
+        for device in template.devices() {
+            let kind = world.design.device_type(template, device);
+            let Some(class) = kind.class.filter(|_| kind.element.is_mos()) else { continue };
+            let class = &world.deck.classes[class as usize];
+            if !may_be(world, at, device, subject) {
+                continue;
+            }
+            let mut view = DeviceView::for_verdict(world, at, device, class);
+            loop {
+                view = match group(subject, view) {
+                    Ok(group) => {
+                        for &rule in asked {
+                            if let Some((verdict, mut evidence)) = ask(rules[rule as usize], &group) {
+                                let (file, start) = template.device_card(device);
+                                evidence.way = group.main().way();
+                                let (above, below) = group.main().stands();
+                                let (place, count) = (Standing { at: above, below }, group.main().instances());
+                                folds.add((rule, verdict, Span::new(file, start, start)), place, count, (at, device), evidence);
+                            }
+                        }
+                        group.into_main()
+                    }
+                    Err(view) => view,
+                };
+                if !view.next_surroundings() {
+                    break;
+                }
+            }
+        }
+    }
+    folds.all.into_iter().filter_map(|folded| of_group(world, rules, subject, folded)).collect()
+}
+
+/// Whether a glance at its gate's net leaves it possible that a device belongs to such a structure.
+fn may_be(world: World<'_>, at: ReachIx, device: DeviceIx, subject: Subject) -> bool {
+    if subject != Subject::Mirror {
+        return true;
+    }
+    let template = world.design.template(world.context(at).variant);
+    let Some(class) = world.design.class(template, device) else { return false };
+    let Some(gate) = class.pin("g").and_then(|pin| template.device_pins(device).get(pin)) else { return false };
+    let gates = world.roles.gates(world.reach.get(at).context, *gate);
+    gates.shared && gates.reference
+}
+
+fn group<'w>(subject: Subject, view: DeviceView<'w>) -> Result<GroupView<'w>, DeviceView<'w>> {
+    match subject {
+        Subject::Mirror => GroupView::mirror(view),
+        _ => GroupView::pair(view),
+    }
+}
+
+fn of_group(world: World<'_>, rules: &[&Rule], subject: Subject, folded: Folded<(ReachIx, DeviceIx)>) -> Option<Diagnostic> {
+    let ((at, device), brief) = &folded.worst;
+    let template = world.design.template(world.context(*at).variant);
+    let class = world.design.class(template, *device)?;
+    let view = DeviceView::seen_along(world, *at, *device, class, &brief.way);
+    let group = group(subject, view).ok()?;
+    let main = group.main();
+    let nets = class.pins.iter().enumerate().map(|(pin, name)| (name.clone(), main.net_text(pin).to_owned())).collect();
+    let mut finding = in_cell(world, rules, *at, main.name(), &folded, brief);
+    finding.nets = nets;
+    finding.worst.path = main.path();
+    let (rule, verdict, statement) = folded.statement;
+    Some(word(rules[rule as usize], verdict, &group, brief, finding, statement))
+}
+
+impl Asked for GroupView<'_> {
+    fn notes(&self) -> Evidence {
+        self.take_evidence()
+    }
+
+    fn place(&self, key: &str) -> Option<Span> {
+        self.place_of_member(key)
+    }
+
+    fn pin_places(&self, _: &Evidence) -> Vec<(Span, String, String)> {
+        Vec::new()
+    }
+}

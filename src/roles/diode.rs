@@ -1,0 +1,69 @@
+//! Diode-connected devices.
+
+use super::{Net, Touch, Unit, Walker};
+
+/// How many devices may stand between a drain and its gate.
+const LONGEST_CHAIN: usize = 4;
+
+/// **diode-connected**: the gate's net is the drain's; or it is reached from the drain through a chain of channels of the same polarity
+/// (each entered at its source), resistors or a follower (entered at its gate, its drain on a rail), none of whose inner
+/// nets is a rail. So the reference of a cascode, wide-swing or buffered mirror is found.
+///
+/// Where a device that shares gate and source has its gate straight on its own drain, that one is meant and no other: in a
+/// Wilson mirror the input's drain too leads to the common gate, through the output's cascode.
+pub(super) fn diode_connected(walker: &mut Walker<'_>, unit: Unit) -> Option<Vec<Unit>> {
+    let mos = walker.working(unit)?;
+    if walker.same(mos.d, mos.g) {
+        return Some(Vec::new());
+    }
+    // A gate that nothing but gates and capacitors stand on is driven from elsewhere.
+    if walker.is_rail(mos.d) || straight_beside(walker, unit) {
+        return None;
+    }
+    let mut ways: Vec<(Net, Vec<Unit>)> = vec![(mos.d, Vec::new())];
+    let mut seen = vec![mos.d];
+    while let Some((here, way)) = ways.pop() {
+        for on in walker.each_on(here).iter() {
+            if on.unit == unit || way.contains(&on.unit) {
+                continue;
+            }
+            let Some(next) = step(walker, mos.n, on.unit, on.touch, here) else { continue };
+            let mut longer = way.clone();
+            longer.push(on.unit);
+            if walker.same(next, mos.g) {
+                return Some(longer);
+            }
+            let known = seen.iter().any(|&net| walker.same(net, next));
+            if longer.len() < LONGEST_CHAIN && !known && !walker.is_rail(next) {
+                seen.push(next);
+                ways.push((next, longer));
+            }
+        }
+    }
+    None
+}
+
+fn step(walker: &mut Walker<'_>, polarity: bool, through: Unit, touch: Touch, from: Net) -> Option<Net> {
+    match touch {
+        Touch::Source { n } if n == polarity => Some(walker.working(through)?.d),
+        Touch::Gate { n } if n == polarity => {
+            let follower = walker.working(through)?;
+            (walker.is_rail(follower.d) && !walker.is_rail(follower.s)).then_some(follower.s)
+        }
+        Touch::Resistor => walker.other_end(through, from),
+        _ => None,
+    }
+}
+
+/// Whether a device beside it, with gate and source in common, has its gate straight on its drain.
+fn straight_beside(walker: &mut Walker<'_>, unit: Unit) -> bool {
+    let Some(mos) = walker.mos(unit) else { return false };
+    if super::drive::use_of_rail(walker, mos.g) == Some(super::Use::Supply) {
+        return false;
+    }
+    let beside = walker.units(mos.g, |touch| touch == Touch::Gate { n: mos.n });
+    beside.into_iter().filter(|&other| other != unit).any(|other| {
+        let Some(other) = walker.working(other) else { return false };
+        walker.same(other.d, other.g) && super::mirror::common_source(walker, other.s, mos.s)
+    })
+}
