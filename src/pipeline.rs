@@ -1,5 +1,6 @@
 //! The whole program as one readable function: load, elaborate, find contexts, compute reach, ask the rules, word the findings.
 
+use crate::current::caps;
 use crate::deck::{self, DeckFiles};
 use crate::declared::{Deck, Rule};
 use crate::design::{Design, elaborate};
@@ -10,10 +11,9 @@ use crate::facts::{World, ratings::count_pairs};
 use crate::graph::Contexts;
 use crate::load::{Files, LoadRequest, load};
 use crate::names::{Names, nearest};
-use crate::current::caps;
 use crate::reach::Reach;
-use crate::roles::{MOST_SURROUNDINGS, Roles};
 use crate::report::{Pairs, Report, Summary};
+use crate::roles::{MOST_SURROUNDINGS, Roles};
 use crate::source::{SourceMap, Span};
 use crate::waiver::{self, Date};
 use std::path::{Path, PathBuf};

@@ -1,12 +1,15 @@
 //! What `drainwise survey` shows: what is in a netlist, by the classes of its deck; rails found and rails that seem missing.
 
+use crate::declared::Class;
 use crate::design::{NetIx, Oddity};
-use crate::facts::{DeviceView, World};
+use crate::facts::{DeviceView, ROLES, World};
 use crate::graph::{Mark, PinTable, all_rails};
 use crate::load::Files;
 use crate::pipeline::{self, Job, Outcome, Progress};
+use crate::quantity::{Dim, show};
 use crate::reach::ReachIx;
 use crate::report::Summary;
+use crate::roles::UNCLASSIFIED;
 use serde::Serialize;
 use std::collections::BTreeMap;
 use std::io::{self, Write};
@@ -24,20 +27,38 @@ pub struct Survey {
     pub missing: Vec<(String, u64)>,
     /// Nets of the top whose voltage is not known, and why.
     pub undetermined: Vec<(String, &'static str)>,
-    /// High-voltage devices, by path.
+    /// Transistors, by path.
     pub devices: Vec<SurveyDevice>,
+    /// For each role, how many transistors play it (over all instances).
+    pub roles: Vec<(&'static str, u64)>,
+    /// Instances of transistors that are not listed, beyond [`MOST_DEVICES`] statements.
+    pub not_listed: u64,
 }
 
-/// One high-voltage device.
+/// One transistor in one kind of surroundings.
 #[derive(Clone, Debug)]
 pub struct SurveyDevice {
     /// Path of the first instance.
     pub path: String,
     /// Class.
     pub class: String,
+    /// Whether that class is for high voltage.
+    pub high_voltage: bool,
     /// Instances in the same surroundings.
     pub instances: u64,
+    /// Its roles, each with the paths of the devices that show it.
+    pub roles: Vec<(&'static str, Vec<String>)>,
+    /// The current through its channel, amperes, and whether that is exact (else the most that it can be).
+    pub current: Option<(f64, bool)>,
+    /// That current for each metre of width.
+    pub density: Option<f64>,
 }
+
+/// At most this many transistors are listed.
+const MOST_DEVICES: usize = 100_000;
+
+/// At most this many devices are named as evidence of one role.
+const MOST_EVIDENCE: usize = 8;
 
 /// At most this many nets are listed as undetermined.
 const MOST_NETS: usize = 200;
@@ -52,14 +73,15 @@ pub fn survey(files: &dyn Files, job: &Job, progress: &dyn Progress) -> (Outcome
     let (sources, (diagnostics, found)) = pipeline::with_world(loaded, job, progress, |world, mut seen| {
         let diagnostics = std::mem::take(&mut seen.diagnostics);
         let summary = pipeline::summarise(world, &seen);
-        let found = Survey {
+        let mut found = Survey {
             summary,
             unmatched: unmatched(world),
             rails: rails(world),
             missing: missing(world),
             undetermined: undetermined(world),
-            devices: devices(world),
+            ..Survey::default()
         };
+        look_at_devices(world, &mut found);
         (diagnostics, found)
     });
     (pipeline::checked(sources, diagnostics), Some(found))
@@ -137,21 +159,55 @@ fn undetermined(world: World<'_>) -> Vec<(String, &'static str)> {
     found
 }
 
-fn devices(world: World<'_>) -> Vec<SurveyDevice> {
-    let mut found = Vec::new();
+fn look_at_devices(world: World<'_>, found: &mut Survey) {
+    let mut counts: BTreeMap<&'static str, u64> = BTreeMap::new();
     for at in world.reach.indices() {
         let template = world.design.template(world.context(at).variant);
         for device in template.devices() {
-            let Some(class) = world.design.class(template, device).filter(|class| class.high_voltage) else { continue };
-            let view = DeviceView::new(world, at, device, class);
-            found.push(SurveyDevice {
-                path: view.path(),
-                class: class.name.clone(),
-                instances: world.reach.get(at).count,
-            });
+            let Some(class) = world.design.class(template, device).filter(|class| class.kind.is_mos()) else {
+                continue;
+            };
+            let mut view = DeviceView::new(world, at, device, class);
+            loop {
+                let seen = look_at(&view, class);
+                let roles = seen.roles.iter().map(|(role, _)| *role);
+                for role in roles.chain(seen.roles.is_empty().then_some(UNCLASSIFIED)) {
+                    let count = counts.entry(role).or_default();
+                    *count = count.saturating_add(seen.instances);
+                }
+                if found.devices.len() < MOST_DEVICES {
+                    found.devices.push(seen);
+                } else {
+                    found.not_listed = found.not_listed.saturating_add(seen.instances);
+                }
+                if !view.next_surroundings() {
+                    break;
+                }
+            }
         }
     }
-    found
+    let order = |role: &str| ROLES.iter().position(|known| *known == role);
+    found.roles = counts.into_iter().collect();
+    found.roles.sort_by_key(|(role, _)| order(role));
+}
+
+fn look_at(view: &DeviceView<'_>, class: &Class) -> SurveyDevice {
+    let played = view.roles();
+    let roles = played.iter().map(|played| {
+        let with = played.with.iter().take(MOST_EVIDENCE).map(|&unit| view.path_of(unit)).collect();
+        (played.role.word(), with)
+    });
+    let roles = roles.collect();
+    let current = view.current().map(|current| (current.amps, current.exact));
+    SurveyDevice {
+        roles,
+        current,
+        density: view.density(),
+        path: view.path(),
+        class: class.name.clone(),
+        high_voltage: class.high_voltage,
+        instances: view.instances(),
+    }
 }
 
 /// Writes the survey for people.
@@ -183,14 +239,31 @@ pub fn write_text(found: &Survey, out: &mut dyn Write) -> io::Result<()> {
         "Nets of the top whose voltage is not known",
         found.undetermined.iter().map(|(name, why)| format!("{name}  {why}")),
     )?;
-    section(
-        out,
-        "High-voltage devices",
-        found.devices.iter().map(|device| match device.instances {
-            1 => format!("{}  {}", device.path, device.class),
-            count => format!("{}  {}, {count} instances", device.path, device.class),
-        }),
-    )
+    section(out, "High-voltage devices", found.devices.iter().filter(|device| device.high_voltage).map(in_words))?;
+    section(out, "Roles of all transistors", found.roles.iter().map(|(role, count)| format!("{role}  {count}")))
+}
+
+/// A device in one line: path, class, instances, roles with their evidence, current.
+fn in_words(device: &SurveyDevice) -> String {
+    let mut line = format!("{}  {}", device.path, device.class);
+    if device.instances != 1 {
+        line += &format!(", {} instances", device.instances);
+    }
+    let roles: Vec<String> = device
+        .roles
+        .iter()
+        .map(|(role, with)| match with.as_slice() {
+            [] => (*role).to_owned(),
+            with => format!("{role} (with {})", with.join(", ")),
+        })
+        .collect();
+    line += "  ";
+    line += &if roles.is_empty() { UNCLASSIFIED.to_owned() } else { roles.join("; ") };
+    if let Some((amps, exact)) = device.current {
+        let density = device.density.map_or(String::new(), |density| format!(", {}", show(density, Dim::DENSITY)));
+        line += &format!("  {}{}{density}", if exact { "" } else { "at most " }, show(amps, Dim::AMPERE));
+    }
+    line
 }
 
 fn section(out: &mut dyn Write, title: &str, lines: impl Iterator<Item = String>) -> io::Result<()> {
@@ -209,6 +282,8 @@ fn section(out: &mut dyn Write, title: &str, lines: impl Iterator<Item = String>
 struct Shape<'s> {
     classes: BTreeMap<&'s str, u64>,
     devices: Vec<DeviceShape<'s>>,
+    devices_not_listed: u64,
+    roles: BTreeMap<&'s str, u64>,
     unmatched: BTreeMap<&'s str, u64>,
     rails: BTreeMap<&'s str, &'s [String]>,
     missing: BTreeMap<&'s str, u64>,
@@ -220,6 +295,16 @@ struct DeviceShape<'s> {
     path: &'s str,
     class: &'s str,
     instances: u64,
+    roles: Vec<RoleShape<'s>>,
+    current: Option<f64>,
+    exact: Option<bool>,
+    density: Option<f64>,
+}
+
+#[derive(Serialize)]
+struct RoleShape<'s> {
+    role: &'s str,
+    with: &'s [String],
 }
 
 /// Writes the survey as one JSON object.
@@ -229,8 +314,18 @@ pub fn write_json(found: &Survey, out: &mut dyn Write) -> io::Result<()> {
         devices: found
             .devices
             .iter()
-            .map(|device| DeviceShape { path: &device.path, class: &device.class, instances: device.instances })
+            .map(|device| DeviceShape {
+                path: &device.path,
+                class: &device.class,
+                instances: device.instances,
+                roles: device.roles.iter().map(|(role, with)| RoleShape { role, with }).collect(),
+                current: device.current.map(|(amps, _)| amps),
+                exact: device.current.map(|(_, exact)| exact),
+                density: device.density,
+            })
             .collect(),
+        devices_not_listed: found.not_listed,
+        roles: found.roles.iter().copied().collect(),
         unmatched: found.unmatched.iter().map(|(name, count)| (name.as_str(), *count)).collect(),
         rails: found.rails.iter().map(|(name, nets)| (name.as_str(), nets.as_slice())).collect(),
         missing: found.missing.iter().map(|(name, count)| (name.as_str(), *count)).collect(),

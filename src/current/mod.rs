@@ -28,6 +28,9 @@ pub struct Current {
     pub exact: bool,
     /// Whether a mirror's ratio stands behind it: the drain's voltage adds to such a current.
     pub by_ratio: bool,
+    /// Whether the channel itself is held to it (by a declaration, its gate, or what stands below its source). Else it is what its drain's
+    /// net is fed with all the time, and a channel that switches carries more while it discharges that net.
+    pub while_switching: bool,
     /// How it was found, from the known current on.
     pub steps: Vec<Step>,
 }
@@ -95,6 +98,16 @@ impl<'c, 'w> Currents<'c, 'w> {
         found
     }
 
+    /// The current that a channel is held to while it switches; none where it is not known.
+    pub fn while_switching(&mut self, unit: Unit) -> Option<Current> {
+        let usual = self.of(unit);
+        if usual.as_ref().is_some_and(|current| current.while_switching) {
+            return usual;
+        }
+        let mos = self.walker.working(unit)?;
+        self.left_for(unit, mos.s, Touch::Source { n: mos.n })
+    }
+
     fn look(&mut self, unit: Unit) -> Option<Current> {
         if let Some(declared) = self.declared_through(unit) {
             return Some(declared);
@@ -122,7 +135,8 @@ impl<'c, 'w> Currents<'c, 'w> {
         let own = self.strength(unit)?;
         let mut best = None;
         for &other in mirror.references.iter().chain(&mirror.outputs).filter(|&&other| other != unit) {
-            let (Some((its_class, its)), Some(sources)) = (self.strength(other), self.sources(unit, other, &mirror)) else {
+            let (Some((its_class, its)), Some(sources)) = (self.strength(other), self.sources(unit, other, &mirror))
+            else {
                 continue;
             };
             if its_class != own.0 {
@@ -141,6 +155,7 @@ impl<'c, 'w> Currents<'c, 'w> {
             current.amps *= ratio;
             current.exact &= sources == Sources::Joined;
             current.by_ratio = true;
+            current.while_switching = true;
             current.steps.push(Step { unit: Some(unit), place: None, amps: current.amps, by: By::Ratio(ratio) });
             best = better(best, Some(current));
             if best.as_ref().is_some_and(|current: &Current| current.exact) {
@@ -215,15 +230,19 @@ enum Sources {
 fn declared_current(declared: &DeclaredCurrent, unit: Option<Unit>) -> Option<Current> {
     let amps = declared.amps.lo.abs().max(declared.amps.hi.abs());
     let step = Step { unit, place: Some(declared.place), amps, by: By::Declared };
-    amps.is_finite().then(|| Current { amps, exact: true, by_ratio: false, steps: vec![step] })
+    amps.is_finite().then(|| Current { amps, exact: true, by_ratio: false, while_switching: true, steps: vec![step] })
 }
 
 /// Of two answers the exact one, else the smaller bound.
 fn better(a: Option<Current>, b: Option<Current>) -> Option<Current> {
     match (a, b) {
-        (Some(a), Some(b)) => {
-            Some(if a.exact != b.exact { if a.exact { a } else { b } } else if b.amps < a.amps { b } else { a })
-        }
+        (Some(a), Some(b)) => Some(if a.exact != b.exact {
+            if a.exact { a } else { b }
+        } else if b.amps < a.amps {
+            b
+        } else {
+            a
+        }),
         (a, b) => a.or(b),
     }
 }

@@ -75,10 +75,9 @@ fn of_resistor(roles: &Roles<'_>, at: ReachIx, device: DeviceIx) -> Option<(NetI
 
 fn in_surroundings(walker: &mut Walker<'_>, unit: Unit, net: Net, rail: Net) -> Interval {
     let modes = walker.ground.reach.modes.len();
-    let held = (0..modes).map(|mode| walker.volts(mode, net, rail)).fold(Interval::point(0.0), |all, range| Interval {
-        lo: all.lo.min(range.lo),
-        hi: all.hi.max(range.hi),
-    });
+    let held = (0..modes)
+        .map(|mode| walker.volts(mode, net, rail))
+        .fold(Interval::point(0.0), |all, range| Interval { lo: all.lo.min(range.lo), hi: all.hi.max(range.hi) });
     let mut currents = Currents::new(walker);
     let Some(ohms) = currents.resistance(unit) else { return Interval::ANY };
     let mut away = |down: bool| currents.pulling(unit, net, rail, down).map(|amps| amps * ohms);
@@ -110,8 +109,8 @@ impl Currents<'_, '_> {
                 let mos = self.walker.mos(unit)?;
                 let ends = [mos.d, mos.s];
                 // The junctions of n-channel bodies take current out of the net, those of p-channel bodies bring some.
-                let harmless =
-                    mos.n != down || ends.iter().all(|&end| self.walker.same(end, net) || self.stays_beyond(end, rail, down));
+                let harmless = mos.n != down
+                    || ends.iter().all(|&end| self.walker.same(end, net) || self.stays_beyond(end, rail, down));
                 harmless.then_some(0.0)
             }
             Touch::Still => {

@@ -64,7 +64,8 @@ impl Currents<'_, '_> {
         parts.sort_by(|a, b| b.current.amps.total_cmp(&a.current.amps));
         let mut steps = parts.swap_remove(0).current.steps;
         steps.push(Step { unit: Some(unit), place: None, amps: total, by: if exact { By::Sum } else { By::Most } });
-        Some(Current { amps: total, exact, by_ratio, steps })
+        let while_switching = matches!(touch, Touch::Source { .. });
+        Some(Current { amps: total, exact, by_ratio, while_switching, steps })
     }
 
     fn part(&mut self, unit: Unit, touch: Touch, net: Net) -> Option<Part> {
@@ -79,9 +80,24 @@ impl Currents<'_, '_> {
                 let first = self.walker.first_net(unit)?;
                 let leaves = self.walker.same(first, net) && !self.walker.same(other, first);
                 let sign = if leaves { -1.0 } else { 1.0 };
-                let way = if lo >= 0.0 { Some(sign) } else if hi <= 0.0 { Some(-sign) } else { None };
+                let way = if lo >= 0.0 {
+                    Some(sign)
+                } else if hi <= 0.0 {
+                    Some(-sign)
+                } else {
+                    None
+                };
                 let step = Step { unit: Some(unit), place: None, amps, by: By::Source };
-                Some(Part { current: Current { amps, exact: lo == hi, by_ratio: false, steps: vec![step] }, way })
+                Some(Part {
+                    current: Current {
+                        amps,
+                        exact: lo == hi,
+                        by_ratio: false,
+                        while_switching: true,
+                        steps: vec![step],
+                    },
+                    way,
+                })
             }
             _ => None,
         }
@@ -109,8 +125,13 @@ impl Currents<'_, '_> {
         let amps = most / ohms;
         let step = Step { unit: Some(unit), place: None, amps, by: By::Resistor };
         let exact = most - least <= 1e-9 * most;
-        (amps.is_finite() && least.is_finite())
-            .then(|| Current { amps, exact, by_ratio: false, steps: vec![step] })
+        (amps.is_finite() && least.is_finite()).then(|| Current {
+            amps,
+            exact,
+            by_ratio: false,
+            while_switching: true,
+            steps: vec![step],
+        })
     }
 
     /// A resistor's value, ohms, all copies in parallel.

@@ -32,7 +32,13 @@ pub(super) fn judge(world: World<'_>, rules: &[&Rule], subject: Subject, asked: 
                                 evidence.way = group.main().way();
                                 let (above, below) = group.main().stands();
                                 let (place, count) = (Standing { at: above, below }, group.main().instances());
-                                folds.add((rule, verdict, Span::new(file, start, start)), place, count, (at, device), evidence);
+                                folds.add(
+                                    (rule, verdict, Span::new(file, start, start)),
+                                    place,
+                                    count,
+                                    (at, device),
+                                    evidence,
+                                );
                             }
                         }
                         group.into_main()
@@ -67,7 +73,12 @@ fn group<'w>(subject: Subject, view: DeviceView<'w>) -> Result<GroupView<'w>, De
     }
 }
 
-fn of_group(world: World<'_>, rules: &[&Rule], subject: Subject, folded: Folded<(ReachIx, DeviceIx)>) -> Option<Diagnostic> {
+fn of_group(
+    world: World<'_>,
+    rules: &[&Rule],
+    subject: Subject,
+    folded: Folded<(ReachIx, DeviceIx)>,
+) -> Option<Diagnostic> {
     let ((at, device), brief) = &folded.worst;
     let template = world.design.template(world.context(*at).variant);
     let class = world.design.class(template, *device)?;

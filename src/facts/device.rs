@@ -1,12 +1,12 @@
 //! One device in its surroundings.
 
 use super::{Evidence, World};
+use crate::current::Current;
 use crate::declared::Class;
 use crate::design::{Card, Design, DeviceIx, DeviceType, NetIx, Reading, Sizes};
 use crate::expr::Value;
 use crate::graph::{Context, Mark, rail, rail_in_mode};
 use crate::quantity::Dim;
-use crate::current::Current;
 use crate::reach::ReachIx;
 use crate::roles::{Unit, Walker};
 use std::cell::{OnceCell, RefCell};

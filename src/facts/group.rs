@@ -27,7 +27,8 @@ impl<'w> GroupView<'w> {
     /// The mirror whose output a device is; none where it is no output, or the reference stands outside of the netlist.
     pub fn mirror(view: DeviceView<'w>) -> Result<GroupView<'w>, DeviceView<'w>> {
         let mirror = view.walk().borrow_mut().mirror(view.unit);
-        let reference = mirror.filter(|mirror| mirror.member == Member::Output).and_then(|m| m.references.first().copied());
+        let reference =
+            mirror.filter(|mirror| mirror.member == Member::Output).and_then(|m| m.references.first().copied());
         match reference.and_then(|unit| view.beside(unit)) {
             Some(reference) => Ok(GroupView::of(vec![(MIRROR[0], view), (MIRROR[1], reference)])),
             None => Err(view),
@@ -125,7 +126,13 @@ impl<'w> DeviceView<'w> {
     }
 
     /// Looks at a device in the surroundings of an earlier view ([`DeviceView::way`]).
-    pub fn seen_along(world: World<'w>, at: ReachIx, device: DeviceIx, class: &'w Class, way: &[u32]) -> DeviceView<'w> {
+    pub fn seen_along(
+        world: World<'w>,
+        at: ReachIx,
+        device: DeviceIx,
+        class: &'w Class,
+        way: &[u32],
+    ) -> DeviceView<'w> {
         let mut view = DeviceView::new(world, at, device, class);
         view.way = way.to_vec();
         view

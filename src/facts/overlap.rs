@@ -78,12 +78,7 @@ impl DeviceView<'_> {
 
     /// Whether its current per width is known to stay within what may flow all the time: then no state and no edge is too much.
     fn carries_little(&self, limits: &OnState) -> bool {
-        matches!((self.density(), limits.density), (Some(density), Some(limit)) if density <= limit * (1.0 + 1e-9))
-    }
-
-    /// Whether its role is one that is on and high by design, not only in passing.
-    fn works_all_the_time(&self) -> bool {
-        self.roles().iter().any(|played| played.role.works_all_the_time())
+        matches!((self.density_at_all_times(), limits.density), (Some(density), Some(limit)) if density <= limit * (1.0 + 1e-9))
     }
 
     fn note_state_pins(&self) {

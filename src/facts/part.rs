@@ -4,8 +4,8 @@ use super::DeviceView;
 use crate::current::{By, Current, Currents, Step};
 use crate::expr::Value;
 use crate::quantity::{Dim, show};
-use crate::roles::{Member, Played, Role, UNCLASSIFIED, Unit, Walker};
 use crate::reach::ReachIx;
+use crate::roles::{Member, Played, Role, UNCLASSIFIED, Unit, Walker};
 use crate::source::Span;
 use std::cell::RefCell;
 use std::rc::Rc;
@@ -186,9 +186,7 @@ impl<'w> DeviceView<'w> {
 
     /// The current through its channel; none where it is not known.
     pub fn current(&self) -> Option<&Current> {
-        self.current
-            .get_or_init(|| Currents::new(&mut self.walk().borrow_mut()).of(self.unit))
-            .as_ref()
+        self.current.get_or_init(|| Currents::new(&mut self.walk().borrow_mut()).of(self.unit)).as_ref()
     }
 
     /// That current, or the most that it can be, as a value.
@@ -197,6 +195,21 @@ impl<'w> DeviceView<'w> {
             Some(current) => Value::Number { value: current.amps, dim: Dim::AMPERE },
             None => self.unknown("its current is not known: declare it under `currents:`"),
         }
+    }
+
+    /// Current per width that its channel is held to at every instant, A/m; none where it is not known. A device that works all the
+    /// time carries what flows; one that switches also discharges its drain's net.
+    pub(super) fn density_at_all_times(&self) -> Option<f64> {
+        if self.works_all_the_time() {
+            return self.density();
+        }
+        let held = Currents::new(&mut self.walk().borrow_mut()).while_switching(self.unit)?;
+        self.density_of(held.amps)
+    }
+
+    /// Whether its role is one that is on and high by design, not only in passing.
+    pub(super) fn works_all_the_time(&self) -> bool {
+        self.roles().iter().any(|played| played.role.works_all_the_time())
     }
 
     /// Current per width, A/m; none where one of them is not known.
@@ -224,9 +237,7 @@ impl<'w> DeviceView<'w> {
         let volts = (0..self.world.reach.modes.len()).map(|mode| self.voltage(mode, d, s));
         let most = volts.map(|range| range.hi.abs().max(range.lo.abs())).fold(0.0, f64::max);
         match self.current() {
-            Some(current) if most.is_finite() => {
-                Value::Number { value: current.amps * most, dim: Dim::WATT }
-            }
+            Some(current) if most.is_finite() => Value::Number { value: current.amps * most, dim: Dim::WATT },
             Some(_) => self.unknown("its drain-source voltage is not known"),
             None => self.current_value(),
         }

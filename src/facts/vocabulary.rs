@@ -173,9 +173,12 @@ pub const ATTRIBUTES: &[Attribute] = &[
         view.power_value()
     }),
     device("on", Type::Bool, "its gate can turn it on, in some mode", |view| view.can_be_on()),
-    device("duty", PLAIN, "the share of time it spends between modes that have it on and modes that have it high", |view| {
-        view.duty()
-    }),
+    device(
+        "duty",
+        PLAIN,
+        "the share of time it spends between modes that have it on and modes that have it high",
+        |view| view.duty(),
+    ),
     noted(Subject::Device, "part", "what it is in a mirror or stage, in words"),
     noted(Subject::Device, "partners", "the other devices of that mirror or stage, in words"),
     noted(Subject::Device, "pair", "the rated pair that is farthest outside"),
@@ -476,11 +479,17 @@ pub fn asks_for_voltages(rule: &Rule) -> bool {
         return true;
     }
     let of_part = |name: &str| {
-        matches!(name, "role" | "roles" | "plays" | "mirrored" | "amplifies" | "current" | "density" | "power" | "on" | "duty")
+        matches!(
+            name,
+            "role" | "roles" | "plays" | "mirrored" | "amplifies" | "current" | "density" | "power" | "on" | "duty"
+        )
     };
     let of_voltage = |name: &str| {
         of_part(name)
-            || matches!(name, "ratings_held" | "swapped" | "gate_driven" | "overlap_held" | "power_held" | "v.min" | "v.max")
+            || matches!(
+                name,
+                "ratings_held" | "swapped" | "gate_driven" | "overlap_held" | "power_held" | "v.min" | "v.max"
+            )
             || name.contains("reach.")
             || pair_name(name).is_some()
     };

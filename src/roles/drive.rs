@@ -9,7 +9,8 @@ use crate::reach::{Reach, ReachIx};
 pub enum Use {
     /// A rail on which bodies or sources stand, or ground; a port of the top with bodies or sources on it.
     Supply,
-    /// Steady: a rail without bodies or sources that hardly moves, or a net that a diode-connected device or a divider sets.
+    /// Steady: a rail without bodies or sources that hardly moves and never goes to a rail's own level, or a net that a
+    /// diode-connected device or a divider sets.
     Bias,
     /// A rail without bodies or sources that moves.
     Signal,
@@ -17,8 +18,9 @@ pub enum Use {
     Internal,
 }
 
-/// A rail that moves by less than this over all modes, in some frame, is steady, volts. A bias line moves with process and temperature
-/// (common practice, no source).
+/// A rail that moves by less than this over all modes, in some frame, is steady, volts; so is one that stays further than this on one
+/// side of the frame's net and moves by less than half of its largest value there: bias lines and supplies move with
+/// process and temperature, signals come to a rail (common practice, no source).
 const STEADY: f64 = 0.5;
 
 /// How far drivers of drivers are followed.
@@ -27,19 +29,30 @@ const DEEPEST: usize = 8;
 impl Walker<'_> {
     /// What a net is used for.
     pub fn use_of(&mut self, net: Net) -> Use {
-        if let Some(rail) = use_of_rail(self, net) {
+        let rail = use_of_rail(self, net);
+        if let Some(rail @ (Use::Supply | Use::Bias)) = rail {
             return rail;
         }
         let on = self.each_on(net);
-        if self.leads_out(net) && on.iter().any(|on| matches!(on.touch, Touch::Body | Touch::Source { .. })) {
+        if rail.is_none() && self.leads_out(net) && self.feeds(net) {
             return Use::Supply;
         }
         let gates: Vec<Unit> =
             on.iter().filter(|on| matches!(on.touch, Touch::Gate { .. })).map(|on| on.unit).collect();
-        if gates.into_iter().any(|gate| self.plays(gate, Role::DiodeConnected)) || self.is_divider(net) {
+        if gates.into_iter().any(|gate| self.plays(gate, Role::DiodeConnected))
+            || rail.is_none() && self.is_divider(net)
+        {
             return Use::Bias;
         }
-        Use::Internal
+        rail.unwrap_or(Use::Internal)
+    }
+
+    /// Whether an undeclared port of the top feeds devices: bodies stand on it whose sources do not, or several sources.
+    fn feeds(&mut self, net: Net) -> bool {
+        let on = self.each_on(net);
+        let sources = on.iter().filter(|on| matches!(on.touch, Touch::Source { .. })).count();
+        let bodies: Vec<Unit> = on.iter().filter(|on| on.touch == Touch::Body).map(|on| on.unit).collect();
+        sources > 1 || bodies.into_iter().any(|body| self.mos(body).is_some_and(|mos| !self.same(mos.s, net)))
     }
 
     /// A net that only resistors set: two or more of them, and nothing else that conducts.
@@ -66,10 +79,9 @@ impl Walker<'_> {
         })
     }
 
-    /// Whether something whose drive is not known stands on a net.
+    /// Whether something stands on a net of which nobody knows how it drives.
     pub(super) fn is_open(&mut self, net: Net) -> bool {
-        let at = self.spot(net.spot).at;
-        self.ground.reach.is_open(at, net.net) || self.each_on(net).iter().any(|on| on.touch == Touch::Conductor)
+        self.each_on(net).iter().any(|on| on.touch == Touch::Conductor)
     }
 
     /// Whether a net is driven rail to rail: modes hold it at both ends; or it is the joined drains of complementary devices (with gates
@@ -140,8 +152,7 @@ impl Walker<'_> {
 
     fn gate_driven_fully(&mut self, unit: Unit, depth: usize) -> bool {
         let Some(mos) = self.working(unit) else { return false };
-        self.driven_fully(mos.g, depth)
-            || use_of_rail(self, mos.g) == Some(Use::Signal)
+        self.driven_fully(mos.g, depth) || use_of_rail(self, mos.g) == Some(Use::Signal)
     }
 
     fn complementary(&mut self, low: Unit, high: Unit, depth: usize) -> bool {
@@ -253,6 +264,7 @@ fn is_steady(walker: &Walker<'_>, net: Net) -> bool {
         let own = frame > 0 && ranges.iter().all(|range| range.lo == 0.0 && range.hi == 0.0);
         let lo = ranges.iter().map(|range| range.lo).fold(f64::INFINITY, f64::min);
         let hi = ranges.iter().map(|range| range.hi).fold(f64::NEG_INFINITY, f64::max);
-        !own && hi - lo <= STEADY
+        let apart = lo > STEADY && hi - lo <= hi / 2.0 || hi < -STEADY && hi - lo <= -lo / 2.0;
+        !own && (hi - lo <= STEADY || apart)
     })
 }

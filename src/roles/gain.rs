@@ -18,14 +18,8 @@ pub(super) fn gain(walker: &mut Walker<'_>, unit: Unit) -> Option<Vec<Unit>> {
     if walker.use_of(mos.g) != Use::Internal || walker.rail_to_rail(mos.g) {
         return None;
     }
-    let other = [
-        Role::DiodeConnected,
-        Role::Pair,
-        Role::MirrorOutput,
-        Role::MirrorReference,
-        Role::Latch,
-        Role::BackToBack,
-    ];
+    let other =
+        [Role::DiodeConnected, Role::Pair, Role::MirrorOutput, Role::MirrorReference, Role::Latch, Role::BackToBack];
     (!other.into_iter().any(|role| walker.plays(unit, role))).then_some(load)
 }
 

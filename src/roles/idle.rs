@@ -19,10 +19,7 @@ pub(super) fn idle(walker: &mut Walker<'_>, unit: Unit) -> Option<Vec<Unit>> {
     walker.same(mos.g, mos.s).then(Vec::new)
 }
 
-fn ends(
-    walker: &Walker<'_>,
-    unit: Unit,
-) -> Option<(crate::design::NetIx, crate::design::NetIx, crate::design::NetIx)> {
+fn ends(walker: &Walker<'_>, unit: Unit) -> Option<(crate::design::NetIx, crate::design::NetIx, crate::design::NetIx)> {
     let at = walker.ground.reach.get(walker.spot(unit.spot).at).context;
     let (_, Terminals::Mos { d, g, s, .. }) = walker.ground.element(at, unit.device) else { return None };
     let pins = walker.ground.design().template(walker.context(unit.spot).variant).device_pins(unit.device);

@@ -142,8 +142,8 @@ impl<'r> Roles<'r> {
         let (local, context) = (self.local(at), self.reach.contexts.get(at));
         let root = context.root(net);
         let flags = local.flags[root.0 as usize];
-        let elsewhere =
-            local.position(root).is_some() || local.pins.on(root).any(|pin| matches!(pin, crate::graph::Pin::Instance(..)));
+        let elsewhere = local.position(root).is_some()
+            || local.pins.on(root).any(|pin| matches!(pin, crate::graph::Pin::Instance(..)));
         Gates {
             shared: elsewhere || flags & (N_GATES | P_GATES) != 0,
             reference: elsewhere || flags & (DIODE | PASSES) != 0,

@@ -105,7 +105,9 @@ fn is_current_source(walker: &mut Walker<'_>, unit: Unit, source: Net) -> bool {
     }
     let Some(class) = walker.class(unit) else { return false };
     let (Some(g), Some(s)) = (class.pin("g"), class.pin("s")) else { return false };
-    let Some(most) = class.threshold.map(|threshold| threshold.hi).filter(|most| most.is_finite()) else { return false };
+    let Some(most) = class.threshold.map(|threshold| threshold.hi).filter(|most| most.is_finite()) else {
+        return false;
+    };
     let reach = walker.ground.reach;
     let pins = reach.design.template(walker.context(unit.spot).variant).device_pins(unit.device);
     let at = walker.spot(unit.spot).at;

@@ -25,7 +25,7 @@ impl Pair {
 /// **pair**: devices of one polarity with their sources on one net that is no rail, in two groups of different gates and different drains,
 /// and the only other paths from that net lead to a current: a mirror output, a current source, a resistor to a rail, or a
 /// channel whose gate is a bias or a supply. So a multiplexer is no pair. The halves may differ in class: that is a mistake
-/// in a pair, not another circuit. Gates on biases or supplies make no pair.
+/// in a pair, not another circuit. One gate may be steady (a reference); two that both are make no pair.
 ///
 /// The left side is the one whose device was drawn first.
 pub(super) fn pair(walker: &mut Walker<'_>, unit: Unit) -> Option<Pair> {
@@ -59,10 +59,9 @@ pub(super) fn pair(walker: &mut Walker<'_>, unit: Unit) -> Option<Pair> {
     if tail.is_empty() || !apart {
         return None;
     }
-    for gate in [*left_gate, *right_gate] {
-        if matches!(walker.use_of(gate), Use::Supply | Use::Bias) {
-            return None;
-        }
+    let steady = |walker: &mut Walker<'_>, gate: Net| matches!(walker.use_of(gate), Use::Supply | Use::Bias);
+    if steady(walker, *left_gate) && steady(walker, *right_gate) {
+        return None;
     }
     let (left, right) = if left.first() <= right.first() { (left, right) } else { (right, left) };
     Some(Pair { left: left.clone(), right: right.clone(), tail, net: mos.s })

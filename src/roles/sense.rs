@@ -24,6 +24,7 @@ pub(super) fn sense(walker: &mut Walker<'_>, unit: Unit) -> Option<Vec<Unit>> {
             found.push(other);
         }
     }
-    let mirrored = !found.is_empty() && walker.plays(unit, Role::MirrorOutput) || walker.plays(unit, Role::MirrorReference);
+    let mirrored =
+        !found.is_empty() && walker.plays(unit, Role::MirrorOutput) || walker.plays(unit, Role::MirrorReference);
     (!found.is_empty() && !mirrored).then_some(found)
 }

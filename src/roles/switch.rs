@@ -16,7 +16,7 @@ pub(super) fn switch(walker: &mut Walker<'_>, unit: Unit) -> Option<Vec<Unit>> {
     if other.into_iter().any(|role| walker.plays(unit, role)) {
         return None;
     }
-    let follows = walker.is_rail(mos.d) && !walker.is_rail(mos.s) && !walker.leads_out(mos.s);
+    let follows = walker.is_rail(mos.d) && super::follower::is_output(walker, unit, mos.s);
     if !driven && follows && !walker.plays(unit, Role::BackToBack) {
         return None;
     }
