@@ -7,11 +7,11 @@
 //! **Guarantee.** Every element that can take current out of N (or bring it, for the other sense) is counted, or N has no bound.
 //! Currents by a mirror's ratio count [`BY_RATIO`] times.
 
-use super::Currents;
+use super::{Currents, Known};
 use crate::design::{DeviceIx, NetIx};
 use crate::graph::ContextIx;
 use crate::reach::{Cap, Interval, ReachIx, Terminals};
-use crate::roles::{Net, Roles, Touch, Unit, Walker};
+use crate::roles::{Net, Roles, Standing, Surroundings, Touch, Unit, Walker, Walks};
 use hashbrown::HashMap;
 
 /// What the drain's voltage, and what the reference's spread, may add to a current by ratio (common practice, no source).
@@ -20,13 +20,14 @@ const BY_RATIO: f64 = 2.0;
 /// The bounds that currents give, over all contexts.
 pub fn caps(roles: &Roles<'_>) -> Vec<Cap> {
     let reach = roles.reach;
+    let walks: Walks<'_, Known> = Walks::default();
     let mut found: HashMap<(ContextIx, NetIx, NetIx), Interval> = HashMap::new();
     for at in reach.indices() {
         let context = reach.get(at).context;
         let template = reach.design.template(reach.contexts.get(context).variant);
         for device in template.devices() {
             let Terminals::Through { resistor: true, .. } = roles.terminals_of(context, device) else { continue };
-            if let Some((net, rail, range)) = of_resistor(roles, at, device) {
+            if let Some((net, rail, range)) = of_resistor(roles, &walks, at, device) {
                 // One plan serves all that share a structure: the weakest of their bounds holds for each.
                 let known = found.entry((context, net, rail)).or_insert(range);
                 *known = Interval { lo: known.lo.min(range.lo), hi: known.hi.max(range.hi) };
@@ -43,42 +44,51 @@ pub fn caps(roles: &Roles<'_>) -> Vec<Cap> {
 }
 
 /// What a resistor between a rail and another net bounds: the net, the rail, and V(net) − V(rail); in all surroundings.
-fn of_resistor(roles: &Roles<'_>, at: ReachIx, device: DeviceIx) -> Option<(NetIx, NetIx, Interval)> {
-    let mut walker = Walker::new(roles, at);
-    let unit = Walker::start(device);
-    let template = roles.design().template(walker.context(unit.spot).variant);
-    let pins = template.device_pins(device);
-    let (&a, &b) = (pins.first()?, pins.get(1)?);
-    let root = |net: NetIx| Net { spot: unit.spot, net: walker.context(unit.spot).root(net) };
-    let (a, b) = (root(a), root(b));
-    let (net, rail) = match (walker.is_rail(a), walker.is_rail(b)) {
-        (false, true) => (a, b),
-        (true, false) => (b, a),
-        _ => return None,
-    };
-    let mut all: Option<Interval> = None;
+fn of_resistor<'r>(
+    roles: &'r Roles<'r>,
+    walks: &Walks<'r, Known>,
+    at: ReachIx,
+    device: DeviceIx,
+) -> Option<(NetIx, NetIx, Interval)> {
+    let context = roles.reach.contexts.get(roles.reach.get(at).context);
+    let pins = roles.design().template(context.variant).device_pins(device);
+    let (a, b) = (context.root(*pins.first()?), context.root(*pins.get(1)?));
+    let mut standing = Standing { anchor: at, path: Vec::new() };
+    let mut surroundings = Surroundings::default();
+    let mut all: Option<(NetIx, NetIx, Interval)> = None;
     loop {
-        let range = in_surroundings(&mut walker, unit, net, rail);
-        let known = all.get_or_insert(range);
-        *known = Interval { lo: known.lo.min(range.lo), hi: known.hi.max(range.hi) };
-        if *known == Interval::ANY {
-            return Some((net.net, rail.net, Interval::ANY));
+        let walk = walks.from(roles, standing.anchor);
+        let mut walker = walk.walker.borrow_mut();
+        walker.begin();
+        let unit = walker.unit(&standing.path, device);
+        let (a, b) = (Net { spot: unit.spot, net: a }, Net { spot: unit.spot, net: b });
+        let (net, rail) = match (walker.is_rail(a), walker.is_rail(b)) {
+            (false, true) => (a, b),
+            (true, false) => (b, a),
+            _ => return None,
+        };
+        let range = in_surroundings(&mut walker, &mut walk.beside.borrow_mut(), unit, net, rail);
+        let above = walker.must_look_above();
+        if !above {
+            let known = &mut all.get_or_insert((net.net, rail.net, range)).2;
+            *known = Interval { lo: known.lo.min(range.lo), hi: known.hi.max(range.hi) };
         }
-        let before = roles.unseen();
-        if !walker.advance() {
+        drop(walker);
+        match surroundings.next(roles, standing, above) {
+            Some(next) => standing = next,
             // Where not all surroundings were seen, nothing is said.
-            let all = if roles.unseen() > before { Some(Interval::ANY) } else { all };
-            return all.map(|range| (net.net, rail.net, range));
+            None if surroundings.are_cut() => return None,
+            None => return all,
         }
     }
 }
 
-fn in_surroundings(walker: &mut Walker<'_>, unit: Unit, net: Net, rail: Net) -> Interval {
+fn in_surroundings(walker: &mut Walker<'_>, known: &mut Known, unit: Unit, net: Net, rail: Net) -> Interval {
     let modes = walker.ground.reach.modes.len();
     let held = (0..modes)
         .map(|mode| walker.volts(mode, net, rail))
         .fold(Interval::point(0.0), |all, range| Interval { lo: all.lo.min(range.lo), hi: all.hi.max(range.hi) });
-    let mut currents = Currents::new(walker);
+    let mut currents = Currents::new(walker, known);
     let Some(ohms) = currents.resistance(unit) else { return Interval::ANY };
     let mut away = |down: bool| currents.pulling(unit, net, rail, down).map(|amps| amps * ohms);
     // A bound that says no more than the ranges already do is left out.
