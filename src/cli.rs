@@ -11,7 +11,7 @@ use crate::facts::vocabulary::vocabulary;
 use crate::load::Disk;
 use crate::pipeline::{self, Job, Outcome};
 use crate::report::text::Look;
-use crate::report::{json, short, text};
+use crate::report::{Setting, json, sarif, short, text};
 use crate::source::SourceMap;
 use crate::waiver::Date;
 use crate::{init, reference, survey, tracing};
@@ -73,6 +73,9 @@ struct Lint {
     /// How to write the report
     #[arg(long, value_enum, default_value_t = Format::Text)]
     format: Format,
+    /// List accepted findings too, marked as such
+    #[arg(long)]
+    with_waived: bool,
     /// Fail (exit code 1) if a finding is at least this grave
     #[arg(long, value_enum, value_name = "LEVEL", default_value_t = Level::Error)]
     fail_on: Level,
@@ -143,6 +146,8 @@ enum Format {
     Short,
     /// One JSON object
     Json,
+    /// SARIF 2.1.0, for whatever shows results of static analysis
+    Sarif,
 }
 
 #[derive(Clone, Copy, Debug, ValueEnum)]
@@ -211,17 +216,25 @@ fn job(netlists: Vec<PathBuf>, inputs: &Inputs) -> Job {
 fn run_lint(lint: Lint) -> io::Result<u8> {
     let job = Job { only: lint.only, today: lint.today, ..job(lint.netlists, &lint.inputs) };
     let spinner = Spinner::new();
-    let outcome = pipeline::lint(&Disk, &job, &spinner);
+    let mut outcome = pipeline::lint(&Disk, &job, &spinner);
+    outcome.report.with_waived = lint.with_waived;
     spinner.finish();
+    let setting = Setting { base: pipeline::base(&Disk), exit_code: exit_code(&outcome, lint.fail_on.severity()) };
     let mut output = Output::open(lint.inputs.out.as_deref())?;
     let look = output.look();
-    match lint.format {
-        Format::Text => output.write(|out| text::write(&outcome.report, &outcome.sources, look, out))?,
-        Format::Short => output.write(|out| short::write(&outcome.report, &outcome.sources, out))?,
-        Format::Json => output.write(|out| json::write(&outcome.report, &outcome.sources, out))?,
-    }
+    output.write(|out| write(&outcome, lint.format, &setting, look, out))?;
     output.finish()?;
-    Ok(exit_code(&outcome, lint.fail_on.severity()))
+    Ok(setting.exit_code)
+}
+
+fn write(outcome: &Outcome, format: Format, setting: &Setting, look: Look, out: &mut dyn Write) -> io::Result<()> {
+    let (report, sources) = (&outcome.report, &outcome.sources);
+    match format {
+        Format::Text => text::write(report, sources, look, out),
+        Format::Short => short::write(report, sources, out),
+        Format::Json => json::write(report, sources, out),
+        Format::Sarif => sarif::write(report, sources, setting, out),
+    }
 }
 
 fn exit_code(outcome: &Outcome, fail_on: Severity) -> u8 {

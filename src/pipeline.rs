@@ -8,10 +8,10 @@ use crate::engine;
 use crate::facts::vocabulary::{asks_for_voltages, vocabulary};
 use crate::facts::{World, ratings::count_pairs};
 use crate::graph::Contexts;
-use crate::load::{Files, LoadRequest, load};
+use crate::load::{Files, LoadRequest, load, relative};
 use crate::names::{Names, nearest};
 use crate::reach::Reach;
-use crate::report::{Pairs, Report, Summary};
+use crate::report::{Base, Pairs, Report, RuleText, Summary};
 use crate::source::{SourceMap, Span};
 use crate::waiver::{self, Date};
 use std::path::{Path, PathBuf};
@@ -74,10 +74,10 @@ pub fn read(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Result<Loa
     progress.stage("reading decks");
     let mut sources = SourceMap::new();
     let arguments = sources.add("command line", command_line(job));
-    let decks = if job.decks.is_empty() { nearest_deck(files, job) } else { job.decks.clone() };
+    let decks = decks_of(files, job);
     let (deck, mut diagnostics) = deck::load_decks(&Decks(files), &decks, &mut sources, &|subject| vocabulary(subject));
     diagnostics.extend(unknown_words(&sources, arguments, job, &deck));
-    let mut netlists = job.netlists.clone();
+    let mut netlists: Vec<PathBuf> = job.netlists.iter().map(|path| relative(path, files)).collect();
     if netlists.is_empty() {
         netlists = deck.netlists.iter().map(|(path, _)| PathBuf::from(path)).collect();
     }
@@ -219,7 +219,20 @@ fn judge(world: World<'_>, mut seen: Seen, job: &Job) -> (Report, bool) {
         let (rule, instances, most) = (&beyond.rule, beyond.instances, engine::MOST_FINDINGS);
         summary.not_listed.push(format!("{instances} more of {rule}, beyond the first {most} statements"));
     }
-    (Report { diagnostics, summary }, could_not)
+    let rules = rules.iter().map(|rule| rule_text(rule)).collect();
+    (Report { rules, could_not, diagnostics, summary, ..Report::default() }, could_not)
+}
+
+fn rule_text(rule: &Rule) -> RuleText {
+    RuleText {
+        id: rule.id.clone(),
+        about: rule.subject.word(),
+        severity: rule.severity,
+        title: rule.title.clone(),
+        why: rule.why.clone(),
+        cite: rule.cite.clone(),
+        examples: rule.examples.as_ref().map(|examples| (examples.fires.clone(), examples.quiet.clone())),
+    }
 }
 
 /// Counts what a run looked at.
@@ -314,7 +327,7 @@ fn has_error(diagnostics: &[Diagnostic]) -> bool {
 /// The outcome of a run that could not be done.
 pub fn refused(sources: SourceMap, diagnostics: Vec<Diagnostic>) -> Outcome {
     let summary = Summary { findings: Summary::count(&diagnostics), ..Summary::default() };
-    let mut report = Report { diagnostics, summary };
+    let mut report = Report { diagnostics, summary, could_not: true, ..Report::default() };
     report.sort(&sources);
     Outcome { sources, report, could_not: true }
 }
@@ -322,7 +335,7 @@ pub fn refused(sources: SourceMap, diagnostics: Vec<Diagnostic>) -> Outcome {
 /// Reads the decks of a job alone.
 pub fn read_decks(files: &dyn Files, job: &Job) -> (Deck, Outcome) {
     let mut sources = SourceMap::new();
-    let decks = if job.decks.is_empty() { nearest_deck(files, job) } else { job.decks.clone() };
+    let decks = decks_of(files, job);
     let (deck, diagnostics) = deck::load_decks(&Decks(files), &decks, &mut sources, &|subject| vocabulary(subject));
     (deck, checked(sources, diagnostics))
 }
@@ -330,7 +343,9 @@ pub fn read_decks(files: &dyn Files, job: &Job) -> (Deck, Outcome) {
 /// The outcome of a run that only checked something.
 pub fn checked(sources: SourceMap, diagnostics: Vec<Diagnostic>) -> Outcome {
     let could_not = has_error(&diagnostics);
-    Outcome { could_not, ..refused(sources, diagnostics) }
+    let mut outcome = refused(sources, diagnostics);
+    (outcome.could_not, outcome.report.could_not) = (could_not, could_not);
+    outcome
 }
 
 /// The words of the command line that messages can point at.
@@ -364,6 +379,20 @@ fn unknown_words(sources: &SourceMap, file: crate::source::FileId, job: &Job, de
     };
     let unknown_rules = job.only.iter().filter_map(|word| check(word, &rules, "rule"));
     unknown_rules.chain(job.modes.iter().filter_map(|word| check(word, &modes, "mode"))).collect()
+}
+
+/// The decks that a job names, else the nearest.
+fn decks_of(files: &dyn Files, job: &Job) -> Vec<PathBuf> {
+    let decks = if job.decks.is_empty() { nearest_deck(files, job) } else { job.decks.clone() };
+    decks.iter().map(|path| relative(path, files)).collect()
+}
+
+/// Where paths count from in reports that are read elsewhere: the nearest folder upward that holds a `.git`, else the folder one
+/// is in.
+pub fn base(files: &dyn Files) -> Base {
+    let Some(here) = files.here() else { return Base::default() };
+    let root = here.ancestors().find(|folder| files.exists(&folder.join(".git"))).unwrap_or(&here).to_owned();
+    Base::new(root, here)
 }
 
 /// The nearest `drainwise.yaml` upward from the first netlist, or from here.

@@ -1,7 +1,7 @@
 //! Waivers: findings that someone accepted, with a reason and, where wanted, a last day. The late pass marks finished
 //! diagnostics, and says which waivers hide nothing and which are past their day.
 
-use crate::diag::{Diagnostic, Finding, Label, Waived};
+use crate::diag::{Accepted, Diagnostic, Finding, Label, Waived};
 use crate::names::{Glob, nearest};
 use crate::source::Span;
 use std::fmt;
@@ -121,7 +121,13 @@ pub fn apply(diagnostics: &mut [Diagnostic], waivers: &[Waiver], today: Date) ->
 }
 
 fn waived(waiver: &Waiver) -> Waived {
-    Waived { reason: waiver.reason.clone(), by: waiver.by.clone(), until: waiver.until.map(|date| date.to_string()) }
+    Waived {
+        how: Accepted::Deck,
+        place: waiver.place,
+        reason: waiver.reason.clone(),
+        by: waiver.by.clone(),
+        until: waiver.until.map(|date| date.to_string()),
+    }
 }
 
 enum Cover<'w> {

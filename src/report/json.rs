@@ -148,7 +148,7 @@ fn own_label<'d>(diagnostic: &'d Diagnostic, sources: &'d SourceMap) -> Option<L
 }
 
 #[derive(Serialize)]
-struct SummaryShape<'s> {
+pub(super) struct SummaryShape<'s> {
     files: u64,
     cards: u64,
     cards_skipped: u64,
@@ -182,7 +182,7 @@ struct CountsShape {
 }
 
 impl<'s> SummaryShape<'s> {
-    fn of(summary: &'s Summary) -> SummaryShape<'s> {
+    pub(super) fn of(summary: &'s Summary) -> SummaryShape<'s> {
         let counts = summary.findings;
         SummaryShape {
             files: summary.files,

@@ -31,7 +31,7 @@ pub const MOST_OF_A_RULE: usize = 100;
 /// Longer lines are cut around what a label points at.
 const LONGEST_LINE: usize = 160;
 
-/// Writes all findings that no waiver hides, the summary, and the caution.
+/// Writes all findings that are to be listed, the summary, and the caution.
 pub fn write(report: &Report, sources: &SourceMap, look: Look, out: &mut dyn Write) -> io::Result<()> {
     let handler = GraphicalReportHandler::new_themed(theme(look.colour))
         .with_width(look.width.max(40))
@@ -39,7 +39,7 @@ pub fn write(report: &Report, sources: &SourceMap, look: Look, out: &mut dyn Wri
         .with_links(false)
         .without_syntax_highlighting();
     let mut drawn: HashMap<&str, usize> = HashMap::new();
-    for diagnostic in report.diagnostics.iter().filter(|diagnostic| diagnostic.waived.is_none()) {
+    for diagnostic in report.listed() {
         let count = drawn.entry(diagnostic.code.as_str()).or_insert(0);
         *count += 1;
         if *count > MOST_OF_A_RULE {
@@ -150,6 +150,9 @@ impl Shown {
 /// `error finger-count`, with the number of instances and the modes.
 fn code(diagnostic: &Diagnostic) -> String {
     let mut code = format!("{} {}", diagnostic.severity.word(), diagnostic.code);
+    if diagnostic.waived.is_some() {
+        code.push_str(", waived");
+    }
     if let Some(finding) = &diagnostic.finding {
         if finding.verdict == Verdict::Unproven {
             code.push_str(", unproven");
