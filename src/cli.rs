@@ -11,7 +11,7 @@ use crate::facts::vocabulary::vocabulary;
 use crate::load::Disk;
 use crate::pipeline::{self, Job, Outcome};
 use crate::report::text::Look;
-use crate::report::{Setting, json, sarif, short, text};
+use crate::report::{Setting, github, gitlab, json, sarif, short, text};
 use crate::source::SourceMap;
 use crate::waiver::Date;
 use crate::{init, reference, survey, tracing};
@@ -148,6 +148,10 @@ enum Format {
     Json,
     /// SARIF 2.1.0, for whatever shows results of static analysis
     Sarif,
+    /// Annotations of GitHub Actions, as lines of a job's output
+    Github,
+    /// GitLab's code quality report
+    Gitlab,
 }
 
 #[derive(Clone, Copy, Debug, ValueEnum)]
@@ -234,6 +238,8 @@ fn write(outcome: &Outcome, format: Format, setting: &Setting, look: Look, out: 
         Format::Short => short::write(report, sources, out),
         Format::Json => json::write(report, sources, out),
         Format::Sarif => sarif::write(report, sources, setting, out),
+        Format::Github => github::write(report, sources, setting, out),
+        Format::Gitlab => gitlab::write(report, sources, setting, out),
     }
 }
 

@@ -239,3 +239,52 @@ fn sarif_messages_hold_no_arguments_and_no_links() {
     }
     says(&log.to_string(), &["M{{0}}"]);
 }
+
+/// GitHub's page "Workflow commands for GitHub Actions" (from memory): a command is a line that begins with `::`.
+#[test]
+fn github_annotates_ten_of_a_kind_errors_first() {
+    let devices: String = (0..13).map(|n| format!("M{n} COIL CTL VSS VSS ldn60 w=60u l=0.6u nf=3\n")).collect();
+    let open: String = (0..11).map(|n| format!("MO{n} COIL N{n} VSS VSS ldn60 w=60u l=0.6u nf=2\n")).collect();
+    let bench = Bench::new(&format!("* t\n{open}{devices}"));
+    let ran = bench.run("lint blocks/block.sp --only finger-count --only over-rating --format github");
+    assert_eq!(ran.code, 1);
+    let lines: Vec<&str> = ran.out.lines().collect();
+    assert!(lines[..10].iter().all(|line| line.starts_with("::error file=chip/blocks/block.sp,line=")), "{}", ran.out);
+    assert!(lines[10..20].iter().all(|line| line.starts_with("::notice file=")), "{}", ran.out);
+    assert!(lines[20..].iter().all(|line| line.starts_with("drainwise: ")), "{}", ran.out);
+    says(lines[0], &["line=13,endLine=13,col=", ",title=finger-count::M0 has a finger count of 3"]);
+    says(lines[20], &["3 errors, 1 notice more without an annotation"]);
+}
+
+/// A name must not end a property, a message, or a line, and must not make another command.
+#[test]
+fn github_commands_hold_nothing_but_their_own() {
+    let bench = Bench::new("* t\nM1::error::%0A##[x] COIL CTL VSS VSS ldn60 w=60u l=0.6u nf=3\n");
+    fs::rename(bench.path("chip/blocks/block.sp"), bench.path("chip/blocks/a,b%3A.sp")).unwrap();
+    let ran = bench.run("lint blocks/a,b%3A.sp --format github --only finger-count");
+    let [annotation] = ran.out.lines().filter(|line| line.contains("::")).collect::<Vec<_>>()[..] else {
+        panic!("{}", ran.out)
+    };
+    assert!(annotation.starts_with("::error file=chip/blocks/a%2Cb%253A.sp,line=2,endLine=2,col="), "{annotation}");
+    says(annotation, &["::M1::error::%250A##[x] has a finger count of 3"]);
+    assert_eq!(ran.out.matches("##[").count(), annotation.matches("##[").count());
+}
+
+/// The fields that GitLab documents for a code quality report (from memory): all there, none else, fingerprints unique.
+#[test]
+fn gitlab_has_the_documented_fields() {
+    let bench = Bench::new(&format!("{BLOCK}M1 COIL CTL VSS VSS ldn60 w=60u l=0.6u nf=5\nMx COIL CTL VSS VSS ldn61\n"));
+    let ran = bench.run("lint blocks/block.sp --format gitlab");
+    let issues: Value = serde_json::from_str(&ran.out).unwrap();
+    let issues = issues.as_array().unwrap();
+    assert!(issues.len() >= 3, "{issues:#?}");
+    let mut prints = std::collections::BTreeSet::new();
+    for issue in issues {
+        let keys: Vec<&str> = issue.as_object().unwrap().keys().map(String::as_str).collect();
+        assert_eq!(keys, ["check_name", "description", "fingerprint", "location", "severity"]);
+        assert!(["info", "minor", "major", "critical", "blocker"].contains(&issue["severity"].as_str().unwrap()));
+        assert_eq!(issue["location"]["path"], "chip/blocks/block.sp");
+        assert!(issue["location"]["lines"]["begin"].as_u64().unwrap() >= 1);
+        assert!(prints.insert(issue["fingerprint"].as_str().unwrap().to_owned()), "{issues:#?}");
+    }
+}

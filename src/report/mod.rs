@@ -2,6 +2,8 @@
 //! rule. Only the writers and `main` put anything out.
 
 mod base;
+pub mod github;
+pub mod gitlab;
 pub mod json;
 pub mod sarif;
 pub mod short;

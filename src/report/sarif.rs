@@ -223,7 +223,7 @@ fn rule(rule: &RuleText) -> Rule<'_> {
     Rule {
         id: &rule.id,
         short_description: plain(&sentence(&rule.title)),
-        full_description: Some(plain(&format!("{} {}", sentence(&rule.title), rule.why).trim())),
+        full_description: Some(plain(format!("{} {}", sentence(&rule.title), rule.why).trim())),
         help: Some(Text { text: help(rule, false), markdown: Some(help(rule, true)) }),
         default_configuration: Some(Configuration { level: level(rule.severity) }),
         properties: Some(RuleProperties { about: rule.about, cite: rule.cite.as_deref() }),
