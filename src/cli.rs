@@ -11,7 +11,7 @@ use crate::facts::vocabulary::vocabulary;
 use crate::load::Disk;
 use crate::pipeline::{self, Job, Outcome};
 use crate::report::text::Look;
-use crate::report::{Setting, github, gitlab, json, sarif, short, text};
+use crate::report::{Setting, github, gitlab, json, markdown, sarif, short, text};
 use crate::source::SourceMap;
 use crate::waiver::Date;
 use crate::{init, reference, survey, tracing};
@@ -152,6 +152,8 @@ enum Format {
     Github,
     /// GitLab's code quality report
     Gitlab,
+    /// A comment at a change: a table, details folded away
+    Markdown,
 }
 
 #[derive(Clone, Copy, Debug, ValueEnum)]
@@ -240,6 +242,7 @@ fn write(outcome: &Outcome, format: Format, setting: &Setting, look: Look, out: 
         Format::Sarif => sarif::write(report, sources, setting, out),
         Format::Github => github::write(report, sources, setting, out),
         Format::Gitlab => gitlab::write(report, sources, setting, out),
+        Format::Markdown => markdown::write(report, sources, setting, out),
     }
 }
 

@@ -287,7 +287,10 @@ fn top_name(design: &Design<'_>, top: crate::design::VariantIx) -> String {
 fn not_looked_at(world: World<'_>, unjudged: u64) -> Vec<String> {
     let mut lines = Vec::new();
     if unjudged > 0 {
-        lines.push(format!("{unjudged} devices whose model no class names, or whose card does not fit it"));
+        lines.push(match unjudged {
+            1 => "one device whose model no class names, or whose card does not fit it".to_owned(),
+            _ => format!("{unjudged} devices whose model no class names, or whose card does not fit it"),
+        });
     }
     let reached = world
         .design

@@ -31,7 +31,7 @@ fn demo(repository: &TempDir, format: &str) -> String {
 fn the_writers() {
     let repository = repository();
     let version = format!("\"{}\"", env!("CARGO_PKG_VERSION"));
-    for format in ["text", "short", "json", "sarif --with-waived", "github", "gitlab"] {
+    for format in ["text", "short", "json", "sarif --with-waived", "github", "gitlab", "markdown"] {
         insta::with_settings!({
             snapshot_path => "golden",
             prepend_module_to_snapshot => false,

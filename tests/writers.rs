@@ -229,15 +229,13 @@ fn sarif_tells_what_could_not_be_read() {
 /// Braces hold places for arguments (3.11.5), and brackets before brackets make links (3.11.6): in names they mean nothing.
 #[test]
 fn sarif_messages_hold_no_arguments_and_no_links() {
-    let bench = Bench::new(
-        "* t\nM[x](http://a.example) COIL CTL VSS VSS ldn60 w=60u l=0.6u nf=3\nM{0} COIL CTL VSS VSS ldn60 w=60u l=0.6u nf=3\n",
-    );
+    let bench = Bench::new(HOSTILE);
     let log = bench.sarif("blocks/block.sp");
-    for result in results(&log) {
-        let text = result["message"]["text"].as_str().unwrap();
+    let texts: Vec<&str> = results(&log).iter().map(|result| result["message"]["text"].as_str().unwrap()).collect();
+    for text in &texts {
         assert!(!text.replace("\\](", "").contains("](") && !text.replace("{{", "").contains('{'), "{text}");
     }
-    says(&log.to_string(), &["M{{0}}"]);
+    assert!(texts.iter().any(|text| text.contains("`[x\\](http://a.example)|{{0}}<b>.sp`")), "{texts:#?}");
 }
 
 /// GitHub's page "Workflow commands for GitHub Actions" (from memory): a command is a line that begins with `::`.
@@ -286,5 +284,107 @@ fn gitlab_has_the_documented_fields() {
         assert_eq!(issue["location"]["path"], "chip/blocks/block.sp");
         assert!(issue["location"]["lines"]["begin"].as_u64().unwrap() >= 1);
         assert!(prints.insert(issue["fingerprint"].as_str().unwrap().to_owned()), "{issues:#?}");
+    }
+}
+
+/// Names that would be structure, tags, links or calls in Markdown, and one that is longer than a comment.
+const HOSTILE: &str = "\
+* hostile
+M|a|<script>alert</script> COIL CTL VSS VSS ldn60 w=60u l=0.6u nf=3
+M[x](http://a.example) COIL CTL VSS VSS ldn60 w=60u l=0.6u nf=3
+M`b`**c**</details>@all COIL CTL VSS VSS ldn60 w=60u l=0.6u nf=3
+M<!--#12&lt~~d~~www.a.example COIL <img> VSS VSS ldn60 w=60u l=0.6u nf=3
+.include \"[x](http://a.example)|{0}<b>.sp\"
+ME\u{9b}31m\u{202e}e COIL CTL VSS VSS ldn60 w=60u l=0.6u nf=3
+";
+
+/// What a reader makes of a comment (GitHub Flavored Markdown Spec 0.29, tables and raw HTML): cells in each row of the tables, and
+/// every piece of HTML.
+fn read_markdown(text: &str) -> (Vec<usize>, Vec<String>) {
+    use pulldown_cmark::{Event, Options, Parser, Tag, TagEnd};
+    let (mut cells, mut html) = (Vec::new(), Vec::new());
+    for event in Parser::new_ext(text, Options::ENABLE_TABLES | Options::ENABLE_STRIKETHROUGH) {
+        match event {
+            Event::Start(Tag::Link { .. } | Tag::Image { .. } | Tag::Strikethrough | Tag::Emphasis) => {
+                panic!("{event:?} in\n{text}")
+            }
+            Event::Start(Tag::TableRow) => cells.push(0),
+            Event::End(TagEnd::TableCell) => {
+                if let Some(row) = cells.last_mut() {
+                    *row += 1;
+                }
+            }
+            Event::Html(piece) | Event::InlineHtml(piece) => html.push(piece.to_string()),
+            _ => {}
+        }
+    }
+    (cells, html)
+}
+
+#[test]
+fn markdown_keeps_names_as_text() {
+    let bench = Bench::new(HOSTILE);
+    let ran = bench.run("lint blocks/block.sp --format markdown");
+    assert_eq!(ran.code, 1);
+    let (cells, html) = read_markdown(&ran.out);
+    assert!(cells.len() >= 5 && cells.iter().all(|&row| row == 4), "{cells:?}\n{}", ran.out);
+    for piece in html {
+        let piece = piece.replace("<code>", "").replace("</code>", "").replace("<!-- -->", "");
+        let piece = piece.replace("<details><summary>", "").replace("</summary>", "").replace("</details>", "");
+        assert!(!piece.contains('<'), "{piece}\n{}", ran.out);
+    }
+    assert!(!ran.out.contains(['\u{9b}', '\u{202e}']));
+    says(&ran.out, &["M&#124;a&#124;&#60;script&#62;alert&#60;/script&#62; has a finger count of 3"]);
+}
+
+/// The bound that the reference page states; a comment on GitHub holds 65 536 characters (from memory).
+#[test]
+fn markdown_is_bounded_and_counts_what_it_leaves_out() {
+    let long = "@#".repeat(3000);
+    let devices: String = (0..500).map(|n| format!("M{n}{long} COIL CTL VSS VSS ldn60 w=60u l=0.6u nf=3\n")).collect();
+    let odd: String = (0..300).map(|n| format!("MX{n} COIL CTL VSS VSS ldn60 w=60u l=0.6u nf=3\n")).collect();
+    for block in [format!("* t\n{devices}"), format!("* t\n{odd}")] {
+        let bench = Bench::new(&block);
+        let waivers = format!("waivers: [{{rule: finger-count, at: \"M*1*\", reason: \"{long}\"}}]\n");
+        bench.put("chip/drainwise.yaml", &format!("{DECK}{waivers}"));
+        let ran = bench.run("lint blocks/block.sp --format markdown");
+        assert!(ran.out.len() <= 60_000, "{}", ran.out.len());
+        let count = |what: &str| {
+            let line = ran.out.lines().find(|line| line.starts_with("… and ") && line.contains(what)).unwrap();
+            line.split(' ').nth(2).unwrap().parse::<usize>().unwrap()
+        };
+        let shown = ran.out.matches("<details><summary>").count() - 1;
+        let title = ran.out.lines().next().unwrap().split(' ');
+        let open: usize = title.filter_map(|word| word.parse::<usize>().ok()).sum();
+        assert_eq!(shown + count("without details"), open);
+        assert_eq!(
+            ran.out.lines().filter(|line| line.starts_with("| **error** | <")).count() + count("do not fit"),
+            open
+        );
+        says(&ran.out, &["qualified review", "<details><summary>1"]);
+    }
+}
+
+#[test]
+fn hostile_names_are_text_in_every_format() {
+    let bench = Bench::new(HOSTILE);
+    for format in ["text", "short", "json", "sarif", "github", "gitlab", "markdown"] {
+        let ran = bench.run(&format!("lint blocks/block.sp --format {format}"));
+        assert_eq!(ran.code, 1, "{format}");
+        let data = ["json", "sarif", "gitlab"].contains(&format);
+        assert!(data || !ran.out.contains(['\u{9b}', '\u{202e}']), "{format} commands a terminal");
+        match format {
+            "json" | "sarif" | "gitlab" => drop(serde_json::from_str::<Value>(&ran.out).unwrap()),
+            "short" | "github" => {
+                let odd = ran.out.lines().find(|line| {
+                    !["blocks/block.sp:", "drainwise.yaml:", "::", "drainwise: "]
+                        .iter()
+                        .any(|start| line.starts_with(start))
+                });
+                assert_eq!(odd, None, "{format}: one line for one thing");
+            }
+            _ => {}
+        }
+        assert_eq!(ran.out, bench.run(&format!("lint blocks/block.sp --format {format}")).out, "{format}");
     }
 }

@@ -25,7 +25,7 @@ impl Base {
     /// A shown path, counted from the root, with forward slashes; what lies beside the root begins with `..`. It is never
     /// absolute.
     pub fn path(&self, shown: &str) -> String {
-        if shown.starts_with(INSIDE) {
+        if shown.starts_with(INSIDE) || shown == ARGUMENTS {
             return shown.to_owned();
         }
         let path = flat(&self.here.join(shown));

@@ -2,9 +2,11 @@
 //! rule. Only the writers and `main` put anything out.
 
 mod base;
+mod cut;
 pub mod github;
 pub mod gitlab;
 pub mod json;
+pub mod markdown;
 pub mod sarif;
 pub mod short;
 pub mod summary;
