@@ -19,7 +19,7 @@ use clap::{Args, Parser, Subcommand, ValueEnum};
 use output::Output;
 use progress::Spinner;
 use std::io::{self, Write};
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 
 /// Checks that the high-voltage transistors of a SPICE netlist are used as their process allows.
 #[derive(Debug, Parser)]
@@ -73,6 +73,12 @@ struct Lint {
     /// How to write the report
     #[arg(long, value_enum, default_value_t = Format::Text)]
     format: Format,
+    /// Let the findings pass that this file knows, and name those that are no longer there
+    #[arg(long, value_name = "FILE")]
+    baseline: Option<PathBuf>,
+    /// Write a file that knows all findings of this run, and let them pass
+    #[arg(long, value_name = "FILE")]
+    write_baseline: Option<PathBuf>,
     /// List accepted findings too, marked as such
     #[arg(long)]
     with_waived: bool,
@@ -220,17 +226,36 @@ fn job(netlists: Vec<PathBuf>, inputs: &Inputs) -> Job {
 }
 
 fn run_lint(lint: Lint) -> io::Result<u8> {
-    let job = Job { only: lint.only, today: lint.today, ..job(lint.netlists, &lint.inputs) };
+    let job = Job { only: lint.only, today: lint.today, baseline: lint.baseline, ..job(lint.netlists, &lint.inputs) };
     let spinner = Spinner::new();
     let mut outcome = pipeline::lint(&Disk, &job, &spinner);
     outcome.report.with_waived = lint.with_waived;
     spinner.finish();
+    if let Some(path) = &lint.write_baseline {
+        write_baseline(&mut outcome, path)?;
+    }
     let setting = Setting { base: pipeline::base(&Disk), exit_code: exit_code(&outcome, lint.fail_on.severity()) };
     let mut output = Output::open(lint.inputs.out.as_deref())?;
     let look = output.look();
     output.write(|out| write(&outcome, lint.format, &setting, look, out))?;
     output.finish()?;
     Ok(setting.exit_code)
+}
+
+/// A baseline that cannot be written is said on standard error; the report follows all the same.
+fn write_baseline(outcome: &mut Outcome, path: &Path) -> io::Result<()> {
+    match pipeline::accept_all(&Disk, outcome, path) {
+        Ok(text) => {
+            let mut output = Output::open(Some(path))?;
+            output.write(|out| out.write_all(text.as_bytes()))?;
+            output.finish()
+        }
+        Err(why) => {
+            (outcome.could_not, outcome.report.could_not) = (true, true);
+            let _ = writeln!(io::stderr(), "drainwise: {} is not written: {why}", path.display());
+            Ok(())
+        }
+    }
 }
 
 fn write(outcome: &Outcome, format: Format, setting: &Setting, look: Look, out: &mut dyn Write) -> io::Result<()> {

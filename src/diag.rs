@@ -126,6 +126,16 @@ pub struct Waived {
     pub until: Option<String>,
 }
 
+impl Waived {
+    /// What such a finding is called in reports.
+    pub fn word(&self) -> &'static str {
+        match self.how {
+            Accepted::Deck | Accepted::Comment => "waived",
+            Accepted::Baseline => "known",
+        }
+    }
+}
+
 /// One message with its place.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Diagnostic {

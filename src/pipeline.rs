@@ -13,6 +13,7 @@ use crate::names::{Names, nearest};
 use crate::reach::Reach;
 use crate::report::{Base, Pairs, Report, RuleText, Summary};
 use crate::source::{SourceMap, Span};
+use crate::waiver::baseline::{self, Known};
 use crate::waiver::{self, Date};
 use std::path::{Path, PathBuf};
 
@@ -31,6 +32,8 @@ pub struct Job {
     pub modes: Vec<String>,
     /// Voltages are wanted whatever the rules ask for.
     pub all_voltages: bool,
+    /// A list of known findings, which do not fail.
+    pub baseline: Option<PathBuf>,
     /// The day against which waivers are held; none: today.
     pub today: Option<Date>,
 }
@@ -65,6 +68,7 @@ pub struct Loaded {
     cards_skipped: u64,
     files: u64,
     top: Option<(String, Span)>,
+    known: Vec<Known>,
     shown_netlists: Vec<String>,
     shown_decks: Vec<String>,
 }
@@ -77,6 +81,10 @@ pub fn read(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Result<Loa
     let decks = decks_of(files, job);
     let (deck, mut diagnostics) = deck::load_decks(&Decks(files), &decks, &mut sources, &|subject| vocabulary(subject));
     diagnostics.extend(unknown_words(&sources, arguments, job, &deck));
+    let known = read_baseline(files, job, &mut sources).unwrap_or_else(|fault| {
+        diagnostics.push(*fault);
+        Vec::new()
+    });
     let mut netlists: Vec<PathBuf> = job.netlists.iter().map(|path| relative(path, files)).collect();
     if netlists.is_empty() {
         netlists = deck.netlists.iter().map(|(path, _)| PathBuf::from(path)).collect();
@@ -110,6 +118,7 @@ pub fn read(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Result<Loa
         diagnostics,
         names,
         top,
+        known,
         shown_netlists: netlists.iter().map(|path| path.display().to_string()).collect(),
         shown_decks: decks.iter().map(|path| path.display().to_string()).collect(),
     })
@@ -122,8 +131,19 @@ pub fn with_world<R>(
     progress: &dyn Progress,
     work: impl FnOnce(World<'_>, Seen) -> R,
 ) -> (SourceMap, R) {
-    let Loaded { sources, deck, mut diagnostics, names, tree, cards_skipped, files, top, shown_netlists, shown_decks } =
-        loaded;
+    let Loaded {
+        sources,
+        deck,
+        mut diagnostics,
+        names,
+        tree,
+        cards_skipped,
+        files,
+        top,
+        shown_netlists,
+        shown_decks,
+        known: _,
+    } = loaded;
     progress.stage("elaborating");
     let cards = tree.card_count;
     let cells = tree.cells.len() as u64 - 1;
@@ -170,16 +190,67 @@ pub struct Seen {
 
 /// The main job.
 pub fn lint(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Outcome {
-    let loaded = match read(files, job, progress) {
+    let mut loaded = match read(files, job, progress) {
         Ok(loaded) => loaded,
         Err(outcome) => return *outcome,
     };
+    let known = std::mem::take(&mut loaded.known);
     let (sources, (mut report, could_not)) = with_world(loaded, job, progress, |world, seen| {
         progress.stage("asking the rules");
         judge(world, seen, job)
     });
     report.sort(&sources);
-    Outcome { sources, report, could_not }
+    let mut outcome = Outcome { sources, report, could_not };
+    let partial = could_not || job.top.is_some() || !job.modes.is_empty();
+    let asked = |known: &Known| !partial && (job.only.is_empty() || job.only.contains(&known.rule));
+    forgive(&mut outcome, &known, asked);
+    outcome
+}
+
+/// Hides the findings that are known; says of the other known ones that are `asked` for that they are no longer there.
+fn forgive(outcome: &mut Outcome, known: &[Known], asked: impl Fn(&Known) -> bool) {
+    if known.is_empty() {
+        return;
+    }
+    let gone = baseline::apply(&mut outcome.report.diagnostics, known);
+    outcome.report.diagnostics.extend(gone.into_iter().filter(|known| asked(known)).map(baseline::gone));
+    outcome.report.sort(&outcome.sources);
+    outcome.report.summary.count(&outcome.report.diagnostics);
+}
+
+/// The text of a baseline that knows all findings of a run, which then no longer fail; `path` is where it will stand. An error says
+/// why there can be none.
+pub fn accept_all(files: &dyn Files, outcome: &mut Outcome, path: &Path) -> Result<String, String> {
+    if outcome.could_not {
+        return Err("not everything could be read, so findings would be missing from it".to_owned());
+    }
+    if outcome.report.summary.unlisted.worst().is_some() {
+        let most = engine::MOST_FINDINGS;
+        return Err(format!("a rule has more than {most} findings, and those beyond would be missing from it"));
+    }
+    let text = baseline::text(&outcome.report.diagnostics);
+    let file = outcome.sources.add(relative(path, files).display().to_string(), text.clone());
+    let known = baseline::read(&outcome.sources, file).map_err(|fault| fault.message)?;
+    forgive(outcome, &known, |_| false);
+    Ok(text)
+}
+
+fn read_baseline(files: &dyn Files, job: &Job, sources: &mut SourceMap) -> Result<Vec<Known>, Box<Diagnostic>> {
+    let Some(path) = &job.baseline else { return Ok(Vec::new()) };
+    let path = relative(path, files);
+    let shown = path.display().to_string();
+    let text = match files.read(&path).map(String::from_utf8) {
+        Ok(Ok(text)) => text,
+        Ok(Err(_)) => String::new(),
+        Err(_) => {
+            let file = sources.add(shown.clone(), "");
+            let fault =
+                Diagnostic::error("baseline", Span::new(file, 0, 0), format!("baseline `{shown}` cannot be read"));
+            return Err(Box::new(fault.with_help(format!("write one with `--write-baseline {shown}`"))));
+        }
+    };
+    let file = sources.add(shown, text);
+    baseline::read(sources, file)
 }
 
 /// The rules that a job asks.
@@ -213,12 +284,12 @@ fn judge(world: World<'_>, mut seen: Seen, job: &Job) -> (Report, bool) {
         .collect();
     let complaints = waiver::apply(&mut diagnostics, &waivers, job.today.unwrap_or_else(waiver::today));
     diagnostics.extend(engine::waivers(complaints, &rules));
-    summary.findings = Summary::count(&diagnostics);
     for beyond in judged.beyond.iter().filter(|beyond| beyond.severity != Severity::Silent) {
-        summary.findings.add(beyond.severity, beyond.instances);
+        summary.unlisted.add(beyond.severity, beyond.instances);
         let (rule, instances, most) = (&beyond.rule, beyond.instances, engine::MOST_FINDINGS);
         summary.not_listed.push(format!("{instances} more of {rule}, beyond the first {most} statements"));
     }
+    summary.count(&diagnostics);
     let rules = rules.iter().map(|rule| rule_text(rule)).collect();
     (Report { rules, could_not, diagnostics, summary, ..Report::default() }, could_not)
 }
@@ -329,7 +400,8 @@ fn has_error(diagnostics: &[Diagnostic]) -> bool {
 
 /// The outcome of a run that could not be done.
 pub fn refused(sources: SourceMap, diagnostics: Vec<Diagnostic>) -> Outcome {
-    let summary = Summary { findings: Summary::count(&diagnostics), ..Summary::default() };
+    let mut summary = Summary::default();
+    summary.count(&diagnostics);
     let mut report = Report { diagnostics, summary, could_not: true, ..Report::default() };
     report.sort(&sources);
     Outcome { sources, report, could_not: true }

@@ -1,6 +1,8 @@
 //! Waivers: findings that someone accepted, with a reason and, where wanted, a last day. The late pass marks finished
 //! diagnostics, and says which waivers hide nothing and which are past their day.
 
+pub mod baseline;
+
 use crate::diag::{Accepted, Diagnostic, Finding, Label, Waived};
 use crate::names::{Glob, nearest};
 use crate::source::Span;

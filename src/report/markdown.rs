@@ -48,9 +48,13 @@ fn head(report: &Report) -> String {
         .map(|(count, what)| plural(count, what))
         .collect();
     let found = if parts.is_empty() { "no findings".to_owned() } else { parts.join(", ") };
+    let known = match counts.known {
+        0 => String::new(),
+        known => format!("{known} more {} known and not listed.\n\n", if known == 1 { "is" } else { "are" }),
+    };
     let failed =
         if report.could_not { "**Some of it could not be read**, so this is not the whole of it.\n\n" } else { "" };
-    format!("## Drainwise: {found}\n\n{failed}")
+    format!("## Drainwise: {found}\n\n{failed}{known}")
 }
 
 /// As many blocks as fit, and how many are left.

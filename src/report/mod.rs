@@ -94,17 +94,15 @@ impl Report {
         self.diagnostics.iter().filter(|diagnostic| self.with_waived || diagnostic.waived.is_none())
     }
 
-    /// The gravest severity among diagnostics that no waiver hides.
+    /// The gravest severity among findings that nobody accepted, whether they are listed or only counted.
     pub fn worst(&self) -> Option<Severity> {
-        self.diagnostics
-            .iter()
-            .filter(|diagnostic| diagnostic.waived.is_none())
-            .map(|diagnostic| diagnostic.severity)
-            .max()
+        let open = self.diagnostics.iter().filter(|diagnostic| diagnostic.waived.is_none());
+        open.map(|diagnostic| diagnostic.severity).max().max(self.summary.unlisted.worst())
     }
 }
 
-/// What a diagnostic is about, without lines and numbers: it stays when the text above it changes.
+/// What a diagnostic is about, without lines and numbers: it stays when the text above it changes. Where it is about no device, its
+/// words tell it from others of its rule.
 fn fingerprint(diagnostic: &Diagnostic) -> u64 {
     let mut print = hash(0xcbf2_9ce4_8422_2325, diagnostic.code.as_bytes());
     match &diagnostic.finding {
@@ -112,6 +110,10 @@ fn fingerprint(diagnostic: &Diagnostic) -> u64 {
             let parts = [finding.verdict.word(), &finding.cell, &finding.device];
             for part in parts.into_iter().chain(finding.pairs.iter().map(String::as_str)) {
                 print = hash(hash(print, &[0]), part.to_ascii_lowercase().as_bytes());
+            }
+            if finding.device.is_empty() {
+                let words: String = diagnostic.message.chars().filter(|now| !now.is_ascii_digit()).collect();
+                print = hash(hash(print, &[0]), words.as_bytes());
             }
             print
         }

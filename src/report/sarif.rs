@@ -149,7 +149,7 @@ impl<'r> Sight<'r> {
         let until = waived.until.as_ref().map_or(String::new(), |until| format!(", until {until}"));
         Suppression {
             kind: if waived.how == Accepted::Comment { "inSource" } else { "external" },
-            status: "accepted",
+            status: if waived.how == Accepted::Baseline { "underReview" } else { "accepted" },
             justification: format!("{}{by}{until}", waived.reason),
             location: self.location(waived.place, ""),
         }

@@ -2,6 +2,7 @@
 
 use super::visible::visible;
 use super::{CAUTION, Report};
+use crate::diag::Waived;
 use crate::source::SourceMap;
 use std::io::{self, Write};
 
@@ -15,7 +16,7 @@ pub fn write(report: &Report, sources: &SourceMap, out: &mut dyn Write) -> io::R
             0 | 1 => String::new(),
             count => format!(" ({count} instances)"),
         };
-        let severity = if diagnostic.waived.is_some() { "waived" } else { diagnostic.severity.word() };
+        let severity = diagnostic.waived.as_ref().map_or(diagnostic.severity.word(), Waived::word);
         let message = diagnostic.message.replace('\n', " ");
         writeln!(
             out,

@@ -148,8 +148,8 @@ impl Shown {
 /// `error finger-count`, with the number of instances and the modes.
 fn code(diagnostic: &Diagnostic) -> String {
     let mut code = format!("{} {}", diagnostic.severity.word(), diagnostic.code);
-    if diagnostic.waived.is_some() {
-        code.push_str(", waived");
+    if let Some(waived) = &diagnostic.waived {
+        code.push_str(&format!(", {}", waived.word()));
     }
     if let Some(finding) = &diagnostic.finding {
         if finding.verdict == Verdict::Unproven {
