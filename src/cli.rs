@@ -5,7 +5,7 @@
 mod output;
 mod progress;
 
-use crate::deck::{load_decks, read_date};
+use crate::deck::load_decks;
 use crate::diag::Severity;
 use crate::facts::vocabulary::vocabulary;
 use crate::load::Disk;
@@ -13,7 +13,7 @@ use crate::pipeline::{self, Job, Outcome};
 use crate::report::text::Look;
 use crate::report::{Setting, github, gitlab, json, markdown, sarif, short, text};
 use crate::source::SourceMap;
-use crate::waiver::Date;
+use crate::waiver::{Date, read_date};
 use crate::{init, reference, survey, tracing};
 use clap::{Args, Parser, Subcommand, ValueEnum};
 use output::Output;

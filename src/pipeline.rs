@@ -1,5 +1,10 @@
 //! The whole program as one readable function: load, elaborate, find contexts, compute reach, ask the rules, word the findings.
 
+mod comments;
+mod known;
+
+pub use known::accept_all;
+
 use crate::deck::{self, DeckFiles};
 use crate::declared::{Deck, Rule};
 use crate::design::{Design, elaborate};
@@ -13,8 +18,8 @@ use crate::names::{Names, nearest};
 use crate::reach::Reach;
 use crate::report::{Base, Pairs, Report, RuleText, Summary};
 use crate::source::{SourceMap, Span};
-use crate::waiver::baseline::{self, Known};
-use crate::waiver::{self, Date};
+use crate::waiver::baseline::Known;
+use crate::waiver::{self, Date, Waiver};
 use std::path::{Path, PathBuf};
 
 /// What a run is asked to do.
@@ -69,6 +74,9 @@ pub struct Loaded {
     files: u64,
     top: Option<(String, Span)>,
     known: Vec<Known>,
+    /// The number of the first text that is a netlist.
+    first_netlist: usize,
+    in_comments: Vec<Waiver>,
     shown_netlists: Vec<String>,
     shown_decks: Vec<String>,
 }
@@ -81,7 +89,7 @@ pub fn read(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Result<Loa
     let decks = decks_of(files, job);
     let (deck, mut diagnostics) = deck::load_decks(&Decks(files), &decks, &mut sources, &|subject| vocabulary(subject));
     diagnostics.extend(unknown_words(&sources, arguments, job, &deck));
-    let known = read_baseline(files, job, &mut sources).unwrap_or_else(|fault| {
+    let known = known::read(files, job, &mut sources).unwrap_or_else(|fault| {
         diagnostics.push(*fault);
         Vec::new()
     });
@@ -103,6 +111,7 @@ pub fn read(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Result<Loa
     };
     let roots = decks.iter().filter_map(folder).chain(deck.include_roots.iter().map(PathBuf::from)).collect();
     let request = LoadRequest { netlists: netlists.clone(), roots, skips: deck.include_skips.clone() };
+    let first_netlist = sources.files().count();
     let loaded = load(files, &request, &mut sources, &mut names);
     diagnostics.extend(loaded.diagnostics.iter().cloned());
     let top = match &job.top {
@@ -119,6 +128,8 @@ pub fn read(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Result<Loa
         names,
         top,
         known,
+        first_netlist,
+        in_comments: Vec::new(),
         shown_netlists: netlists.iter().map(|path| path.display().to_string()).collect(),
         shown_decks: decks.iter().map(|path| path.display().to_string()).collect(),
     })
@@ -143,6 +154,8 @@ pub fn with_world<R>(
         shown_netlists,
         shown_decks,
         known: _,
+        first_netlist: _,
+        in_comments,
     } = loaded;
     progress.stage("elaborating");
     let cards = tree.card_count;
@@ -166,6 +179,7 @@ pub fn with_world<R>(
         cards_skipped: cards_skipped + design.cards_skipped,
         cells,
         files,
+        in_comments,
         shown_netlists,
         shown_decks,
     };
@@ -184,6 +198,7 @@ pub struct Seen {
     cards_skipped: u64,
     cells: u64,
     files: u64,
+    in_comments: Vec<Waiver>,
     shown_netlists: Vec<String>,
     shown_decks: Vec<String>,
 }
@@ -195,6 +210,10 @@ pub fn lint(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Outcome {
         Err(outcome) => return *outcome,
     };
     let known = std::mem::take(&mut loaded.known);
+    let Loaded { sources, first_netlist, tree, names, deck, .. } = &loaded;
+    let (in_comments, faults) = comments::waivers(sources, *first_netlist, tree, names, deck);
+    loaded.in_comments = in_comments;
+    loaded.diagnostics.extend(faults);
     let (sources, (mut report, could_not)) = with_world(loaded, job, progress, |world, seen| {
         progress.stage("asking the rules");
         judge(world, seen, job)
@@ -203,54 +222,8 @@ pub fn lint(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Outcome {
     let mut outcome = Outcome { sources, report, could_not };
     let partial = could_not || job.top.is_some() || !job.modes.is_empty();
     let asked = |known: &Known| !partial && (job.only.is_empty() || job.only.contains(&known.rule));
-    forgive(&mut outcome, &known, asked);
+    known::forgive(&mut outcome, &known, asked);
     outcome
-}
-
-/// Hides the findings that are known; says of the other known ones that are `asked` for that they are no longer there.
-fn forgive(outcome: &mut Outcome, known: &[Known], asked: impl Fn(&Known) -> bool) {
-    if known.is_empty() {
-        return;
-    }
-    let gone = baseline::apply(&mut outcome.report.diagnostics, known);
-    outcome.report.diagnostics.extend(gone.into_iter().filter(|known| asked(known)).map(baseline::gone));
-    outcome.report.sort(&outcome.sources);
-    outcome.report.summary.count(&outcome.report.diagnostics);
-}
-
-/// The text of a baseline that knows all findings of a run, which then no longer fail; `path` is where it will stand. An error says
-/// why there can be none.
-pub fn accept_all(files: &dyn Files, outcome: &mut Outcome, path: &Path) -> Result<String, String> {
-    if outcome.could_not {
-        return Err("not everything could be read, so findings would be missing from it".to_owned());
-    }
-    if outcome.report.summary.unlisted.worst().is_some() {
-        let most = engine::MOST_FINDINGS;
-        return Err(format!("a rule has more than {most} findings, and those beyond would be missing from it"));
-    }
-    let text = baseline::text(&outcome.report.diagnostics);
-    let file = outcome.sources.add(relative(path, files).display().to_string(), text.clone());
-    let known = baseline::read(&outcome.sources, file).map_err(|fault| fault.message)?;
-    forgive(outcome, &known, |_| false);
-    Ok(text)
-}
-
-fn read_baseline(files: &dyn Files, job: &Job, sources: &mut SourceMap) -> Result<Vec<Known>, Box<Diagnostic>> {
-    let Some(path) = &job.baseline else { return Ok(Vec::new()) };
-    let path = relative(path, files);
-    let shown = path.display().to_string();
-    let text = match files.read(&path).map(String::from_utf8) {
-        Ok(Ok(text)) => text,
-        Ok(Err(_)) => String::new(),
-        Err(_) => {
-            let file = sources.add(shown.clone(), "");
-            let fault =
-                Diagnostic::error("baseline", Span::new(file, 0, 0), format!("baseline `{shown}` cannot be read"));
-            return Err(Box::new(fault.with_help(format!("write one with `--write-baseline {shown}`"))));
-        }
-    };
-    let file = sources.add(shown, text);
-    baseline::read(sources, file)
 }
 
 /// The rules that a job asks.
@@ -275,10 +248,11 @@ fn judge(world: World<'_>, mut seen: Seen, job: &Job) -> (Report, bool) {
     diagnostics.extend(engine::hygiene(world.design, world.contexts, world.deck, &rules, summary.devices));
     diagnostics.extend(engine::rails_unmatched(world.design, world.contexts, world.deck, &rules));
     diagnostics.retain(|diagnostic| diagnostic.severity != Severity::Silent);
-    let waivers: Vec<waiver::Waiver> = world
+    let waivers: Vec<Waiver> = world
         .deck
         .waivers
         .iter()
+        .chain(&seen.in_comments)
         .filter(|waiver| job.only.is_empty() || job.only.contains(&waiver.rule))
         .cloned()
         .collect();

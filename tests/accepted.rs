@@ -60,7 +60,10 @@ impl Bench {
 
     fn run(&self, more: &str) -> Ran {
         let mut command = Command::new(env!("CARGO_BIN_EXE_drainwise"));
-        command.current_dir(self.folder.path()).args(["lint", "block.sp", "--today", "2027-01-01"]);
+        command.current_dir(self.folder.path()).args(["lint", "block.sp"]);
+        if !more.contains("--today") {
+            command.args(["--today", "2027-01-01"]);
+        }
         let output = command.args(more.split_whitespace()).output().unwrap();
         let text = |bytes| String::from_utf8(bytes).unwrap();
         Ran { code: output.status.code().unwrap(), out: text(output.stdout), err: text(output.stderr) }
@@ -185,4 +188,120 @@ fn no_baseline_is_written_of_what_could_not_be_read() {
     assert_eq!(ran.code, 2);
     says(&ran.err, &["known.json is not written", "could be read"]);
     assert!(!bench.folder.path().join("known.json").exists());
+}
+
+/// BLOCK's findings stand on its lines 3 and 7; a comment above moves them down by one.
+#[test]
+fn a_comment_at_the_card_accepts_what_is_found_there() {
+    let words = "drainwise: accept finger-count until 2027-03-01 because trimmed at test";
+    let (above, behind) = (format!("* {words}\nM1 D"), format!("nf=3 $ {words}"));
+    for (from, to, line) in
+        [("M1 D", above.as_str(), 4), ("nf=3", behind.as_str(), 3), ("nf=3", &format!("\n+ nf=3 ; {words}"), 4)]
+    {
+        let bench = Bench::new(&BLOCK.replace(from, to));
+        let (code, found) = bench.found("--only finger-count");
+        assert_eq!((code, found), (0, expect(&[("finger-count", line, "waived")])), "{to}");
+        let (code, found) = bench.found("--only finger-count --today 2027-03-02 --only waiver-expired");
+        assert_eq!(code, 1, "{found:?}");
+        assert!(found.iter().any(|(rule, ..)| rule == "waiver-expired"), "{found:?}");
+    }
+}
+
+#[test]
+fn a_comment_accepts_no_other_card_and_no_other_rule() {
+    let bench = Bench::new(
+        &(BLOCK.replace("M1 D", "* drainwise: accept finger-count because x\nM1 D")
+            + "M3 COIL CTL VSS COIL ldn60 w=20u l=0.6u nf=3\n"),
+    );
+    let wanted = [
+        ("finger-count", 4, "waived"),
+        ("body-off-source", 8, "open"),
+        ("body-off-source", 9, "open"),
+        ("finger-count", 9, "open"),
+    ];
+    assert_eq!(bench.found(""), (1, expect(&wanted)));
+}
+
+/// Two cells of one name under a condition, or one inside another: a comment means its own card.
+#[test]
+fn a_comment_means_its_own_card_where_names_are_equal() {
+    let cell = |comment: &str| format!(".subckt switch D G S\n{comment}M1 D G S S ldn60 w=30u l=0.6u nf=3\n.ends\n");
+    let block = format!(
+        "* t\n{}.subckt outer D G S\n{}X1 D G S switch\n.ends\nX1 COIL CTL VSS switch\nX2 COIL CTL VSS outer\n",
+        cell("* drainwise: accept finger-count because x\n"),
+        cell("")
+    );
+    let bench = Bench::new(&block);
+    assert_eq!(bench.found(""), (1, expect(&[("finger-count", 4, "waived"), ("finger-count", 8, "open")])));
+}
+
+#[test]
+fn a_comment_of_a_pair_leaves_the_others() {
+    let block = "* t\n* drainwise: accept over-rating of vgs because x\nM1 COIL COIL VSS VSS ldn60 w=20u l=0.6u nf=2\nR1 CTL VSS 1k\n";
+    let bench = Bench::new(block);
+    bench.put("drainwise.yaml", &DECK.replace("vds: -0.5V..60V", "vds: -0.5V..30V"));
+    assert_eq!(bench.found(""), (1, expect(&[("over-rating", 3, "open")])));
+    says(&bench.run("").out, &["does not cover vds"]);
+    bench.put("block.sp", &block.replace("* d", "* drainwise: accept over-rating of vds because y\n* d"));
+    assert_eq!(bench.found(""), (0, expect(&[("over-rating", 4, "waived")])));
+}
+
+#[test]
+fn a_comment_that_cannot_be_followed_is_an_error_at_its_place() {
+    for (words, place, says_so, help) in [
+        ("accept finger-count", "3:13", "this waiver gives no reason", "because trimmed at test"),
+        ("accept finger-count because", "3:13", "this waiver gives no reason", "behind `because`"),
+        ("accept finger-cuont because x", "3:21", "there is no rule `finger-cuont`", "did you mean `finger-count`?"),
+        ("acept finger-count because x", "3:14", "`acept` is not known", "did you mean `accept`?"),
+        ("accept finger-count until 2027-02-30 because x", "3:40", "no day of the calendar", "2027-03-01"),
+    ] {
+        let bench = Bench::new(&BLOCK.replace("M1 D", &format!("* drainwise: {words}\nM1 D")));
+        let ran = bench.run("--format short");
+        assert_eq!(ran.code, 2, "{words}: {}", ran.out);
+        says(&ran.out, &[&format!("block.sp:{place}: error: "), says_so, "[waiver]", "[finger-count]"]);
+        says(&bench.run("").out.replace('\n', " ").replace("  ", " "), &[help]);
+    }
+    let bench = Bench::new(&BLOCK.replace(".ends", "* drainwise: accept finger-count because x\n.ends"));
+    let ran = bench.run("--format short");
+    assert_eq!(ran.code, 2, "{}", ran.out);
+    says(&ran.out, &["block.sp:4:3: error: this waiver stands at no card"]);
+}
+
+/// What a stale waiver may have meant: the same rule near by, another pair, another rule at its place.
+#[test]
+fn a_stale_waiver_names_its_nearest_match() {
+    let over = "M4 COIL COIL VSS VSS ldn60 w=20u l=0.6u nf=2\n";
+    for (comment, waivers, hint) in [
+        ("M2 ", "", "there is one at `switch/M1`: put the comment at that card"),
+        ("", "{rule: finger-count, at: swich/M1, reason: x}", "did you mean `switch/M1`?"),
+        ("", "{rule: finger-count, at: XTOP.XA.M1, reason: x}", "there is one at `X1.M1`"),
+        ("", "{rule: finger-width, at: switch/M1, reason: x}", "what is found there is `finger-count`"),
+        ("", "{rule: over-rating, at: M4, pair: vds, reason: x}", "the finding there is about vgs"),
+    ] {
+        let mut block = format!("{BLOCK}{over}");
+        if !comment.is_empty() {
+            // a device of a similar name that has no odd finger count
+            block = block.replace(
+                ".ends",
+                "* drainwise: accept finger-count because x\nM2 D G S S ldn60 w=30u l=0.6u nf=2\n.ends",
+            );
+        }
+        let bench = Bench::new(&block);
+        bench.put("drainwise.yaml", &format!("{DECK}waivers: [{waivers}]\n"));
+        let out = bench.run("").out;
+        says(&out, &["waiver-stale", hint]);
+    }
+    let bench = Bench::new(&BLOCK.replace("nf=3", "nf=2 $ drainwise: accept finger-count because x"));
+    says(&bench.run("").out, &["this waiver of finger-count at switch/M1 hides nothing", "take this comment out"]);
+}
+
+/// In SARIF a comment is a suppression in the source (2.1.0, section 3.35.2).
+#[test]
+fn a_comment_is_a_suppression_in_the_source() {
+    let bench = Bench::new(&BLOCK.replace("M1 D", "* drainwise: accept finger-count because x\nM1 D"));
+    let ran = bench.run("--format sarif --with-waived");
+    let log: Value = serde_json::from_str(&ran.out).unwrap();
+    let suppression = &log["runs"][0]["results"][0]["suppressions"][0];
+    assert_eq!((&suppression["kind"], &suppression["justification"]), (&Value::from("inSource"), &Value::from("x")));
+    assert_eq!(suppression["location"]["physicalLocation"]["region"]["startLine"], 3);
 }
