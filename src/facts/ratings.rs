@@ -185,6 +185,7 @@ impl DeviceView<'_> {
             return;
         }
         let ends = |step: &Step| format!("{} to {}", step.net, show(step.volts, Dim::VOLT));
+        let mut chain = Vec::new();
         for step in steps.iter().take(MOST_STEPS) {
             let place = match &step.by {
                 StepBy::Rail(Some(slot)) => Some((
@@ -202,12 +203,17 @@ impl DeviceView<'_> {
                 _ => None,
             };
             if let Some((span, words)) = place {
+                chain.push((span, words.clone()));
                 self.note(|evidence| {
                     if !evidence.places.iter().any(|(known, _)| *known == span) {
                         evidence.places.push((span, words));
                     }
                 });
             }
+        }
+        if let (Some(place), false) = (self.pin_place(pin), chain.is_empty()) {
+            chain.push((place, format!("{} is on {}", self.class.pins[pin], self.net_text(pin))));
+            self.note(|evidence| evidence.chains.push(chain));
         }
     }
 
