@@ -13,11 +13,17 @@
 //! **Guarantee.** If every rail stays in its declared range, current sources stay within their compliance, and no capacitor or
 //! inductor kicks an undeclared net, a quasi-static simulation never shows a driven net outside its reach.
 
+mod components;
 mod expand;
 mod frames;
+mod held;
+mod inputs;
 mod interval;
+mod leads;
 mod pairs;
 mod plan;
+mod rings;
+mod shared;
 mod solve;
 mod state;
 mod terminals;
