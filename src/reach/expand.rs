@@ -40,7 +40,7 @@ pub struct ReachContext {
     /// For each mode.
     pub(super) bounds: Vec<PairBounds>,
     pub(super) caps: Vec<HashMap<NetIx, Vec<f64>>>,
-    /// For each mode, its rings and what was held of their gates.
+    /// For each mode, its rings and what is ruled out in them.
     held: Vec<(RingIx, HeldIx)>,
 }
 
