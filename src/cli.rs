@@ -205,7 +205,8 @@ pub fn run() -> u8 {
 }
 
 fn job(netlists: Vec<PathBuf>, inputs: &Inputs) -> Job {
-    Job { netlists, decks: inputs.deck.clone(), top: inputs.top.clone(), modes: inputs.mode.clone(), ..Job::default() }
+    let (decks, top, modes) = (inputs.deck.clone(), inputs.top.clone(), inputs.mode.clone());
+    Job { netlists, decks, top, modes, last: true, ..Job::default() }
 }
 
 fn run_lint(lint: Lint) -> io::Result<u8> {
@@ -221,7 +222,9 @@ fn run_lint(lint: Lint) -> io::Result<u8> {
         Format::Json => output.write(|out| json::write(&outcome.report, &outcome.sources, out))?,
     }
     output.finish()?;
-    Ok(exit_code(&outcome, lint.fail_on.severity()))
+    let code = exit_code(&outcome, lint.fail_on.severity());
+    std::mem::forget(outcome);
+    Ok(code)
 }
 
 fn exit_code(outcome: &Outcome, fail_on: Severity) -> u8 {
