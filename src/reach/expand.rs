@@ -1,8 +1,9 @@
 //! All contexts of a design with their reaches: the fixpoint from the top, then every cell in each of its surroundings.
 
+use super::bounds::{Caps, PairBounds};
 use super::frames::{Frames, TopFacts};
 use super::interval::Interval;
-use super::plan::{Ground, PairBounds, Plans};
+use super::plan::{Ground, Plans};
 use super::solve::{Answer, InputKey, Inputs, Solver};
 use super::state::State;
 use super::terminals::{Terminals, table};
@@ -37,7 +38,7 @@ pub struct ReachContext {
     pub(super) open: Vec<bool>,
     /// For each mode.
     pub(super) bounds: Vec<PairBounds>,
-    pub(super) caps: Vec<HashMap<NetIx, Vec<f64>>>,
+    pub(super) caps: Vec<Caps>,
 }
 
 /// The reach of everything.

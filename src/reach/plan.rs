@@ -2,6 +2,7 @@
 //! nets an inductor lifts. Worked out once for each context, from the leaves up; a cell's part is seen by its callers through
 //! its boundary.
 
+use super::bounds::{PairList, PairTable};
 use super::frames::SourceLink;
 use super::interval::Interval;
 use super::terminals::Terminals;
@@ -14,43 +15,6 @@ use petgraph::unionfind::UnionFind;
 
 /// A diode drop, volts: how far a body diode lets its drain go beyond its source (0.9 V: common practice, no source).
 pub(super) const DIODE_DROP: f64 = 0.9;
-
-/// What clamps and body diodes say of the voltage between two nets. Looked up by the pair, so that a rail with a million devices
-/// on it costs no more than any net.
-#[derive(Clone, Debug, Default, PartialEq)]
-pub(super) struct PairBounds {
-    by_pair: HashMap<(NetIx, NetIx), Interval>,
-}
-
-impl PairBounds {
-    /// V(x) − V(y) stays in the range, too.
-    pub(super) fn add(&mut self, x: NetIx, y: NetIx, range: Interval) {
-        if x == y {
-            return;
-        }
-        let (key, range) = if x < y { ((x, y), range) } else { ((y, x), range.negated()) };
-        let known = self.by_pair.entry(key).or_insert(Interval::ANY);
-        *known = known.and(range);
-    }
-
-    /// What is known of V(x) − V(y).
-    pub(super) fn between(&self, x: NetIx, y: NetIx) -> Interval {
-        if self.by_pair.is_empty() {
-            return Interval::ANY;
-        }
-        let found = |x: NetIx, y: NetIx| self.by_pair.get(&(x, y)).copied();
-        if x < y { found(x, y) } else { found(y, x).map(Interval::negated) }.unwrap_or(Interval::ANY)
-    }
-
-    pub(super) fn is_empty(&self) -> bool {
-        self.by_pair.is_empty()
-    }
-
-    /// All pairs, in no particular order: V(x) − V(y) is in the range.
-    pub(super) fn iter(&self) -> impl Iterator<Item = (NetIx, NetIx, Interval)> + '_ {
-        self.by_pair.iter().map(|(&(x, y), &range)| (x, y, range))
-    }
-}
 
 /// What a context shows at its boundary.
 #[derive(Clone, Debug, Default)]
@@ -83,9 +47,7 @@ pub(super) struct Plan {
     pub(super) inductor: Vec<bool>,
     /// Nets that a body, source, resistor or diode stands on.
     pub(super) carries: Vec<bool>,
-    pub(super) bounds: PairBounds,
-    /// Nets of which some pair bound speaks.
-    pub(super) bounded: Vec<bool>,
+    pub(super) bounds: PairTable,
     pub(super) sources: Vec<SourceLink>,
     shown: Shown,
 }
@@ -159,6 +121,7 @@ struct Maker<'m> {
     groups: UnionFind<u32>,
     /// Nets with an unknown drive.
     open: Vec<NetIx>,
+    bounds: PairList,
     plan: Plan,
 }
 
@@ -168,7 +131,8 @@ impl<'m> Maker<'m> {
         let template = ground.design.template(context.variant);
         let nets = template.nets.len();
         let plan = Plan { inductor: vec![false; nets], carries: vec![false; nets], ..Plan::default() };
-        Maker { ground, context, template, groups: UnionFind::new(nets), open: Vec::new(), plan }
+        let (groups, bounds) = (UnionFind::new(nets), PairList::default());
+        Maker { ground, context, template, groups, open: Vec::new(), bounds, plan }
     }
 
     fn make(mut self, plans: &Plans) -> Plan {
@@ -194,11 +158,7 @@ impl<'m> Maker<'m> {
         }
         self.plan.group_has_rail = has_rail;
         self.gather_open();
-        self.plan.bounded = vec![false; self.template.nets.len()];
-        for (x, y, _) in self.plan.bounds.iter() {
-            self.plan.bounded[x.0 as usize] = true;
-            self.plan.bounded[y.0 as usize] = true;
-        }
+        self.plan.bounds = std::mem::take(&mut self.bounds).pack(self.template.nets.len());
         self.show();
         self.plan
     }
@@ -221,7 +181,7 @@ impl<'m> Maker<'m> {
                         } else {
                             Interval { lo: f64::NEG_INFINITY, hi: DIODE_DROP }
                         };
-                        self.plan.bounds.add(d, s, range);
+                        self.bounds.add(d, s, range);
                     }
                 }
             }
@@ -243,7 +203,7 @@ impl<'m> Maker<'m> {
                     .class
                     .map(|class| &self.ground.design.classes[class as usize]);
                 if let Some(clamp) = class.and_then(|class| class.clamp) {
-                    self.plan.bounds.add(k, a, Interval { lo: clamp.lo, hi: clamp.hi });
+                    self.bounds.add(k, a, Interval { lo: clamp.lo, hi: clamp.hi });
                 }
             }
             Terminals::Through { a, b, resistor } => {
@@ -340,7 +300,7 @@ impl<'m> Maker<'m> {
             self.plan.carries[here.0 as usize] |= shown.carries[at];
         }
         for &(x, y, range) in &shown.bounds {
-            self.plan.bounds.add(net(x), net(y), range);
+            self.bounds.add(net(x), net(y), range);
         }
         for &(plus, minus, range) in &shown.sources {
             self.plan.sources.push(SourceLink { plus: net(plus), minus: net(minus), range });

@@ -1,14 +1,14 @@
 //! The fixpoint of one context in one mode.
 
+use super::bounds::{Caps, PairBounds};
 use super::expand::Shared;
 use super::interval::Interval;
-use super::plan::{PairBounds, Plan};
-use super::state::{ANSWER, NOTHING, OUTSIDE, Side, State};
+use super::plan::Plan;
+use super::state::{ANSWER, OUTSIDE, Side, State};
 use super::terminals::Terminals;
 use super::touch::{Toucher, Touches};
 use crate::design::{DeviceIx, InstanceIx, NetIx, Template, VariantIx};
 use crate::graph::{Context, ContextIx};
-use hashbrown::HashMap;
 use std::collections::VecDeque;
 
 /// What the surroundings bring to a context in one mode, at its boundary positions. Positions that are one net agree.
@@ -106,7 +106,7 @@ pub(super) struct Solver<'s> {
     pub(super) tied: Vec<bool>,
     pub(super) open: Vec<bool>,
     pub(super) bounds: PairBounds,
-    pub(super) caps: HashMap<NetIx, Vec<f64>>,
+    pub(super) caps: Caps,
     queue: VecDeque<u32>,
     queued: Vec<bool>,
     asked: Vec<bool>,
@@ -132,7 +132,7 @@ impl<'s> Solver<'s> {
             tied: Vec::new(),
             open: Vec::new(),
             bounds: PairBounds::default(),
-            caps: HashMap::new(),
+            caps: Caps::default(),
             queue: VecDeque::new(),
             queued: vec![false; template.nets.len()],
             asked: vec![false; template.instances.len()],
@@ -153,7 +153,7 @@ impl<'s> Solver<'s> {
         mode: u32,
         state: State,
         (tied, open): (Vec<bool>, Vec<bool>),
-        (bounds, caps): (PairBounds, HashMap<NetIx, Vec<f64>>),
+        (bounds, caps): (PairBounds, Caps),
     ) -> Solver<'s> {
         let context = shared.contexts.get(at);
         let template = shared.design.template(context.variant);
@@ -264,14 +264,15 @@ impl<'s> Solver<'s> {
         for &(x, y, range) in &inputs.bounds {
             self.bounds.add(self.context.root(boundary[x as usize]), self.context.root(boundary[y as usize]), range);
         }
-        let all: Vec<(NetIx, NetIx, Interval)> = self.plan.bounds.iter().chain(self.bounds.iter()).collect();
-        for (x, y, range) in all {
+        let bounds = std::mem::take(&mut self.bounds);
+        for (x, y, range) in self.plan.bounds.iter().chain(bounds.iter()) {
             match (self.state.fixed[x.0 as usize], self.state.fixed[y.0 as usize]) {
                 (false, true) => self.cap(x, y, range),
                 (true, false) => self.cap(y, x, range.negated()),
                 _ => {}
             }
         }
+        self.bounds = bounds;
     }
 
     fn take_caps(&mut self, inputs: &Inputs) {
@@ -279,7 +280,7 @@ impl<'s> Solver<'s> {
         for (position, net) in self.template.boundary().enumerate() {
             let outside = &inputs.caps[position * ends..(position + 1) * ends];
             if outside.iter().any(|cap| cap.is_finite()) {
-                let caps = self.caps.entry(self.context.root(net)).or_insert_with(|| vec![f64::INFINITY; ends]);
+                let caps = self.caps.lower(self.context.root(net), self.template.nets.len(), ends);
                 caps.iter_mut().zip(outside).for_each(|(cap, &outside)| *cap = cap.min(outside));
             }
         }
@@ -288,7 +289,7 @@ impl<'s> Solver<'s> {
     /// V(net) − V(rail) stays in the range.
     fn cap(&mut self, net: NetIx, rail: NetIx, range: Interval) {
         let frames = self.state.frames;
-        let caps = self.caps.entry(net).or_insert_with(|| vec![f64::INFINITY; frames * 2]);
+        let caps = self.caps.lower(net, self.template.nets.len(), frames * 2);
         for frame in 0..frames {
             let (hi, lo) = (self.state.value(rail, frame, Side::Hi), self.state.value(rail, frame, Side::Lo));
             caps[frame * 2] = caps[frame * 2].min(hi + range.hi);
@@ -388,9 +389,9 @@ impl<'s> Solver<'s> {
             inputs.open.push(self.open[self.plan.group(net) as usize]);
             distinct.push((net, position as u32));
         }
-        if distinct.iter().any(|(net, _)| self.caps.contains_key(net)) {
+        if distinct.iter().any(|&(net, _)| self.caps.of(net).is_some()) {
             for (net, _) in &distinct {
-                match self.caps.get(net) {
+                match self.caps.of(*net) {
                     Some(caps) => inputs.caps.extend_from_slice(caps),
                     None => inputs.caps.extend(std::iter::repeat_n(f64::INFINITY, frames * 2)),
                 }
@@ -399,7 +400,7 @@ impl<'s> Solver<'s> {
         if !self.plan.bounds.is_empty() || !self.bounds.is_empty() {
             distinct.sort_unstable();
             distinct.dedup_by_key(|&mut (net, _)| net);
-            let spoken_of = |net: NetIx| self.plan.bounded[net.0 as usize] || !self.bounds.is_empty();
+            let spoken_of = |net: NetIx| self.plan.bounds.speaks_of(net) || !self.bounds.is_empty();
             distinct.retain(|(net, _)| spoken_of(*net));
             for &(x, at_x) in distinct.iter().filter(|(net, _)| !self.state.fixed[net.0 as usize]) {
                 for &(y, at_y) in &distinct {
@@ -415,7 +416,7 @@ impl<'s> Solver<'s> {
 
     /// What clamps and body diodes say of V(x) − V(y).
     pub(super) fn pair_bound(&self, x: NetIx, y: NetIx) -> Interval {
-        let spoken_of = |net: NetIx| self.plan.bounded[net.0 as usize];
+        let spoken_of = |net: NetIx| self.plan.bounds.speaks_of(net);
         if self.bounds.is_empty() && !(spoken_of(x) && spoken_of(y))
             || self.state.fixed[x.0 as usize] && self.state.fixed[y.0 as usize]
         {
@@ -429,15 +430,17 @@ impl<'s> Solver<'s> {
     }
 
     pub(super) fn raise(&mut self, net: NetIx, frame: usize, side: Side, value: f64, by: u32) {
-        if value == NOTHING || self.state.fixed[net.0 as usize] {
+        // Most raises are none: that is seen first. (What is not above [`NOTHING`] is nothing.)
+        let at = self.state.at(net, frame, side);
+        let least = self.state.values[at] + 1e-12;
+        if !(value > least) || self.state.fixed[net.0 as usize] {
             return;
         }
-        let value = match self.caps.get(&net) {
+        let value = match self.caps.of(net) {
             Some(caps) => value.min(caps[frame * 2 + side.index()]),
             None => value,
         };
-        let at = self.state.at(net, frame, side);
-        if value > self.state.values[at] + 1e-12 {
+        if value > least {
             self.state.values[at] = value;
             if let Some(setter) = self.state.setters.get_mut(at) {
                 *setter = by;
