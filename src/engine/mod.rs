@@ -8,6 +8,7 @@ mod finding;
 mod fold;
 mod hygiene;
 mod others;
+mod quick;
 mod verdict;
 
 pub use fold::MOST_FINDINGS;

@@ -8,6 +8,7 @@ mod class;
 mod device;
 mod evidence;
 mod gates;
+mod glance;
 mod instance;
 mod net;
 mod orientation;
@@ -20,6 +21,7 @@ pub mod vocabulary;
 pub use class::ClassView;
 pub use device::DeviceView;
 pub use evidence::Evidence;
+pub use glance::{Glance, Question, Shape, Surroundings, Truth, question};
 pub use instance::InstanceView;
 pub use net::NetView;
 

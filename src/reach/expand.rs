@@ -270,6 +270,9 @@ impl<'r> Reach<'r> {
 
     /// The dotted path of the first instance in a context; empty for a top.
     pub fn path(&self, at: ReachIx) -> String {
+        if self.get(at).parents.is_empty() {
+            return String::new();
+        }
         paths::all(at.0, 1, |at| self.above(at)).0.pop().unwrap_or_default()
     }
 

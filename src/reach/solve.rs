@@ -433,7 +433,7 @@ impl<'s> Solver<'s> {
         // Most raises are none: that is seen first. (What is not above [`NOTHING`] is nothing.)
         let at = self.state.at(net, frame, side);
         let least = self.state.values[at] + 1e-12;
-        if !(value > least) || self.state.fixed[net.0 as usize] {
+        if value <= least || self.state.fixed[net.0 as usize] {
             return;
         }
         let value = match self.caps.of(net) {
