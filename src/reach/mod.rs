@@ -14,11 +14,17 @@
 //! inductor kicks an undeclared net, a quasi-static simulation never shows a driven net outside its reach.
 
 mod bounds;
+mod components;
 mod expand;
 mod frames;
+mod held;
+mod inputs;
 mod interval;
+mod leads;
 mod pairs;
 mod plan;
+mod rings;
+mod shared;
 mod solve;
 mod state;
 mod terminals;

@@ -1,93 +1,19 @@
 //! The fixpoint of one context in one mode.
 
 use super::bounds::{Caps, PairBounds};
-use super::expand::Shared;
+use super::held::HeldIx;
+use super::inputs::Inputs;
 use super::interval::Interval;
 use super::plan::Plan;
-use super::state::{ANSWER, OUTSIDE, Side, State};
+use super::rings::{Ring, RingIx};
+use super::shared::Shared;
+use super::state::{ANSWER, DRIVEN, OUTSIDE, Side, State};
 use super::terminals::Terminals;
 use super::touch::{Toucher, Touches};
 use crate::design::{DeviceIx, InstanceIx, NetIx, Template, VariantIx};
 use crate::graph::{Context, ContextIx};
 use std::collections::VecDeque;
-
-/// What the surroundings bring to a context in one mode, at its boundary positions. Positions that are one net agree.
-#[derive(Clone, Debug, Default, PartialEq)]
-pub(super) struct Inputs {
-    /// For each position, frame and side; as in [`State`].
-    pub(super) values: Vec<f64>,
-    pub(super) driven: Vec<bool>,
-    /// Rails and nets of which nothing is known.
-    pub(super) fixed: Vec<bool>,
-    /// Whether something outside ties the port to a rail.
-    pub(super) tied: Vec<bool>,
-    /// Whether conducting paths outside lead from the port to an undeclared port or global of the top.
-    pub(super) open: Vec<bool>,
-    /// What clamps and body diodes outside hold the ports to: as `values`, infinite where they say nothing; empty where they say
-    /// nothing of any port.
-    pub(super) caps: Vec<f64>,
-    /// Clamps outside between ports: positions and range of V(x) − V(y).
-    pub(super) bounds: Vec<(u32, u32, Interval)>,
-}
-
-/// The inputs as a key: values by their bits.
-#[derive(Clone, Debug, PartialEq, Eq, Hash)]
-pub(super) struct InputKey {
-    pub(super) at: ContextIx,
-    pub(super) mode: u32,
-    bits: Vec<u64>,
-    flags: Vec<u8>,
-    bounds: Vec<(u32, u32, u64, u64)>,
-}
-
-impl Inputs {
-    pub(super) fn key(&self, at: ContextIx, mode: u32) -> InputKey {
-        InputKey {
-            at,
-            mode,
-            bits: self
-                .values
-                .iter()
-                .chain(&self.caps)
-                .map(|value| if *value == 0.0 { 0 } else { value.to_bits() })
-                .collect(),
-            flags: self.flags(),
-            bounds: self.bounds.iter().map(|(x, y, range)| (*x, *y, range.lo.to_bits(), range.hi.to_bits())).collect(),
-        }
-    }
-
-    /// These inputs after the context has added its answer.
-    pub(super) fn with(&self, answer: &Answer) -> Inputs {
-        let mut joined = self.clone();
-        let per_port = self.values.len() / self.driven.len().max(1);
-        for (at, value) in joined.values.iter_mut().enumerate() {
-            if !self.fixed[at / per_port] {
-                *value = value.max(answer.values[at]);
-            }
-        }
-        for (driven, &answered) in joined.driven.iter_mut().zip(&answer.driven) {
-            *driven |= answered;
-        }
-        joined
-    }
-
-    fn flags(&self) -> Vec<u8> {
-        let flag = |at: usize| {
-            u8::from(self.driven[at])
-                | u8::from(self.fixed[at]) << 1
-                | u8::from(self.tied[at]) << 2
-                | u8::from(self.open[at]) << 3
-        };
-        (0..self.driven.len()).map(flag).collect()
-    }
-}
-
-/// What a context adds to its ports: values and whether they are driven, by boundary position.
-#[derive(Clone, Debug, Default)]
-pub(super) struct Answer {
-    pub(super) values: Vec<f64>,
-    pub(super) driven: Vec<bool>,
-}
+use std::sync::Arc;
 
 /// Cells of at most this many devices, and no instances, are swept whole.
 const SMALL_CELL: usize = 48;
@@ -107,6 +33,9 @@ pub(super) struct Solver<'s> {
     pub(super) open: Vec<bool>,
     pub(super) bounds: PairBounds,
     pub(super) caps: Caps,
+    pub(super) ring: &'s Ring,
+    held: HeldIx,
+    held_values: Arc<[f64]>,
     queue: VecDeque<u32>,
     queued: Vec<bool>,
     asked: Vec<bool>,
@@ -133,6 +62,9 @@ impl<'s> Solver<'s> {
             open: Vec::new(),
             bounds: PairBounds::default(),
             caps: Caps::default(),
+            ring: shared.rings.get(inputs.ring),
+            held: inputs.held,
+            held_values: shared.held.borrow().values(inputs.held),
             queue: VecDeque::new(),
             queued: vec![false; template.nets.len()],
             asked: vec![false; template.instances.len()],
@@ -154,6 +86,7 @@ impl<'s> Solver<'s> {
         state: State,
         (tied, open): (Vec<bool>, Vec<bool>),
         (bounds, caps): (PairBounds, Caps),
+        (ring, held): (RingIx, HeldIx),
     ) -> Solver<'s> {
         let context = shared.contexts.get(at);
         let template = shared.design.template(context.variant);
@@ -171,6 +104,9 @@ impl<'s> Solver<'s> {
             open,
             bounds,
             caps,
+            ring: shared.rings.get(ring),
+            held,
+            held_values: shared.held.borrow().values(held),
             queue: VecDeque::new(),
             queued: Vec::new(),
             asked: Vec::new(),
@@ -180,7 +116,7 @@ impl<'s> Solver<'s> {
 
     fn take_inputs(&mut self, inputs: &Inputs) {
         let frames = self.state.frames;
-        let (mut ports, mut open) = (Vec::with_capacity(inputs.driven.len()), vec![false; self.template.nets.len()]);
+        let (mut ports, mut open) = (Vec::with_capacity(inputs.drive.len()), vec![false; self.template.nets.len()]);
         for (position, net) in self.template.boundary().enumerate() {
             let net = self.context.root(net);
             ports.push((net, inputs.tied[position]));
@@ -188,7 +124,7 @@ impl<'s> Solver<'s> {
             let from = position * frames * 2;
             let to = self.state.at(net, 0, Side::Hi);
             self.state.values[to..to + frames * 2].copy_from_slice(&inputs.values[from..from + frames * 2]);
-            self.state.driven[net.0 as usize] |= inputs.driven[position];
+            self.state.drive[net.0 as usize] |= inputs.drive[position];
             self.state.fixed[net.0 as usize] |= inputs.fixed[position];
         }
         self.tied = self.plan.tied_groups(&ports);
@@ -207,7 +143,7 @@ impl<'s> Solver<'s> {
                 self.state.values[to + 1] = -value.lo;
             }
             self.state.fixed[net.0 as usize] = true;
-            self.state.driven[net.0 as usize] = true;
+            self.state.drive[net.0 as usize] |= DRIVEN;
         }
     }
 
@@ -231,7 +167,7 @@ impl<'s> Solver<'s> {
         loop {
             let before = waiting.len();
             waiting.retain(|link| {
-                let known = |net: NetIx| self.state.fixed[net.0 as usize] && self.state.driven[net.0 as usize];
+                let known = |net: NetIx| self.state.fixed[net.0 as usize] && self.state.is_driven(net);
                 let (to, from, range) = match (known(link.plus), known(link.minus)) {
                     (false, true) => (link.plus, link.minus, link.range),
                     (true, false) => (link.minus, link.plus, link.range.negated()),
@@ -245,7 +181,7 @@ impl<'s> Solver<'s> {
                     self.state.values[at + 1] = lo - range.lo;
                 }
                 self.state.fixed[to.0 as usize] = true;
-                self.state.driven[to.0 as usize] = true;
+                self.state.drive[to.0 as usize] |= DRIVEN;
                 false
             });
             if waiting.len() == before {
@@ -360,9 +296,7 @@ impl<'s> Solver<'s> {
                     self.raise(net, frame, side, answer.values[(position * frames + frame) * 2 + side.index()], by);
                 }
             }
-            if answer.driven[position] && !self.state.driven[net.0 as usize] {
-                self.set_driven(net);
-            }
+            self.set_drive(net, answer.drive[position]);
         }
     }
 
@@ -372,10 +306,12 @@ impl<'s> Solver<'s> {
         let frames = self.state.frames;
         let mut inputs = Inputs {
             values: Vec::with_capacity(pins.len() * frames * 2),
-            driven: Vec::with_capacity(pins.len()),
+            drive: Vec::with_capacity(pins.len()),
             fixed: Vec::with_capacity(pins.len()),
             tied: Vec::with_capacity(pins.len()),
             open: Vec::with_capacity(pins.len()),
+            ring: self.ring.below(instance),
+            held: self.shared.held.borrow().below(self.held, instance),
             ..Inputs::default()
         };
         let mut distinct: Vec<(NetIx, u32)> = Vec::new();
@@ -383,7 +319,7 @@ impl<'s> Solver<'s> {
             let net = self.context.root(net);
             let from = self.state.at(net, 0, Side::Hi);
             inputs.values.extend_from_slice(&self.state.values[from..from + frames * 2]);
-            inputs.driven.push(self.state.driven[net.0 as usize]);
+            inputs.drive.push(self.state.drive[net.0 as usize]);
             inputs.fixed.push(self.state.fixed[net.0 as usize]);
             inputs.tied.push(self.tied[self.plan.group(net) as usize]);
             inputs.open.push(self.open[self.plan.group(net) as usize]);
@@ -412,6 +348,12 @@ impl<'s> Solver<'s> {
             }
         }
         inputs
+    }
+
+    /// The end of a gate's range that conditions in rings are judged by.
+    pub(super) fn held(&self, gate: NetIx, frame: usize, side: Side) -> f64 {
+        let place = if self.held_values.is_empty() { None } else { self.ring.place(gate) };
+        place.map_or(f64::INFINITY, |place| self.held_values[(place * self.state.frames + frame) * 2 + side.index()])
     }
 
     /// What clamps and body diodes say of V(x) − V(y).
@@ -455,29 +397,18 @@ impl<'s> Solver<'s> {
         self.raise(net, frame, side, value, by);
     }
 
-    pub(super) fn set_driven(&mut self, net: NetIx) {
-        self.state.driven[net.0 as usize] = true;
-        self.touch(net);
+    pub(super) fn set_drive(&mut self, net: NetIx, drive: u8) {
+        let known = &mut self.state.drive[net.0 as usize];
+        if *known | drive != *known {
+            *known |= drive;
+            self.touch(net);
+        }
     }
 
     fn touch(&mut self, net: NetIx) {
         if !self.state.fixed[net.0 as usize] && !std::mem::replace(&mut self.queued[net.0 as usize], true) {
             self.queue.push_back(net.0);
         }
-    }
-}
-
-impl Answer {
-    /// The boundary values of a finished state.
-    pub(super) fn of(state: &State, template: &Template, context: &Context) -> Answer {
-        let mut answer = Answer::default();
-        for net in template.boundary() {
-            let net = context.root(net);
-            let from = state.at(net, 0, Side::Hi);
-            answer.values.extend_from_slice(&state.values[from..from + state.frames * 2]);
-            answer.driven.push(state.driven[net.0 as usize]);
-        }
-        answer
     }
 }
 
