@@ -29,6 +29,8 @@ struct Shown {
     inductor: Vec<bool>,
     /// Whether a body, source, resistor or diode stands on it.
     carries: Vec<bool>,
+    /// Whether nothing inside moves it: only gates and the like stand on it.
+    listens: Vec<bool>,
     bounds: Vec<(u32, u32, Interval)>,
     sources: Vec<(u32, u32, Interval)>,
 }
@@ -53,6 +55,11 @@ pub(super) struct Plan {
 }
 
 impl Plan {
+    /// For each boundary position, whether nothing inside moves it.
+    pub(super) fn listens(&self) -> &[bool] {
+        &self.shown.listens
+    }
+
     /// The group of a net.
     pub(super) fn group(&self, net: NetIx) -> u32 {
         self.group[net.0 as usize]
@@ -122,6 +129,8 @@ struct Maker<'m> {
     /// Nets with an unknown drive.
     open: Vec<NetIx>,
     bounds: PairList,
+    /// Nets that something moves.
+    moved: Vec<bool>,
     plan: Plan,
 }
 
@@ -131,8 +140,8 @@ impl<'m> Maker<'m> {
         let template = ground.design.template(context.variant);
         let nets = template.nets.len();
         let plan = Plan { inductor: vec![false; nets], carries: vec![false; nets], ..Plan::default() };
-        let (groups, bounds) = (UnionFind::new(nets), PairList::default());
-        Maker { ground, context, template, groups, open: Vec::new(), bounds, plan }
+        let (groups, bounds, moved) = (UnionFind::new(nets), PairList::default(), vec![false; nets]);
+        Maker { ground, context, template, groups, open: Vec::new(), bounds, moved, plan }
     }
 
     fn make(mut self, plans: &Plans) -> Plan {
@@ -275,6 +284,8 @@ impl<'m> Maker<'m> {
 
     fn tie(&mut self, a: NetIx, b: NetIx) {
         self.groups.union(a.0, b.0);
+        self.moved[a.0 as usize] = true;
+        self.moved[b.0 as usize] = true;
     }
 
     fn carry(&mut self, nets: &[NetIx]) {
@@ -298,6 +309,7 @@ impl<'m> Maker<'m> {
             }
             self.plan.inductor[here.0 as usize] |= shown.inductor[at];
             self.plan.carries[here.0 as usize] |= shown.carries[at];
+            self.moved[here.0 as usize] |= !shown.listens[at];
         }
         for &(x, y, range) in &shown.bounds {
             self.bounds.add(net(x), net(y), range);
@@ -319,6 +331,7 @@ impl<'m> Maker<'m> {
             plan.shown.open.push(plan.group_open[group as usize]);
             plan.shown.inductor.push(plan.inductor[net.0 as usize]);
             plan.shown.carries.push(plan.carries[net.0 as usize]);
+            plan.shown.listens.push(!self.moved[net.0 as usize]);
             positions.entry(net).or_insert(position as u32);
         }
         for (x, y, range) in plan.bounds.iter() {

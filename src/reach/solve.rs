@@ -7,7 +7,7 @@ use super::interval::Interval;
 use super::plan::Plan;
 use super::rings::{Ring, RingIx};
 use super::shared::Shared;
-use super::state::{ANSWER, DRIVEN, OUTSIDE, Side, State};
+use super::state::{ANSWER, DRIVEN, NOTHING, OUTSIDE, Side, State};
 use super::terminals::Terminals;
 use super::touch::{Toucher, Touches};
 use crate::design::{DeviceIx, InstanceIx, NetIx, Template, VariantIx};
@@ -38,8 +38,18 @@ pub(super) struct Solver<'s> {
     held_values: Arc<[f64]>,
     queue: VecDeque<u32>,
     queued: Vec<bool>,
-    asked: Vec<bool>,
+    waiting: Vec<Waiting>,
     ask: VecDeque<u32>,
+    ask_later: VecDeque<u32>,
+}
+
+/// In which list an instance waits to be asked.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+enum Waiting {
+    Not,
+    Soon,
+    /// Until all its inputs have a range, or nothing else is left to do.
+    Later,
 }
 
 impl<'s> Solver<'s> {
@@ -67,8 +77,9 @@ impl<'s> Solver<'s> {
             held_values: shared.held.borrow().values(inputs.held),
             queue: VecDeque::new(),
             queued: vec![false; template.nets.len()],
-            asked: vec![false; template.instances.len()],
+            waiting: vec![Waiting::Not; template.instances.len()],
             ask: VecDeque::new(),
+            ask_later: VecDeque::new(),
         };
         solver.take_inputs(inputs);
         solver.fix_rails();
@@ -109,8 +120,9 @@ impl<'s> Solver<'s> {
             held_values: shared.held.borrow().values(held),
             queue: VecDeque::new(),
             queued: Vec::new(),
-            asked: Vec::new(),
+            waiting: Vec::new(),
             ask: VecDeque::new(),
+            ask_later: VecDeque::new(),
         }
     }
 
@@ -242,16 +254,48 @@ impl<'s> Solver<'s> {
             return self.sweep();
         }
         for instance in 0..self.template.instances.len() as u32 {
-            self.ask.push_back(instance);
-            self.asked[instance as usize] = true;
+            self.ask_soon(instance);
         }
         let pins = Touches::new(self.template, self.context, &self.state.fixed);
         loop {
             self.settle_devices(&pins);
-            let Some(instance) = self.ask.pop_front() else { break };
-            self.asked[instance as usize] = false;
+            let Some(instance) = self.next_to_ask() else { break };
             self.ask_instance(InstanceIx(instance));
         }
+    }
+
+    fn ask_soon(&mut self, instance: u32) {
+        if std::mem::replace(&mut self.waiting[instance as usize], Waiting::Soon) != Waiting::Soon {
+            self.ask.push_back(instance);
+        }
+    }
+
+    /// The next instance to ask. One whose inputs have no range yet waits: it would be asked again when they do. In what order
+    /// instances are asked changes no range.
+    fn next_to_ask(&mut self) -> Option<u32> {
+        while let Some(instance) = self.ask.pop_front() {
+            if self.has_its_inputs(InstanceIx(instance)) {
+                self.waiting[instance as usize] = Waiting::Not;
+                return Some(instance);
+            }
+            self.waiting[instance as usize] = Waiting::Later;
+            self.ask_later.push_back(instance);
+        }
+        while let Some(instance) = self.ask_later.pop_front() {
+            if self.waiting[instance as usize] == Waiting::Later {
+                self.waiting[instance as usize] = Waiting::Not;
+                return Some(instance);
+            }
+        }
+        None
+    }
+
+    fn has_its_inputs(&self, instance: InstanceIx) -> bool {
+        let listens = self.shared.plans.get(self.context.children[instance.0 as usize]).listens();
+        self.template.instance_pins(instance).iter().zip(listens).filter(|&(_, &listens)| listens).all(|(&net, _)| {
+            let at = self.state.at(self.context.root(net), 0, Side::Hi);
+            self.state.values[at] != NOTHING && self.state.values[at + 1] != NOTHING
+        })
     }
 
     /// A small cell needs no list of who stands where: all its devices are asked again until nothing changes.
@@ -271,11 +315,7 @@ impl<'s> Solver<'s> {
             for toucher in touches.on(NetIx(net)) {
                 match toucher {
                     Toucher::Device(device) => self.apply(device),
-                    Toucher::Instance(instance) => {
-                        if !std::mem::replace(&mut self.asked[instance.0 as usize], true) {
-                            self.ask.push_back(instance.0);
-                        }
-                    }
+                    Toucher::Instance(instance) => self.ask_soon(instance.0),
                 }
             }
         }
@@ -371,6 +411,7 @@ impl<'s> Solver<'s> {
         self.shared.design.source_range(self.variant, device)
     }
 
+    #[inline]
     pub(super) fn raise(&mut self, net: NetIx, frame: usize, side: Side, value: f64, by: u32) {
         // Most raises are none: that is seen first. (What is not above [`NOTHING`] is nothing.)
         let at = self.state.at(net, frame, side);
