@@ -41,7 +41,7 @@ pub struct ReachContext {
     /// For each mode.
     pub(super) bounds: Vec<PairBounds>,
     pub(super) caps: Vec<Caps>,
-    /// For each mode, its rings and what was held of their gates.
+    /// For each mode, its rings and what is ruled out in them.
     held: Vec<(RingIx, HeldIx)>,
 }
 

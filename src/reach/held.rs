@@ -1,50 +1,46 @@
-//! Held ranges: what the conditions in rings are judged by, and the rounds that narrow them.
+//! The rounds that settle rings: which of their conditions are ruled out.
 //!
 //! In the first round every gate in a ring may be anywhere: its channel conducts. The least fixpoint under that has all that
-//! the circuit can do, whichever state it keeps. So the ranges that it gives those gates hold, and the conditions are judged by
-//! them in the next round, which takes away what they rule out; and so on, until nothing narrows any more or
-//! [`MOST_ROUNDS`] have passed. Each round is sound by the one before it, so any may be the last. (A descending iteration, as in
-//! P. Cousot and R. Cousot, "Abstract interpretation", POPL 1977: a narrowing of conditions alone, from memory.)
-//! A latch stays wide after the first round, and the second confirms it; where an input forces one of its
-//! nets, the next rounds settle the other.
+//! the circuit can do, whichever state it keeps. So where the ranges that come out keep a gate from ever turning its channel on,
+//! it is off in all states: it is ruled out from the next round on; and so on, until a round rules out nothing more or
+//! [`MOST_ROUNDS`] have passed. Each round is sound by the one before it, so any may be the last. (A descending iteration over
+//! the conditions, in the manner of P. Cousot and R. Cousot, "Abstract interpretation", POPL 1977, from memory.)
+//! A latch that nothing forces is done after one round; where an input forces one of its nets, the next rounds settle the other.
 //!
-//! Held ranges belong to instances. They are kept as a tree along the hierarchy, with equal branches kept once, so that equal instances
-//! stay one question.
+//! What is ruled out belongs to instances. It is kept as a tree along the hierarchy, with equal branches kept once, so that
+//! equal instances stay one question.
 
 use super::inputs::{InputKey, Inputs};
 use super::rings::{NO_RING, RingIx};
 use super::shared::Shared;
 use super::solve::Solver;
-use super::state::Side;
 use crate::design::InstanceIx;
 use crate::graph::ContextIx;
 use hashbrown::HashMap;
 use std::sync::Arc;
 
-/// Index of the held ranges of an instance and of all below it.
+/// Index of what is ruled out in an instance and in all below it.
 pub(super) type HeldIx = u32;
 
-/// Anything is possible, here and below.
+/// Nothing is, here and below.
 pub(super) const WIDEST: HeldIx = 0;
 
-/// After so many rounds the ranges are taken as they are. Two do for latches; each ring that only another ring settles takes one more.
-const MOST_ROUNDS: usize = 16;
+/// After so many rounds the ranges are taken as they are: each is a whole run. What an input forces settles one gate further
+/// along a ring in each.
+const MOST_ROUNDS: usize = 8;
 
-/// Volts: a range that shrinks by less has not changed.
-const CHANGE: f64 = 1e-9;
-
-/// All held ranges under one top.
+/// All that is ruled out under one top.
 #[derive(Clone, Debug)]
 pub(super) struct Held {
     all: Vec<Node>,
-    known: HashMap<(RingIx, Vec<u64>, Vec<HeldIx>), HeldIx>,
+    known: HashMap<(RingIx, Node), HeldIx>,
 }
 
-#[derive(Clone, Debug, Default)]
+#[derive(Clone, Debug, Default, PartialEq, Eq, Hash)]
 struct Node {
-    /// For each gate in a ring of the context, frame and side, as raises; empty where they are unbounded.
-    values: Arc<[f64]>,
-    /// For each instance statement; empty where nothing is held below.
+    /// A bit for each device and end of its channel; empty where nothing is ruled out.
+    ruled_out: Arc<[u64]>,
+    /// For each instance statement; empty where nothing is ruled out below.
     below: Vec<HeldIx>,
 }
 
@@ -55,31 +51,28 @@ impl Default for Held {
 }
 
 impl Held {
-    /// The ranges of a context's own gates; empty where they are unbounded.
-    pub(super) fn values(&self, held: HeldIx) -> Arc<[f64]> {
-        Arc::clone(&self.all[held as usize].values)
+    /// The bits of a context's own devices.
+    pub(super) fn ruled_out(&self, held: HeldIx) -> Arc<[u64]> {
+        Arc::clone(&self.all[held as usize].ruled_out)
     }
 
     pub(super) fn below(&self, held: HeldIx, instance: InstanceIx) -> HeldIx {
         self.all[held as usize].below.get(instance.0 as usize).copied().unwrap_or(WIDEST)
     }
 
-    fn add(&mut self, ring: RingIx, values: Vec<f64>, below: Vec<HeldIx>) -> HeldIx {
-        let values = if values.iter().all(|value| *value == f64::INFINITY) { Vec::new() } else { values };
-        let below = if below.iter().all(|&held| held == WIDEST) { Vec::new() } else { below };
-        if values.is_empty() && below.is_empty() {
+    fn add(&mut self, ring: RingIx, node: Node) -> HeldIx {
+        if node == Node::default() {
             return WIDEST;
         }
-        let bits = values.iter().map(|value| if *value == 0.0 { 0 } else { value.to_bits() }).collect();
         let all = &mut self.all;
-        *self.known.entry((ring, bits, below.clone())).or_insert_with(|| {
-            all.push(Node { values: values.into(), below });
+        *self.known.entry((ring, node)).or_insert_with_key(|(_, node)| {
+            all.push(node.clone());
             all.len() as HeldIx - 1
         })
     }
 }
 
-/// Runs a top in one mode, in as many rounds as its rings take. The inputs are left with the ranges held in the last one.
+/// Runs a top in one mode, in as many rounds as its rings take. The inputs are left with what is ruled out in the last one.
 pub(super) fn settle<'s>(shared: &'s Shared<'s>, at: ContextIx, mode: u32, inputs: &mut Inputs) -> Solver<'s> {
     let mut narrower = Narrower { shared, mode, known: HashMap::new() };
     let mut round = 1;
@@ -105,25 +98,26 @@ struct Narrower<'n> {
 }
 
 impl Narrower<'_> {
-    /// What a finished run says of the gates in rings, here and below, in so far as it is narrower than what was held in it.
+    /// What a finished run rules out of the conditions in rings, here and below, with what was ruled out before.
     fn narrowed(&mut self, run: &Solver<'_>, inputs: &Inputs) -> HeldIx {
         let ring = self.shared.rings.get(inputs.ring);
-        let mut values = Vec::with_capacity(ring.gates.len() * run.state.frames * 2);
-        for &gate in &ring.gates {
-            for frame in 0..run.state.frames {
-                let reach = run.state.reach(gate, frame);
-                for (side, found) in [(Side::Hi, reach.hi), (Side::Lo, -reach.lo)] {
-                    let held = run.held(gate, frame, side);
-                    values.push(if found < held - CHANGE { found } else { held });
-                }
+        let mut ruled_out = run.ruled_out.to_vec();
+        for device in ring.held() {
+            for (end, _) in run.rules_out(device).iter().enumerate().filter(|(_, ruled_out)| **ruled_out) {
+                let at = device.0 as usize * 2 + end;
+                ruled_out.resize((run.template.device_count() * 2).div_ceil(64), 0);
+                ruled_out[at / 64] |= 1 << (at % 64);
             }
         }
-        let below = run.template.instance_indices().map(|instance| match ring.below(instance) {
-            NO_RING => WIDEST,
-            _ => self.below(run.context.children[instance.0 as usize], run.inputs_for(instance)),
-        });
-        let below = below.collect();
-        Arc::make_mut(&mut self.shared.held.borrow_mut()).add(inputs.ring, values, below)
+        let mut below = Vec::new();
+        for instance in run.template.instance_indices().filter(|&instance| ring.below(instance) != NO_RING) {
+            let held = self.below(run.context.children[instance.0 as usize], run.inputs_for(instance));
+            if held != WIDEST {
+                below.resize(run.template.instances.len(), WIDEST);
+                below[instance.0 as usize] = held;
+            }
+        }
+        self.shared.rule_out(inputs.ring, ruled_out, below)
     }
 
     fn below(&mut self, at: ContextIx, inputs: Inputs) -> HeldIx {
@@ -131,10 +125,25 @@ impl Narrower<'_> {
         if let Some(&known) = self.known.get(&key) {
             return known;
         }
-        let mut solver = Solver::new(self.shared, at, self.mode, &inputs, false);
-        solver.run();
-        let narrowed = self.narrowed(&solver, &inputs);
+        let mut run = Solver::new(self.shared, at, self.mode, &inputs, false);
+        let kept = self.shared.kept_state(&key);
+        let was_kept = kept.is_some();
+        match kept {
+            Some(state) => run.state = state,
+            None => run.run(),
+        }
+        let narrowed = self.narrowed(&run, &inputs);
+        // Where more is ruled out, nobody will ask for this run again.
+        if was_kept && narrowed == inputs.held {
+            self.shared.keep_state(&key, std::mem::take(&mut run.state));
+        }
         self.known.insert(key, narrowed);
         narrowed
+    }
+}
+
+impl Shared<'_> {
+    fn rule_out(&self, ring: RingIx, ruled_out: Vec<u64>, below: Vec<HeldIx>) -> HeldIx {
+        Arc::make_mut(&mut self.held.borrow_mut()).add(ring, Node { ruled_out: ruled_out.into(), below })
     }
 }

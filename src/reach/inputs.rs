@@ -27,7 +27,7 @@ pub(super) struct Inputs {
     pub(super) bounds: Vec<(u32, u32, Interval)>,
     /// The rings through the context and below.
     pub(super) ring: RingIx,
-    /// What holds of the gates in them.
+    /// What is ruled out in them.
     pub(super) held: HeldIx,
 }
 

@@ -2,8 +2,8 @@
 //!
 //! A least fixpoint builds every voltage up from the rails. That is right while a condition ("can this gate turn its channel on")
 //! speaks of voltages that do not depend on what the condition lets through. In a ring they do, and the least fixpoint finds the
-//! state that the rails force, not one that only holds itself. So conditions in a ring are judged by ranges that are known
-//! to hold already (`held.rs`), and this module says which conditions those are.
+//! state that the rails force, not one that only holds itself. So gates in a ring are held open until their channels are ruled
+//! out (`held.rs`), and this module says which gates those are.
 //!
 //! The graph has two nodes for each net, its high and its low end. What carries current joins the ends of its nets, each side
 //! by itself; a gate leads from the end that opens its channel (n: high) to both ends of the channel. A rail is no node:
@@ -35,12 +35,8 @@ pub(super) const NO_RING: RingIx = 0;
 /// The rings in a context.
 #[derive(Clone, Debug, Default)]
 pub(super) struct Ring {
-    /// For each device, whether its gate is in a ring; empty where none is.
+    /// For each device, whether the condition on its gate is in a ring; empty where none is.
     held: Vec<bool>,
-    /// The nets of those gates, in order.
-    pub(super) gates: Vec<NetIx>,
-    /// For each net, its place among the gates.
-    place: HashMap<NetIx, u32>,
     /// For each instance statement, its rings; empty where none has any.
     below: Vec<RingIx>,
 }
@@ -56,9 +52,9 @@ impl Ring {
         self.below.get(instance.0 as usize).copied().unwrap_or(NO_RING)
     }
 
-    /// The place of a held gate among them all.
-    pub(super) fn place(&self, gate: NetIx) -> Option<usize> {
-        self.place.get(&gate).map(|&place| place as usize)
+    /// The devices whose conditions are in a ring.
+    pub(super) fn held(&self) -> impl Iterator<Item = DeviceIx> + '_ {
+        self.held.iter().zip(0..).filter(|&(&held, _)| held).map(|(_, device)| DeviceIx(device))
     }
 }
 
@@ -220,16 +216,7 @@ impl<'s> Finder<'_, 's> {
         let next = self.rings.all.len() as RingIx;
         let ring = *self.known.entry((at, held.clone(), below.clone())).or_insert(next);
         if ring == next {
-            let mut gates: Vec<NetIx> = template
-                .devices()
-                .filter(|device| held.get(device.0 as usize) == Some(&true))
-                .filter_map(|device| self.control(graph, device))
-                .map(|(gate, ..)| gate)
-                .collect();
-            gates.sort_unstable();
-            gates.dedup();
-            let place = gates.iter().zip(0..).map(|(&gate, place)| (gate, place)).collect();
-            self.rings.all.push(Ring { held, gates, place, below });
+            self.rings.all.push(Ring { held, below });
         }
         ring
     }

@@ -116,6 +116,13 @@ impl<'s> Shared<'s> {
         self.kept.borrow_mut().remove(&number)
     }
 
+    /// Gives a finished state back, for whoever asks next.
+    pub(super) fn keep_state(&self, key: &InputKey, state: State) {
+        if let Some(&number) = self.known.borrow().get(key) {
+            self.kept.borrow_mut().insert(number, state);
+        }
+    }
+
     /// The rails that are declared in a context itself, with their values in each frame.
     pub(super) fn rails_in(&self, at: ContextIx, mode: u32) -> Vec<(NetIx, Vec<Interval>)> {
         let context = self.contexts.get(at);

@@ -35,7 +35,7 @@ pub(super) struct Solver<'s> {
     pub(super) caps: Caps,
     pub(super) ring: &'s Ring,
     held: HeldIx,
-    held_values: Arc<[f64]>,
+    pub(super) ruled_out: Arc<[u64]>,
     queue: VecDeque<u32>,
     queued: Vec<bool>,
     waiting: Vec<Waiting>,
@@ -74,7 +74,7 @@ impl<'s> Solver<'s> {
             caps: Caps::default(),
             ring: shared.rings.get(inputs.ring),
             held: inputs.held,
-            held_values: shared.held.borrow().values(inputs.held),
+            ruled_out: shared.held.borrow().ruled_out(inputs.held),
             queue: VecDeque::new(),
             queued: vec![false; template.nets.len()],
             waiting: vec![Waiting::Not; template.instances.len()],
@@ -117,7 +117,7 @@ impl<'s> Solver<'s> {
             caps,
             ring: shared.rings.get(ring),
             held,
-            held_values: shared.held.borrow().values(held),
+            ruled_out: shared.held.borrow().ruled_out(held),
             queue: VecDeque::new(),
             queued: Vec::new(),
             waiting: Vec::new(),
@@ -390,10 +390,10 @@ impl<'s> Solver<'s> {
         inputs
     }
 
-    /// The end of a gate's range that conditions in rings are judged by.
-    pub(super) fn held(&self, gate: NetIx, frame: usize, side: Side) -> f64 {
-        let place = if self.held_values.is_empty() { None } else { self.ring.place(gate) };
-        place.map_or(f64::INFINITY, |place| self.held_values[(place * self.state.frames + frame) * 2 + side.index()])
+    /// Whether an earlier round ruled out that a device conducts at one end of its channel.
+    pub(super) fn is_ruled_out(&self, device: DeviceIx, end: usize) -> bool {
+        let at = device.0 as usize * 2 + end;
+        self.ruled_out.get(at / 64).is_some_and(|word| word >> (at % 64) & 1 == 1)
     }
 
     /// What clamps and body diodes say of V(x) − V(y).

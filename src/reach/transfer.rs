@@ -14,7 +14,7 @@ struct Gate {
     /// The end of its range that opens the channel, and that limits how far the channel lifts that end of its nets.
     limited: Side,
     threshold: f64,
-    /// Whether its condition is in a ring, so that it is judged by what is held of the gate.
+    /// Whether its condition is in a ring: then it conducts unless that was ruled out.
     held: bool,
 }
 
@@ -65,11 +65,30 @@ impl Solver<'_> {
         }
     }
 
+    /// At which ends of its channel a finished run rules out that a device conducts: the gate never gets beyond its threshold there.
+    pub(super) fn rules_out(&self, device: DeviceIx) -> [bool; 2] {
+        let pins = self.template.device_pins(device);
+        let root = |pin: u8| self.context.root(pins[pin as usize]);
+        match self.terminals[self.template.types[device.0 as usize].0 as usize] {
+            Terminals::Mos { d, g, s, n, threshold, .. } => {
+                [root(d), root(s)].map(|end| root(g) != end && self.never_beyond(root(g), end, n, threshold))
+            }
+            Terminals::Bipolar { b, e, n, .. } => [self.never_beyond(root(b), root(e), n, 0.0), false],
+            _ => [false; 2],
+        }
+    }
+
+    fn never_beyond(&self, gate: NetIx, x: NetIx, n: bool, threshold: f64) -> bool {
+        let (high, low) = if n { (gate, x) } else { (x, gate) };
+        let most = |frame| self.state.reach(high, frame).hi - self.state.reach(low, frame).lo;
+        (0..self.state.frames).any(|frame| most(frame) <= threshold)
+    }
+
     /// A MOS channel. On the limited side (n: high) a net follows its neighbour up to a threshold from the gate; on the other
     /// side it follows fully, if the channel can conduct there.
     fn channel(&mut self, d: NetIx, s: NetIx, gate: Gate, by: u32) {
         let (limited, full) = (gate.limited, gate.limited.other());
-        let (at_d, at_s) = (self.conducts(gate, d), self.conducts(gate, s));
+        let (at_d, at_s) = (self.conducts(gate, d, (by, 0)), self.conducts(gate, s, (by, 1)));
         // A ring of depletion devices can hold itself up: each adds what it needs.
         let held = gate.held && gate.threshold <= 0.0;
         if (at_d || at_s) && self.passes_drive(gate) {
@@ -92,12 +111,15 @@ impl Solver<'_> {
     }
 
     /// Whether the gate can pass its threshold against the channel's end `x`.
-    fn conducts(&self, gate: Gate, x: NetIx) -> bool {
+    fn conducts(&self, gate: Gate, x: NetIx, (device, end): (u32, usize)) -> bool {
         if gate.threshold == f64::NEG_INFINITY {
             return true;
         }
         if gate.net == x {
             return gate.threshold < 0.0;
+        }
+        if gate.held && self.is_ruled_out(DeviceIx(device), end) {
+            return false;
         }
         // What clamps say is asked only where the frames alone would let it conduct.
         self.beyond(gate, x) > gate.threshold && self.bounded_beyond(gate, x) > gate.threshold
@@ -137,7 +159,7 @@ impl Solver<'_> {
     }
 
     fn gate_end(&self, gate: Gate, held: bool, frame: usize) -> f64 {
-        if held { self.held(gate.net, frame, gate.limited) } else { self.state.value(gate.net, frame, gate.limited) }
+        if held { f64::INFINITY } else { self.state.value(gate.net, frame, gate.limited) }
     }
 
     /// A junction: its cathode follows its anode up, its anode follows its cathode down.
@@ -173,7 +195,9 @@ impl Solver<'_> {
 
     fn bipolar(&mut self, c: NetIx, base: Gate, e: NetIx, by: u32) {
         let (b, limited, full) = (base.net, base.limited, base.limited.other());
-        let on = b != e && self.beyond(base, e).min(self.bounded_beyond(base, e)) > 0.0;
+        let on = b != e
+            && !(base.held && self.is_ruled_out(DeviceIx(by), 0))
+            && self.beyond(base, e).min(self.bounded_beyond(base, e)) > 0.0;
         if on && self.passes_drive(base) {
             self.drive(c, e);
             self.drive(b, e);
