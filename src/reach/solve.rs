@@ -39,6 +39,10 @@ pub(super) struct Solver<'s> {
     queue: VecDeque<u32>,
     queued: Vec<bool>,
     waiting: Vec<Waiting>,
+    /// For each net, how often it grew.
+    grew: Vec<u32>,
+    /// For each instance, how often its nets had grown when it had answered last.
+    answered: Vec<u64>,
     ask: VecDeque<u32>,
     ask_later: VecDeque<u32>,
 }
@@ -78,6 +82,8 @@ impl<'s> Solver<'s> {
             queue: VecDeque::new(),
             queued: vec![false; template.nets.len()],
             waiting: vec![Waiting::Not; template.instances.len()],
+            grew: if template.instances.is_empty() { Vec::new() } else { vec![0; template.nets.len()] },
+            answered: vec![u64::MAX; template.instances.len()],
             ask: VecDeque::new(),
             ask_later: VecDeque::new(),
         };
@@ -121,6 +127,8 @@ impl<'s> Solver<'s> {
             queue: VecDeque::new(),
             queued: Vec::new(),
             waiting: Vec::new(),
+            grew: Vec::new(),
+            answered: Vec::new(),
             ask: VecDeque::new(),
             ask_later: VecDeque::new(),
         }
@@ -260,8 +268,18 @@ impl<'s> Solver<'s> {
         loop {
             self.settle_devices(&pins);
             let Some(instance) = self.next_to_ask() else { break };
-            self.ask_instance(InstanceIx(instance));
+            // Told its own answer and nothing else, a cell has nothing to add.
+            if self.growth(InstanceIx(instance)) != self.answered[instance as usize] {
+                self.ask_instance(InstanceIx(instance));
+                self.answered[instance as usize] = self.growth(InstanceIx(instance));
+            }
         }
+    }
+
+    /// How often the nets of an instance have grown, all together.
+    fn growth(&self, instance: InstanceIx) -> u64 {
+        let pins = self.template.instance_pins(instance);
+        pins.iter().map(|&net| u64::from(self.grew[self.context.root(net).0 as usize])).sum()
     }
 
     fn ask_soon(&mut self, instance: u32) {
@@ -447,6 +465,9 @@ impl<'s> Solver<'s> {
     }
 
     fn touch(&mut self, net: NetIx) {
+        if let Some(grew) = self.grew.get_mut(net.0 as usize) {
+            *grew += 1;
+        }
         if !self.state.fixed[net.0 as usize] && !std::mem::replace(&mut self.queued[net.0 as usize], true) {
             self.queue.push_back(net.0);
         }
