@@ -7,7 +7,7 @@
 #![allow(clippy::unwrap_used, clippy::panic, reason = "a test that cannot go on must stop")]
 
 use drainwise::load::Memory;
-use drainwise::pipeline::{Job, Progress};
+use drainwise::pipeline::{Job, Progress, lint};
 use drainwise::tracing::trace;
 use std::collections::BTreeMap;
 
@@ -142,6 +142,40 @@ MN2 pb nb VSS VSS n5 w=4u l=1u",
     );
     holds(&all, "nb", "", "0", (0.0, 5.0));
     holds(&all, "pb", "", "0", (0.0, 5.0));
+}
+
+/// By rule, the devices that `lint` finds.
+fn found(top: &str, rails: &str, rule: &str) -> Vec<String> {
+    let files = Memory::new()
+        .with("t.sp", format!("* t\n{CELLS}.subckt top {top}\n.ends\n"))
+        .with("d.yaml", format!("use: [builtin:ldmos]\n{DECK}{rails}\n"));
+    let job = Job { netlists: vec!["t.sp".into()], decks: vec!["d.yaml".into()], ..Job::default() };
+    let outcome = lint(&files, &job, &Quiet);
+    assert!(!outcome.could_not, "{:?}", outcome.report.diagnostics);
+    let of_rule = outcome.report.diagnostics.iter().filter(|diagnostic| diagnostic.code == rule);
+    let mut devices: Vec<String> =
+        of_rule.filter_map(|diagnostic| Some(diagnostic.finding.as_ref()?.device.clone())).collect();
+    devices.sort();
+    devices
+}
+
+/// Crossed inverters drive each other whatever they hold. A loop of mirrors without a start-up may drive nothing: no current, no state.
+#[test]
+fn a_latch_at_rest_does_not_float_and_a_loop_without_start_up_does() {
+    let rails = "rails: {VSS: 0V, VDD: 5V, S: 0V..5V, R: 0V..5V}\nmodes: {set: {S: 5V, R: 0V}, keep: {S: 0V, R: 0V}}";
+    let nors = "VDD VSS S R\nXA R qb q VDD VSS nor2\nXB S q qb VDD VSS nor2\nXO q out VDD VSS inv";
+    assert_eq!(found(nors, rails, "gate-floats"), Vec::<String>::new());
+    let keeper = "VDD VSS S R
+MW S R q VSS n5 w=4u l=1u
+X1 q qb VDD VSS inv
+X2 qb q VDD VSS inv";
+    assert_eq!(found(keeper, rails, "gate-floats"), Vec::<String>::new());
+    let mirrors = "VDD VSS
+MP1 pb pb VDD VDD p5 w=4u l=1u
+MP2 nb pb VDD VDD p5 w=4u l=1u
+MN1 nb nb VSS VSS n5 w=4u l=1u
+MN2 pb nb VSS VSS n5 w=4u l=1u";
+    assert_eq!(found(mirrors, FIVE, "gate-floats"), ["MN1", "MN2", "MP1", "MP2"]);
 }
 
 /// Depletion devices conduct with their gates on their sources: a load lifts its output to the supply.

@@ -108,7 +108,7 @@ mod tests {
                 graph.add_edge(nodes[from as usize], nodes[to as usize], ());
                 prop_assert!(ours[to as usize] <= ours[from as usize]);
             }
-            let mut theirs = vec![usize::MAX; 24];
+            let mut theirs = [usize::MAX; 24];
             for (number, members) in kosaraju_scc(&graph).into_iter().enumerate() {
                 members.into_iter().for_each(|member| theirs[member.index()] = number);
             }
