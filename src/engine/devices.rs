@@ -47,6 +47,7 @@ pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> (Vec<Diagnostic>, Vec<
             let mut view = None;
             for ready in asked {
                 let seen = ready.quick.see(&glance);
+                debug_assert!(agrees(seen, &ready.page, &DeviceView::for_verdict(world, at, device, shape.class())));
                 if seen == Seen::Fine {
                     continue;
                 }
@@ -67,6 +68,16 @@ pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> (Vec<Diagnostic>, Vec<
     }
     let left_out = folds.left_out();
     (folds.all.into_iter().map(|folded| finding::of_device(world, rules, folded)).collect(), left_out)
+}
+
+/// Whether a glance says what the rule says when it is asked in full. Held in builds for tests.
+fn agrees(seen: Seen, rule: &Rule, view: &DeviceView<'_>) -> bool {
+    let verdict = ask(rule, view).map(|(verdict, _)| verdict);
+    match seen {
+        Seen::Fine => verdict.is_none(),
+        Seen::Fails(expected) => verdict == Some(expected),
+        Seen::Unsure => true,
+    }
 }
 
 /// The rules that can apply to a class at all, those whose `where` is not false whatever the instance is; each with its

@@ -31,6 +31,11 @@ impl<'w> Shape<'w> {
             is_depletion: class.threshold.is_some_and(|threshold| threshold.lo < 0.0),
         }
     }
+
+    /// The class.
+    pub fn class(&self) -> &'w Class {
+        self.class
+    }
 }
 
 /// All devices of one context, to be glanced at one after another.
@@ -194,11 +199,17 @@ impl Glance<'_> {
         if self.shape.class.kind == Kind::Pmos { range.negated() } else { range }
     }
 
-    /// That it is not: the drain can be on the blocking side in some mode.
+    /// Whether the drain can be on the blocking side of the source in some mode. Where the device's body is on its drain, its body
+    /// diode conducts before the drain can block anything, whatever the ranges of the two nets say.
+    pub(super) fn can_block(&self, d: usize, s: usize) -> bool {
+        let body = self.shape.class.pin("b");
+        let never = self.share(body, Some(d)) && !self.share(body, Some(s));
+        !never && self.modes().any(|mode| self.upright(mode, d, s).known_hi().is_some_and(|hi| hi > TOLERANCE))
+    }
+
     fn is_swapped(&self) -> Option<Truth> {
         let (Some(d), Some(s)) = (self.shape.d, self.shape.s) else { return Some(Truth::No) };
-        let blocks = |mode| self.upright(mode, d, s).known_hi().is_some_and(|hi| hi > TOLERANCE);
-        self.modes().any(blocks).then_some(Truth::No)
+        self.can_block(d, s).then_some(Truth::No)
     }
 
     /// Whether some conducting path ties the gate to a rail, and in every mode one of these paths can conduct. What hangs on

@@ -74,7 +74,7 @@ impl DeviceView<'_> {
 
     /// Whether all rated pairs stay inside their ratings in every mode; notes those that do not, the worst one with numbers.
     pub(super) fn ratings_held(&self) -> Value {
-        let glance = Surroundings::new(self.world, self.at).glance(self.device, Shape::of(self.class));
+        let glance = self.glance();
         let judged: Vec<_> = self.class.ratings.iter().map(|rating| (rating, glance.judge_rating(rating))).collect();
         let violated: Vec<_> =
             judged.iter().filter_map(|(rating, (_, worst))| worst.map(|worst| (*rating, worst))).collect();
