@@ -222,7 +222,8 @@ pub fn run() -> u8 {
 }
 
 fn job(netlists: Vec<PathBuf>, inputs: &Inputs) -> Job {
-    Job { netlists, decks: inputs.deck.clone(), top: inputs.top.clone(), modes: inputs.mode.clone(), ..Job::default() }
+    let (decks, top, modes) = (inputs.deck.clone(), inputs.top.clone(), inputs.mode.clone());
+    Job { netlists, decks, top, modes, last: true, ..Job::default() }
 }
 
 fn run_lint(lint: Lint) -> io::Result<u8> {
@@ -239,6 +240,7 @@ fn run_lint(lint: Lint) -> io::Result<u8> {
     let look = output.look();
     output.write(|out| write(&outcome, lint.format, &setting, look, out))?;
     output.finish()?;
+    std::mem::forget(outcome);
     Ok(setting.exit_code)
 }
 

@@ -43,6 +43,8 @@ pub struct Job {
     pub baseline: Option<PathBuf>,
     /// The day against which waivers are held; none: today.
     pub today: Option<Date>,
+    /// The process ends with this run: what was built is left for the system to take back at once, instead of piece by piece.
+    pub last: bool,
 }
 
 /// What a run of `lint` gives.
@@ -193,11 +195,15 @@ pub fn with_world<R>(
         shown_decks,
     };
     let result = work(World { deck: &deck, design: &design, contexts: &contexts, reach: &reach, roles: &roles }, seen);
-    drop(roles);
-    drop(reach);
-    drop(contexts);
-    drop(design);
+    put_away(job, roles);
+    put_away(job, reach);
+    put_away(job, contexts);
+    put_away(job, design);
     (sources, result)
+}
+
+fn put_away<T>(job: &Job, built: T) {
+    if job.last { std::mem::forget(built) } else { drop(built) }
 }
 
 /// What reading found, beside the world.

@@ -1,9 +1,10 @@
 //! All contexts of a design with their reaches: the fixpoint from the top, then every cell in each of its surroundings.
 
+use super::bounds::{Caps, PairBounds};
 use super::frames::{Frames, TopFacts};
 use super::held::{Held, HeldIx, WIDEST, settle};
 use super::inputs::{InputKey, Inputs};
-use super::plan::{Cap, Ground, PairBounds, Plans};
+use super::plan::{Cap, Ground, Plans};
 use super::rings::{RingIx, Rings};
 use super::shared::Shared;
 use super::solve::Solver;
@@ -39,7 +40,7 @@ pub struct ReachContext {
     pub(super) open: Vec<bool>,
     /// For each mode.
     pub(super) bounds: Vec<PairBounds>,
-    pub(super) caps: Vec<HashMap<NetIx, Vec<f64>>>,
+    pub(super) caps: Vec<Caps>,
     /// For each mode, its rings and what is ruled out in them.
     held: Vec<(RingIx, HeldIx)>,
 }
@@ -160,6 +161,9 @@ impl<'r> Reach<'r> {
 
     /// The dotted path of the first instance in a context; empty for a top.
     pub fn path(&self, at: ReachIx) -> String {
+        if self.get(at).parents.is_empty() {
+            return String::new();
+        }
         paths::all(at.0, 1, |at| self.above(at)).0.pop().unwrap_or_default()
     }
 

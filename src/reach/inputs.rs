@@ -31,34 +31,34 @@ pub(super) struct Inputs {
     pub(super) held: HeldIx,
 }
 
-/// The inputs as a key: values by their bits.
+/// The inputs as a key: all of them as numbers, values by their bits, in one piece.
 #[derive(Clone, Debug, PartialEq, Eq, Hash)]
-pub(super) struct InputKey {
-    pub(super) at: ContextIx,
-    pub(super) mode: u32,
-    bits: Vec<u64>,
-    flags: Vec<u8>,
-    bounds: Vec<(u32, u32, u64, u64)>,
-    ring: RingIx,
-    held: HeldIx,
-}
+pub(super) struct InputKey(Box<[u64]>);
 
 impl Inputs {
     pub(super) fn key(&self, at: ContextIx, mode: u32) -> InputKey {
-        InputKey {
-            at,
-            mode,
-            bits: self
-                .values
-                .iter()
-                .chain(&self.caps)
-                .map(|value| if *value == 0.0 { 0 } else { value.to_bits() })
-                .collect(),
-            flags: self.flags(),
-            bounds: self.bounds.iter().map(|(x, y, range)| (*x, *y, range.lo.to_bits(), range.hi.to_bits())).collect(),
-            ring: self.ring,
-            held: self.held,
+        let mut numbers = Vec::with_capacity(
+            3 + self.values.len() + self.caps.len() + self.drive.len().div_ceil(8) + self.bounds.len() * 3,
+        );
+        let pair = |high: u32, low: u32| u64::from(high) << 32 | u64::from(low);
+        // How many values, caps and bounds there are stands in front, so that no two inputs look alike.
+        numbers.extend([
+            pair(at.0, mode),
+            pair(self.ring, self.held),
+            pair(self.caps.len() as u32, self.bounds.len() as u32),
+        ]);
+        let bits = |value: &f64| if *value == 0.0 { 0 } else { value.to_bits() };
+        numbers.extend(self.values.iter().map(bits));
+        numbers.extend(self.caps.iter().map(bits));
+        let mut flags = (0..self.drive.len()).map(|at| self.flags(at));
+        while let Some(first) = flags.next() {
+            let eight = flags.by_ref().take(7).fold(u64::from(first), |packed, flag| packed << 8 | u64::from(flag));
+            numbers.push(eight);
         }
+        for &(x, y, range) in &self.bounds {
+            numbers.extend([pair(x, y), range.lo.to_bits(), range.hi.to_bits()]);
+        }
+        InputKey(numbers.into_boxed_slice())
     }
 
     /// These inputs after the context has added its answer.
@@ -76,11 +76,8 @@ impl Inputs {
         joined
     }
 
-    fn flags(&self) -> Vec<u8> {
-        let flag = |at: usize| {
-            u8::from(self.fixed[at]) | u8::from(self.tied[at]) << 1 | u8::from(self.open[at]) << 2 | self.drive[at] << 3
-        };
-        (0..self.drive.len()).map(flag).collect()
+    fn flags(&self, at: usize) -> u8 {
+        u8::from(self.fixed[at]) | u8::from(self.tied[at]) << 1 | u8::from(self.open[at]) << 2 | self.drive[at] << 3
     }
 }
 

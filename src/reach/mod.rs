@@ -18,6 +18,7 @@
 //! **Guarantee.** If every rail stays in its declared range, current sources stay within their compliance, and no capacitor or
 //! inductor kicks an undeclared net, a quasi-static simulation never shows a driven net outside its reach.
 
+mod bounds;
 mod components;
 mod expand;
 mod frames;

@@ -1,9 +1,10 @@
 //! The fixpoint of one context in one mode.
 
+use super::bounds::{Caps, PairBounds};
 use super::held::HeldIx;
 use super::inputs::Inputs;
 use super::interval::Interval;
-use super::plan::{PairBounds, Plan};
+use super::plan::Plan;
 use super::rings::{Ring, RingIx};
 use super::shared::Shared;
 use super::state::{ANSWER, DRIVEN, NOTHING, OUTSIDE, Side, State};
@@ -11,7 +12,6 @@ use super::terminals::Terminals;
 use super::touch::{Toucher, Touches};
 use crate::design::{DeviceIx, InstanceIx, NetIx, Template, VariantIx};
 use crate::graph::{Context, ContextIx};
-use hashbrown::HashMap;
 use std::collections::VecDeque;
 use std::sync::Arc;
 
@@ -32,14 +32,28 @@ pub(super) struct Solver<'s> {
     pub(super) tied: Vec<bool>,
     pub(super) open: Vec<bool>,
     pub(super) bounds: PairBounds,
-    pub(super) caps: HashMap<NetIx, Vec<f64>>,
+    pub(super) caps: Caps,
     pub(super) ring: &'s Ring,
     held: HeldIx,
     pub(super) ruled_out: Arc<[u64]>,
     queue: VecDeque<u32>,
     queued: Vec<bool>,
-    asked: Vec<bool>,
+    waiting: Vec<Waiting>,
+    /// For each net, how often it grew.
+    grew: Vec<u32>,
+    /// For each instance, how often its nets had grown when it had answered last.
+    answered: Vec<u64>,
     ask: VecDeque<u32>,
+    ask_later: VecDeque<u32>,
+}
+
+/// In which list an instance waits to be asked.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+enum Waiting {
+    Not,
+    Soon,
+    /// Until all its inputs have a range, or nothing else is left to do.
+    Later,
 }
 
 impl<'s> Solver<'s> {
@@ -61,14 +75,17 @@ impl<'s> Solver<'s> {
             tied: Vec::new(),
             open: Vec::new(),
             bounds: PairBounds::default(),
-            caps: HashMap::new(),
+            caps: Caps::default(),
             ring: shared.rings.get(inputs.ring),
             held: inputs.held,
             ruled_out: shared.held.borrow().ruled_out(inputs.held),
             queue: VecDeque::new(),
             queued: vec![false; template.nets.len()],
-            asked: vec![false; template.instances.len()],
+            waiting: vec![Waiting::Not; template.instances.len()],
+            grew: if template.instances.is_empty() { Vec::new() } else { vec![0; template.nets.len()] },
+            answered: vec![u64::MAX; template.instances.len()],
             ask: VecDeque::new(),
+            ask_later: VecDeque::new(),
         };
         solver.take_inputs(inputs);
         solver.fix_rails();
@@ -85,7 +102,7 @@ impl<'s> Solver<'s> {
         mode: u32,
         state: State,
         (tied, open): (Vec<bool>, Vec<bool>),
-        (bounds, caps): (PairBounds, HashMap<NetIx, Vec<f64>>),
+        (bounds, caps): (PairBounds, Caps),
         (ring, held): (RingIx, HeldIx),
     ) -> Solver<'s> {
         let context = shared.contexts.get(at);
@@ -109,8 +126,11 @@ impl<'s> Solver<'s> {
             ruled_out: shared.held.borrow().ruled_out(held),
             queue: VecDeque::new(),
             queued: Vec::new(),
-            asked: Vec::new(),
+            waiting: Vec::new(),
+            grew: Vec::new(),
+            answered: Vec::new(),
             ask: VecDeque::new(),
+            ask_later: VecDeque::new(),
         }
     }
 
@@ -200,14 +220,15 @@ impl<'s> Solver<'s> {
         for &(x, y, range) in &inputs.bounds {
             self.bounds.add(self.context.root(boundary[x as usize]), self.context.root(boundary[y as usize]), range);
         }
-        let all: Vec<(NetIx, NetIx, Interval)> = self.plan.bounds.iter().chain(self.bounds.iter()).collect();
-        for (x, y, range) in all {
+        let bounds = std::mem::take(&mut self.bounds);
+        for (x, y, range) in self.plan.bounds.iter().chain(bounds.iter()) {
             match (self.state.fixed[x.0 as usize], self.state.fixed[y.0 as usize]) {
                 (false, true) => self.cap(x, y, range),
                 (true, false) => self.cap(y, x, range.negated()),
                 _ => {}
             }
         }
+        self.bounds = bounds;
     }
 
     fn take_caps(&mut self, inputs: &Inputs) {
@@ -215,7 +236,7 @@ impl<'s> Solver<'s> {
         for (position, net) in self.template.boundary().enumerate() {
             let outside = &inputs.caps[position * ends..(position + 1) * ends];
             if outside.iter().any(|cap| cap.is_finite()) {
-                let caps = self.caps.entry(self.context.root(net)).or_insert_with(|| vec![f64::INFINITY; ends]);
+                let caps = self.caps.lower(self.context.root(net), self.template.nets.len(), ends);
                 caps.iter_mut().zip(outside).for_each(|(cap, &outside)| *cap = cap.min(outside));
             }
         }
@@ -224,7 +245,7 @@ impl<'s> Solver<'s> {
     /// V(net) − V(rail) stays in the range.
     fn cap(&mut self, net: NetIx, rail: NetIx, range: Interval) {
         let frames = self.state.frames;
-        let caps = self.caps.entry(net).or_insert_with(|| vec![f64::INFINITY; frames * 2]);
+        let caps = self.caps.lower(net, self.template.nets.len(), frames * 2);
         for frame in 0..frames {
             let (hi, lo) = (self.state.value(rail, frame, Side::Hi), self.state.value(rail, frame, Side::Lo));
             caps[frame * 2] = caps[frame * 2].min(hi + range.hi);
@@ -241,16 +262,58 @@ impl<'s> Solver<'s> {
             return self.sweep();
         }
         for instance in 0..self.template.instances.len() as u32 {
-            self.ask.push_back(instance);
-            self.asked[instance as usize] = true;
+            self.ask_soon(instance);
         }
         let pins = Touches::new(self.template, self.context, &self.state.fixed);
         loop {
             self.settle_devices(&pins);
-            let Some(instance) = self.ask.pop_front() else { break };
-            self.asked[instance as usize] = false;
-            self.ask_instance(InstanceIx(instance));
+            let Some(instance) = self.next_to_ask() else { break };
+            // Told its own answer and nothing else, a cell has nothing to add.
+            if self.growth(InstanceIx(instance)) != self.answered[instance as usize] {
+                self.ask_instance(InstanceIx(instance));
+                self.answered[instance as usize] = self.growth(InstanceIx(instance));
+            }
         }
+    }
+
+    /// How often the nets of an instance have grown, all together.
+    fn growth(&self, instance: InstanceIx) -> u64 {
+        let pins = self.template.instance_pins(instance);
+        pins.iter().map(|&net| u64::from(self.grew[self.context.root(net).0 as usize])).sum()
+    }
+
+    fn ask_soon(&mut self, instance: u32) {
+        if std::mem::replace(&mut self.waiting[instance as usize], Waiting::Soon) != Waiting::Soon {
+            self.ask.push_back(instance);
+        }
+    }
+
+    /// The next instance to ask. One whose inputs have no range yet waits: it would be asked again when they do. In what order
+    /// instances are asked changes no range.
+    fn next_to_ask(&mut self) -> Option<u32> {
+        while let Some(instance) = self.ask.pop_front() {
+            if self.has_its_inputs(InstanceIx(instance)) {
+                self.waiting[instance as usize] = Waiting::Not;
+                return Some(instance);
+            }
+            self.waiting[instance as usize] = Waiting::Later;
+            self.ask_later.push_back(instance);
+        }
+        while let Some(instance) = self.ask_later.pop_front() {
+            if self.waiting[instance as usize] == Waiting::Later {
+                self.waiting[instance as usize] = Waiting::Not;
+                return Some(instance);
+            }
+        }
+        None
+    }
+
+    fn has_its_inputs(&self, instance: InstanceIx) -> bool {
+        let listens = self.shared.plans.get(self.context.children[instance.0 as usize]).listens();
+        self.template.instance_pins(instance).iter().zip(listens).filter(|&(_, &listens)| listens).all(|(&net, _)| {
+            let at = self.state.at(self.context.root(net), 0, Side::Hi);
+            self.state.values[at] != NOTHING && self.state.values[at + 1] != NOTHING
+        })
     }
 
     /// A small cell needs no list of who stands where: all its devices are asked again until nothing changes.
@@ -270,11 +333,7 @@ impl<'s> Solver<'s> {
             for toucher in touches.on(NetIx(net)) {
                 match toucher {
                     Toucher::Device(device) => self.apply(device),
-                    Toucher::Instance(instance) => {
-                        if !std::mem::replace(&mut self.asked[instance.0 as usize], true) {
-                            self.ask.push_back(instance.0);
-                        }
-                    }
+                    Toucher::Instance(instance) => self.ask_soon(instance.0),
                 }
             }
         }
@@ -324,9 +383,9 @@ impl<'s> Solver<'s> {
             inputs.open.push(self.open[self.plan.group(net) as usize]);
             distinct.push((net, position as u32));
         }
-        if distinct.iter().any(|(net, _)| self.caps.contains_key(net)) {
+        if distinct.iter().any(|&(net, _)| self.caps.of(net).is_some()) {
             for (net, _) in &distinct {
-                match self.caps.get(net) {
+                match self.caps.of(*net) {
                     Some(caps) => inputs.caps.extend_from_slice(caps),
                     None => inputs.caps.extend(std::iter::repeat_n(f64::INFINITY, frames * 2)),
                 }
@@ -335,7 +394,7 @@ impl<'s> Solver<'s> {
         if !self.plan.bounds.is_empty() || !self.bounds.is_empty() {
             distinct.sort_unstable();
             distinct.dedup_by_key(|&mut (net, _)| net);
-            let spoken_of = |net: NetIx| self.plan.bounded[net.0 as usize] || !self.bounds.is_empty();
+            let spoken_of = |net: NetIx| self.plan.bounds.speaks_of(net) || !self.bounds.is_empty();
             distinct.retain(|(net, _)| spoken_of(*net));
             for &(x, at_x) in distinct.iter().filter(|(net, _)| !self.state.fixed[net.0 as usize]) {
                 for &(y, at_y) in &distinct {
@@ -357,7 +416,7 @@ impl<'s> Solver<'s> {
 
     /// What clamps and body diodes say of V(x) − V(y).
     pub(super) fn pair_bound(&self, x: NetIx, y: NetIx) -> Interval {
-        let spoken_of = |net: NetIx| self.plan.bounded[net.0 as usize];
+        let spoken_of = |net: NetIx| self.plan.bounds.speaks_of(net);
         if self.bounds.is_empty() && !(spoken_of(x) && spoken_of(y))
             || self.state.fixed[x.0 as usize] && self.state.fixed[y.0 as usize]
         {
@@ -370,16 +429,19 @@ impl<'s> Solver<'s> {
         self.shared.design.source_range(self.variant, device)
     }
 
+    #[inline]
     pub(super) fn raise(&mut self, net: NetIx, frame: usize, side: Side, value: f64, by: u32) {
-        if value == NOTHING || self.state.fixed[net.0 as usize] {
+        // Most raises are none: that is seen first. (What is not above [`NOTHING`] is nothing.)
+        let at = self.state.at(net, frame, side);
+        let least = self.state.values[at] + 1e-12;
+        if value <= least || self.state.fixed[net.0 as usize] {
             return;
         }
-        let value = match self.caps.get(&net) {
+        let value = match self.caps.of(net) {
             Some(caps) => value.min(caps[frame * 2 + side.index()]),
             None => value,
         };
-        let at = self.state.at(net, frame, side);
-        if value > self.state.values[at] + 1e-12 {
+        if value > least {
             self.state.values[at] = value;
             if let Some(setter) = self.state.setters.get_mut(at) {
                 *setter = by;
@@ -403,6 +465,9 @@ impl<'s> Solver<'s> {
     }
 
     fn touch(&mut self, net: NetIx) {
+        if let Some(grew) = self.grew.get_mut(net.0 as usize) {
+            *grew += 1;
+        }
         if !self.state.fixed[net.0 as usize] && !std::mem::replace(&mut self.queued[net.0 as usize], true) {
             self.queue.push_back(net.0);
         }
