@@ -465,6 +465,12 @@ pub fn base(files: &dyn Files) -> Base {
     Base::new(root, here)
 }
 
+/// The deck that a netlist belongs to: the nearest `drainwise.yaml` upward.
+pub fn deck_of(files: &dyn Files, netlist: &Path) -> Option<PathBuf> {
+    let job = Job { netlists: vec![netlist.to_owned()], ..Job::default() };
+    nearest_deck(files, &job).into_iter().next()
+}
+
 /// The nearest `drainwise.yaml` upward from the first netlist, or from here.
 fn nearest_deck(files: &dyn Files, job: &Job) -> Vec<PathBuf> {
     let start = job.netlists.first().and_then(|path| path.parent()).unwrap_or(Path::new("")).to_owned();
