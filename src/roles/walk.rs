@@ -18,7 +18,7 @@ use std::hash::Hash;
 use std::rc::Rc;
 
 /// At most so many surroundings of one device are looked at; the instances in the others are counted as not looked at.
-pub const MOST_SURROUNDINGS: usize = 4096;
+pub const MOST_SURROUNDINGS: usize = 64;
 
 /// Walks that know this many devices, or more of them than this, are given up for new ones: what they know costs memory.
 const MOST_KNOWN: usize = 100_000;
