@@ -261,9 +261,15 @@ fn judge(world: World<'_>, mut seen: Seen, job: &Job) -> (Report, bool) {
     diagnostics.extend(hygiene.into_iter().filter_map(|diagnostic| engine::adopt(diagnostic, &rules)));
     let judged = engine::judge(world, &rules);
     diagnostics.extend(judged.findings);
+    if world.roles.is_worn_out() {
+        summary
+            .not_looked_at
+            .push("roles of many devices: recognition gave up, since the design has too many structures".to_owned());
+    }
     if world.roles.unseen() > 0 {
         let (unseen, most) = (world.roles.unseen(), MOST_SURROUNDINGS);
-        let line = format!("roles of {unseen} instances: their cell stands in more than {most} different surroundings");
+        let line =
+            format!("roles of up to {unseen} instances of one cell, which stands in more than {most} surroundings");
         summary.not_looked_at.push(line);
     }
     diagnostics.extend(engine::hygiene(world.design, world.contexts, world.deck, &rules, summary.devices));

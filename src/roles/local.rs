@@ -12,6 +12,11 @@ use std::sync::atomic::{AtomicU64, Ordering};
 /// Nets with more pins than this (in one cell, or in all) are not walked: no structure of the kind that is looked for has as many.
 pub const MOST_PINS: usize = 1000;
 
+/// All questions of a run together walk at most so many pins, and so many for each pin of a context: the work grows with the design, whatever
+/// its structure.
+const LEAST_WORK: u64 = 2_000_000;
+const WORK_PER_PIN: u64 = 4;
+
 /// The ground of recognition: nothing in it is computed before somebody asks.
 pub struct Roles<'r> {
     /// Voltages, with the design and its contexts.
@@ -21,6 +26,8 @@ pub struct Roles<'r> {
     supplies: OnceLock<HashSet<RailSlot>>,
     summary: OnceLock<Summary>,
     unseen: AtomicU64,
+    work: AtomicU64,
+    most_work: u64,
 }
 
 /// What stands on the nets of one context. Nets are roots throughout.
@@ -50,6 +57,9 @@ impl<'r> Roles<'r> {
         let mut locals = Vec::new();
         locals.resize_with(reach.contexts.all.len(), OnceLock::new);
         let terminals = terminals(reach.design);
+        let pins: usize =
+            reach.contexts.all.iter().map(|context| reach.design.template(context.variant).pins.len()).sum();
+        let most_work = LEAST_WORK + WORK_PER_PIN * pins as u64;
         Roles {
             reach,
             terminals,
@@ -57,6 +67,8 @@ impl<'r> Roles<'r> {
             supplies: OnceLock::new(),
             summary: OnceLock::new(),
             unseen: AtomicU64::new(0),
+            work: AtomicU64::new(0),
+            most_work,
         }
     }
 
@@ -73,6 +85,15 @@ impl<'r> Roles<'r> {
     /// Instances whose surroundings were too many to look at all of them, over all questions so far.
     pub fn unseen(&self) -> u64 {
         self.unseen.load(Ordering::Relaxed)
+    }
+
+    /// Whether so many pins were walked that recognition gives up: what is asked from then on is unknown.
+    pub fn is_worn_out(&self) -> bool {
+        self.work.load(Ordering::Relaxed) >= self.most_work
+    }
+
+    pub(super) fn works(&self, pins: u64) {
+        self.work.fetch_add(pins, Ordering::Relaxed);
     }
 
     pub(super) fn leave_unseen(&self, instances: u64) {

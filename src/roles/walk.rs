@@ -133,7 +133,7 @@ impl Surroundings {
     pub fn next(&mut self, ground: &Roles<'_>, now: Standing, above: bool) -> Option<Standing> {
         if above {
             let parents = &ground.reach.get(now.anchor).parents;
-            let room = MOST_SURROUNDINGS.saturating_sub(self.met);
+            let room = if ground.is_worn_out() { 0 } else { MOST_SURROUNDINGS.saturating_sub(self.met) };
             if parents.len() > room {
                 let seen: u64 = parents[..room].iter().map(|&(parent, _)| ground.reach.get(parent).count).sum();
                 self.cut = true;
@@ -420,8 +420,9 @@ impl<'w> Walker<'w> {
             |walker| &mut walker.touching,
             top,
             |walker| {
-                let mut found = Vec::new();
-                let complete = walker.gather(top, &mut found, &mut 0);
+                let (mut found, mut steps) = (Vec::new(), 0);
+                let complete = !walker.ground.is_worn_out() && walker.gather(top, &mut found, &mut steps);
+                walker.ground.works(steps as u64 + 1);
                 if !complete {
                     walker.crowded = Some(top);
                 }
