@@ -9,6 +9,7 @@ use super::local::{MOST_PINS, Roles};
 use crate::declared::{Class, Kind};
 use crate::design::{DeviceIx, Element, InstanceIx, NetIx, Sizes};
 use crate::graph::{Context, Mark, Pin};
+use crate::names::Sym;
 use crate::reach::{Interval, ReachIx, Terminals};
 use hashbrown::{HashMap, HashSet};
 use std::rc::Rc;
@@ -115,6 +116,7 @@ pub struct Walker<'w> {
     way: Vec<Choice>,
     chosen: usize,
     runs: usize,
+    gave_up: bool,
     crowded: Option<Net>,
     touching: HashMap<Net, Option<Rc<Vec<Touching>>>>,
     mos: HashMap<Unit, Option<Mos>>,
@@ -138,6 +140,7 @@ impl<'w> Walker<'w> {
             way: way.iter().map(|&taken| Choice { taken, of: u32::MAX }).collect(),
             chosen: 0,
             runs: 1,
+            gave_up: false,
             crowded: None,
             touching: HashMap::new(),
             mos: HashMap::new(),
@@ -174,11 +177,17 @@ impl<'w> Walker<'w> {
         if self.runs >= MOST_SURROUNDINGS {
             let all = self.ground.reach.get(self.spots[0].at).count;
             self.ground.leave_unseen(all.saturating_sub(MOST_SURROUNDINGS as u64));
+            self.gave_up = true;
             return false;
         }
         let way = std::mem::take(&mut self.way);
         *self = Walker { way, runs: self.runs + 1, ..Walker::new(self.ground, self.spots[0].at) };
         true
+    }
+
+    /// Whether [`Walker::advance`] ended before all surroundings were seen.
+    pub fn gave_up(&self) -> bool {
+        self.gave_up
     }
 
     /// How many instances of the design stand in these surroundings, as far as they were looked at.
@@ -467,6 +476,12 @@ impl<'w> Walker<'w> {
     pub fn class(&self, unit: Unit) -> Option<&'w Class> {
         let template = self.ground.design().template(self.context(unit.spot).variant);
         self.ground.design().class(template, unit.device)
+    }
+
+    /// The model on a device's card.
+    pub fn model(&self, unit: Unit) -> Option<Sym> {
+        let template = self.ground.design().template(self.context(unit.spot).variant);
+        self.ground.design().device_type(template, unit.device).model
     }
 
     /// A MOS transistor with its nets; none where the device is none.
