@@ -13,6 +13,7 @@ use crate::roles::UNCLASSIFIED;
 use serde::Serialize;
 use std::collections::BTreeMap;
 use std::io::{self, Write};
+use std::rc::Rc;
 
 /// What was found.
 #[derive(Clone, Debug, Default)]
@@ -160,6 +161,7 @@ fn undetermined(world: World<'_>) -> Vec<(String, &'static str)> {
 }
 
 fn look_at_devices(world: World<'_>, found: &mut Survey) {
+    let walks = Rc::default();
     let mut counts: BTreeMap<&'static str, u64> = BTreeMap::new();
     for at in world.reach.indices() {
         let template = world.design.template(world.context(at).variant);
@@ -167,9 +169,15 @@ fn look_at_devices(world: World<'_>, found: &mut Survey) {
             let Some(class) = world.design.class(template, device).filter(|class| class.kind.is_mos()) else {
                 continue;
             };
-            let mut view = DeviceView::new(world, at, device, class);
+            let mut view = DeviceView::new(world, at, device, class).sharing(&walks);
             loop {
                 let seen = look_at(&view, class);
+                if view.must_look_above() {
+                    if !view.next_surroundings() {
+                        break;
+                    }
+                    continue;
+                }
                 let roles = seen.roles.iter().map(|(role, _)| *role);
                 for role in roles.chain(seen.roles.is_empty().then_some(UNCLASSIFIED)) {
                     let count = counts.entry(role).or_default();

@@ -51,6 +51,7 @@ impl Question {
 impl Currents<'_, '_> {
     /// The most that everything on a net, but for one element, takes out of it or brings into it; none where that is not known.
     pub(super) fn most_at(&mut self, question: &mut Question, net: Net, but: Unit, way: Way) -> Option<f64> {
+        let net = self.walker.climb(net);
         let mut total = match self.declared_into(net) {
             Some(declared) if way == Way::Out => (-declared.amps.lo).max(0.0),
             Some(declared) => declared.amps.hi.max(0.0),

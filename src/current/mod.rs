@@ -66,37 +66,83 @@ pub enum By {
     Ratio(f64),
 }
 
-/// How far currents are followed.
-const DEEPEST: usize = 24;
+/// At most this many devices are asked for one answer.
+const MOST_ASKED: usize = 200;
+
+/// The current of a device by all ways, or by the nets at its ends alone.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Hash)]
+struct Question {
+    unit: Unit,
+    by_nets_alone: bool,
+}
+
+/// Currents that were found on a walk so far.
+#[derive(Debug, Default)]
+pub struct Known {
+    found: HashMap<Question, (Option<Current>, bool)>,
+}
 
 /// Currents around one walk.
 pub struct Currents<'c, 'w> {
     pub(super) walker: &'c mut Walker<'w>,
-    known: HashMap<Unit, Option<Current>>,
-    busy: HashSet<Unit>,
+    known: &'c mut Known,
+    busy: HashSet<Question>,
+    /// What the question under way has found so far; what is missing there may be for lack of that question's own answer.
+    so_far: HashMap<Question, Option<Current>>,
 }
 
 impl<'c, 'w> Currents<'c, 'w> {
     /// Currents as seen from the start of a walk.
-    pub fn new(walker: &'c mut Walker<'w>) -> Currents<'c, 'w> {
-        Currents { walker, known: HashMap::new(), busy: HashSet::new() }
+    pub fn new(walker: &'c mut Walker<'w>, known: &'c mut Known) -> Currents<'c, 'w> {
+        Currents { walker, known, busy: HashSet::new(), so_far: HashMap::new() }
     }
 
     /// The current through a device's channel; none where it is not known.
     pub fn of(&mut self, unit: Unit) -> Option<Current> {
-        if let Some(known) = self.known.get(&unit) {
+        self.ask(Question { unit, by_nets_alone: false })
+    }
+
+    fn ask(&mut self, question: Question) -> Option<Current> {
+        if let Some((known, above)) = self.known.found.get(&question) {
+            self.walker.resume(*above);
             return known.clone();
         }
-        if self.busy.len() >= DEEPEST || !self.busy.insert(unit) {
+        if let Some(known) = self.so_far.get(&question) {
+            return known.clone();
+        }
+        if self.busy.is_empty() {
+            return self.outermost(question);
+        }
+        if self.so_far.len() + self.busy.len() >= MOST_ASKED || !self.busy.insert(question) {
             return None;
         }
-        let found = self.look(unit);
-        self.busy.remove(&unit);
-        // What was not found on the way of another question may be for lack of that one's answer.
-        if self.busy.is_empty() || found.as_ref().is_some_and(|current| current.exact) {
-            self.known.insert(unit, found.clone());
+        let before = self.walker.pause();
+        let found = self.look(question);
+        self.busy.remove(&question);
+        if found.as_ref().is_some_and(|current| current.exact) {
+            self.known.found.insert(question, (found.clone(), self.walker.must_look_above()));
+        } else {
+            self.so_far.insert(question, found.clone());
         }
+        self.walker.resume(before);
         found
+    }
+
+    /// Asks again as long as exact currents come to light on the way, since each may settle what was open before.
+    fn outermost(&mut self, question: Question) -> Option<Current> {
+        let above = self.walker.pause();
+        loop {
+            let before = self.known.found.len();
+            self.busy.insert(question);
+            let found = self.look(question);
+            self.busy.remove(&question);
+            self.so_far.clear();
+            if found.as_ref().is_some_and(|current| current.exact) || self.known.found.len() == before {
+                self.known.found.insert(question, (found.clone(), self.walker.must_look_above()));
+                self.walker.resume(above);
+                return found;
+            }
+        }
     }
 
     /// The current that a channel is held to while it switches; none where it is not known.
@@ -109,11 +155,15 @@ impl<'c, 'w> Currents<'c, 'w> {
         self.left_for(unit, mos.s, Touch::Source { n: mos.n })
     }
 
-    fn look(&mut self, unit: Unit) -> Option<Current> {
+    fn look(&mut self, question: Question) -> Option<Current> {
+        let Question { unit, by_nets_alone } = question;
         if let Some(declared) = self.declared_through(unit) {
             return Some(declared);
         }
-        let own = self.by_its_nets(unit);
+        if by_nets_alone {
+            return self.by_its_nets(unit);
+        }
+        let own = self.ask(Question { unit, by_nets_alone: true });
         if own.as_ref().is_some_and(|current| current.exact) {
             return own;
         }
@@ -143,14 +193,7 @@ impl<'c, 'w> Currents<'c, 'w> {
             if its_class != own.0 {
                 continue;
             }
-            if !self.busy.insert(other) {
-                continue;
-            }
-            let current = match self.declared_through(other) {
-                Some(declared) => Some(declared),
-                None => self.by_its_nets(other),
-            };
-            self.busy.remove(&other);
+            let current = self.ask(Question { unit: other, by_nets_alone: true });
             let Some(mut current) = current else { continue };
             // What bounds an output's current may be its load: the mirror would drive more, and drives the others with that.
             if !current.exact && !mirror.references.contains(&other) {
@@ -222,7 +265,7 @@ impl<'c, 'w> Currents<'c, 'w> {
 
     /// Makes the walk choose its callers up to the top, where a full path is wanted.
     fn reach_the_top(&mut self, spot: SpotIx) {
-        self.walker.choose_all(spot);
+        self.walker.reach_the_top(spot);
     }
 }
 

@@ -8,25 +8,26 @@
 //! carry (`limits.rs`), or N has no bound. It holds for resistors of their nominal values, currents as declared, references and outputs
 //! of a mirror that are alike, and no capacitor that kicks.
 
-use super::Currents;
 use super::limits::{Question, Way};
+use super::{Currents, Known};
 use crate::design::{DeviceIx, NetIx};
 use crate::graph::ContextIx;
 use crate::reach::{Cap, Interval, ReachIx, Terminals};
-use crate::roles::{Net, Roles, Unit, Walker};
+use crate::roles::{Net, Roles, Standing, Surroundings, Unit, Walker, Walks};
 use hashbrown::HashMap;
 use hashbrown::hash_map::Entry;
 
 /// The bounds that currents give, over all contexts.
 pub fn caps(roles: &Roles<'_>) -> Vec<Cap> {
     let reach = roles.reach;
+    let walks: Walks<'_, Known> = Walks::default();
     let mut found: HashMap<(ContextIx, DeviceIx), Option<Held>> = HashMap::new();
     for at in reach.indices() {
         let context = reach.get(at).context;
         let template = reach.design.template(reach.contexts.get(context).variant);
         for device in template.devices() {
             let Terminals::Through { resistor: true, .. } = roles.terminals_of(context, device) else { continue };
-            let held = of_resistor(roles, at, device);
+            let held = of_resistor(roles, &walks, at, device);
             // One plan serves all that share a structure: the weakest of their bounds holds for each, and where one has none, none.
             match found.entry((context, device)) {
                 Entry::Vacant(new) => {
@@ -66,40 +67,49 @@ impl Held {
 }
 
 /// What a resistor between a rail and another net bounds, in all surroundings; none where it is none, or bounds nothing.
-fn of_resistor(roles: &Roles<'_>, at: ReachIx, device: DeviceIx) -> Option<Held> {
-    let mut walker = Walker::new(roles, at);
-    let unit = Walker::start(device);
-    let template = roles.design().template(walker.context(unit.spot).variant);
-    let pins = template.device_pins(device);
-    let (&a, &b) = (pins.first()?, pins.get(1)?);
-    let root = |net: NetIx| Net { spot: unit.spot, net: walker.context(unit.spot).root(net) };
-    let (a, b) = (root(a), root(b));
-    let (net, rail) = match (walker.is_rail(a), walker.is_rail(b)) {
-        (false, true) => (a, b),
-        (true, false) => (b, a),
-        _ => return None,
-    };
+fn of_resistor<'r>(roles: &'r Roles<'r>, walks: &Walks<'r, Known>, at: ReachIx, device: DeviceIx) -> Option<Held> {
+    let context = roles.reach.contexts.get(roles.reach.get(at).context);
+    let pins = roles.design().template(context.variant).device_pins(device);
+    let (a, b) = (context.root(*pins.first()?), context.root(*pins.get(1)?));
+    let mut standing = Standing { anchor: at, path: Vec::new() };
+    let mut surroundings = Surroundings::default();
     let mut all: Option<Held> = None;
     loop {
-        let held = Held { net: net.net, rail: rail.net, range: in_surroundings(&mut walker, unit, net, rail) };
-        let weakest = all.map_or(Some(held), |all| all.weaker(held))?;
-        if weakest.range == Interval::ANY {
-            return None;
+        let walk = walks.from(roles, standing.anchor);
+        let mut walker = walk.walker.borrow_mut();
+        walker.begin();
+        let unit = walker.unit(&standing.path, device);
+        let (a, b) = (Net { spot: unit.spot, net: a }, Net { spot: unit.spot, net: b });
+        let (net, rail) = match (walker.is_rail(a), walker.is_rail(b)) {
+            (false, true) => (a, b),
+            (true, false) => (b, a),
+            _ => return None,
+        };
+        let range = in_surroundings(&mut walker, &mut walk.beside.borrow_mut(), unit, net, rail);
+        let above = walker.must_look_above();
+        if !above {
+            let held = Held { net: net.net, rail: rail.net, range };
+            let weakest = all.map_or(Some(held), |all| all.weaker(held))?;
+            if weakest.range == Interval::ANY {
+                return None;
+            }
+            all = Some(weakest);
         }
-        all = Some(weakest);
-        if !walker.advance() {
+        drop(walker);
+        match surroundings.next(roles, standing, above) {
+            Some(next) => standing = next,
             // Where not all surroundings were seen, nothing is said.
-            return all.filter(|_| !walker.gave_up());
+            None => return all.filter(|_| !surroundings.are_cut()),
         }
     }
 }
 
-fn in_surroundings(walker: &mut Walker<'_>, unit: Unit, net: Net, rail: Net) -> Interval {
+fn in_surroundings(walker: &mut Walker<'_>, known: &mut Known, unit: Unit, net: Net, rail: Net) -> Interval {
     let modes = walker.ground.reach.modes.len();
     let held = (0..modes)
         .map(|mode| walker.volts(mode, net, rail))
         .fold(Interval::point(0.0), |all, range| Interval { lo: all.lo.min(range.lo), hi: all.hi.max(range.hi) });
-    let mut currents = Currents::new(walker);
+    let mut currents = Currents::new(walker, known);
     let Some(ohms) = currents.resistance(unit) else { return Interval::ANY };
     let mut away = |way: Way| currents.most_at(&mut Question::beyond(rail), net, unit, way).map(|amps| amps * ohms);
     // A bound that says no more than the ranges already do is left out.

@@ -1,7 +1,7 @@
 //! Rules for devices.
 
 use super::finding;
-use super::fold::{Folds, Standing};
+use super::fold::Folds;
 use super::verdict::{Asked, ask};
 use crate::declared::{Class, Rule, Subject};
 use crate::design::DeviceIx;
@@ -10,6 +10,7 @@ use crate::expr::{Arg, Expr, Node, Scope, Value, evaluate, specialise};
 use crate::facts::{DeviceView, Evidence, World, vocabulary};
 use crate::reach::ReachIx;
 use crate::source::Span;
+use std::rc::Rc;
 
 impl Asked for DeviceView<'_> {
     fn notes(&self) -> Evidence {
@@ -32,6 +33,7 @@ impl Asked for DeviceView<'_> {
 pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> (Vec<Diagnostic>, Vec<(u32, Verdict, u64)>) {
     let by_class: Vec<Vec<(u32, Rule)>> = world.deck.classes.iter().map(|class| rules_for(class, rules)).collect();
     let mut folds: Folds<(ReachIx, DeviceIx)> = Folds::new();
+    let walks = Rc::default();
     for at in world.reach.indices() {
         let template = world.design.template(world.context(at).variant);
         for device in template.devices() {
@@ -40,15 +42,16 @@ pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> (Vec<Diagnostic>, Vec<
             if asked.is_empty() {
                 continue;
             }
-            let mut view = DeviceView::for_verdict(world, at, device, &world.deck.classes[class as usize]);
+            let mut view =
+                DeviceView::for_verdict(world, at, device, &world.deck.classes[class as usize]).sharing(&walks);
             for (rule, asked) in asked {
                 loop {
-                    if let Some((verdict, mut evidence)) = ask(asked, &view) {
+                    let answer = ask(asked, &view).filter(|_| !view.must_look_above());
+                    if let Some((verdict, mut evidence)) = answer {
                         let (file, start) = template.device_card(device);
                         let statement = (*rule, verdict, Span::new(file, start, start));
-                        evidence.way = view.way();
-                        let (above, below) = view.stands();
-                        folds.add(statement, Standing { at: above, below }, view.instances(), (at, device), evidence);
+                        evidence.standing = Some(view.standing().clone());
+                        folds.add(statement, view.standing().clone(), view.instances(), (at, device), evidence);
                     }
                     if !view.next_surroundings() {
                         break;

@@ -1,6 +1,6 @@
 //! From a folded result to a diagnostic: its words, places and values, made for the worst instance.
 
-use super::fold::{Folded, Standing};
+use super::fold::Folded;
 use super::verdict::{Asked, ask};
 use crate::declared::Rule;
 use crate::design::DeviceIx;
@@ -8,6 +8,7 @@ use crate::diag::{Diagnostic, Finding, Label, Verdict, Worst};
 use crate::expr::{Arg, Scope, Template, Value};
 use crate::facts::{DeviceView, Evidence, World};
 use crate::reach::ReachIx;
+use crate::roles::Standing;
 use crate::source::Span;
 use std::collections::BTreeMap;
 
@@ -23,7 +24,7 @@ pub(super) fn of_device(world: World<'_>, rules: &[&Rule], folded: Folded<(Reach
     let Some(class) = world.design.class(template, *device) else {
         return Diagnostic::new(rule.id.clone(), rule.severity, statement, rule.title.clone());
     };
-    let view = DeviceView::seen_along(world, *at, *device, class, &brief.way);
+    let view = DeviceView::seen_from(world, *at, *device, class, brief.standing.as_ref());
     let evidence = &ask(rule, &view).map_or_else(|| brief.clone(), |(_, evidence)| evidence);
     let nets = class.pins.iter().enumerate().map(|(pin, name)| (name.clone(), view.net_text(pin).to_owned())).collect();
     let mut finding = Finding { nets, ..in_cell(world, rules, *at, view.name(), &folded, evidence) };
@@ -68,10 +69,11 @@ fn paths(world: World<'_>, places: &[Standing], name: &str) -> (Vec<String>, boo
     let mut all = Vec::new();
     let mut complete = true;
     for place in places {
-        let (found, whole) = world.reach.paths(place.at, MOST_PATHS - all.len());
+        let (found, whole) = world.reach.paths(place.anchor, MOST_PATHS - all.len());
         complete &= whole;
+        let below = world.reach.path_down(place.anchor, &place.path);
         let path = |above: String| {
-            let parts = [above.as_str(), place.below.as_str(), name];
+            let parts = [above.as_str(), below.as_str(), name];
             parts.into_iter().filter(|part| !part.is_empty()).collect::<Vec<_>>().join(".")
         };
         all.extend(found.into_iter().map(path));

@@ -2,26 +2,12 @@
 
 use crate::diag::Verdict;
 use crate::facts::Evidence;
-use crate::reach::ReachIx;
+use crate::roles::Standing;
 use crate::source::Span;
 use hashbrown::HashMap;
 
 /// Which finding something belongs to: rule (by index), verdict, and the place of its statement.
 pub(super) type Statement = (u32, Verdict, Span);
-
-/// Where instances of a cell stand: below all instances of a context, at a dotted path from there (empty: these themselves).
-#[derive(Clone, Debug, PartialEq, Eq)]
-pub(super) struct Standing {
-    pub(super) at: ReachIx,
-    pub(super) below: String,
-}
-
-impl Standing {
-    /// All instances of a context.
-    pub(super) fn of(at: ReachIx) -> Standing {
-        Standing { at, below: String::new() }
-    }
-}
 
 /// What was found about one statement, over all contexts.
 pub(super) struct Folded<S> {

@@ -1,7 +1,7 @@
 //! Rules for mirrors and pairs: one subject for each output of a mirror, one for each pair.
 
 use super::finding::{in_cell, word};
-use super::fold::{Folded, Folds, Standing};
+use super::fold::{Folded, Folds};
 use super::verdict::{Asked, ask};
 use crate::declared::{Rule, Subject};
 use crate::design::DeviceIx;
@@ -9,10 +9,12 @@ use crate::diag::Diagnostic;
 use crate::facts::{DeviceView, Evidence, GroupView, World};
 use crate::reach::ReachIx;
 use crate::source::Span;
+use std::rc::Rc;
 
 /// Asks the rules of one of these subjects.
 pub(super) fn judge(world: World<'_>, rules: &[&Rule], subject: Subject, asked: &[u32]) -> Vec<Diagnostic> {
     let mut folds: Folds<(ReachIx, DeviceIx)> = Folds::new();
+    let walks = Rc::default();
     for at in world.reach.indices() {
         let template = world.design.template(world.context(at).variant);
         for device in template.devices() {
@@ -22,28 +24,23 @@ pub(super) fn judge(world: World<'_>, rules: &[&Rule], subject: Subject, asked: 
             if !may_be(world, at, device, subject) {
                 continue;
             }
-            let mut view = DeviceView::for_verdict(world, at, device, class);
+            let mut view = DeviceView::for_verdict(world, at, device, class).sharing(&walks);
             loop {
                 view = match group(subject, view) {
                     Ok(group) => {
                         for &rule in asked {
-                            if let Some((verdict, mut evidence)) = ask(rules[rule as usize], &group) {
+                            let answer = ask(rules[rule as usize], &group).filter(|_| !group.main().must_look_above());
+                            if let Some((verdict, mut evidence)) = answer {
                                 let (file, start) = template.device_card(device);
-                                evidence.way = group.main().way();
-                                let (above, below) = group.main().stands();
-                                let (place, count) = (Standing { at: above, below }, group.main().instances());
-                                folds.add(
-                                    (rule, verdict, Span::new(file, start, start)),
-                                    place,
-                                    count,
-                                    (at, device),
-                                    evidence,
-                                );
+                                let standing = group.main().standing().clone();
+                                evidence.standing = Some(standing.clone());
+                                let statement = (rule, verdict, Span::new(file, start, start));
+                                folds.add(statement, standing, group.main().instances(), (at, device), evidence);
                             }
                         }
                         group.into_main()
                     }
-                    Err(view) => view,
+                    Err(view) => *view,
                 };
                 if !view.next_surroundings() {
                     break;
@@ -66,7 +63,7 @@ fn may_be(world: World<'_>, at: ReachIx, device: DeviceIx, subject: Subject) -> 
     gates.shared && gates.reference
 }
 
-fn group<'w>(subject: Subject, view: DeviceView<'w>) -> Result<GroupView<'w>, DeviceView<'w>> {
+fn group<'w>(subject: Subject, view: DeviceView<'w>) -> Result<GroupView<'w>, Box<DeviceView<'w>>> {
     match subject {
         Subject::Mirror => GroupView::mirror(view),
         _ => GroupView::pair(view),
@@ -82,7 +79,7 @@ fn of_group(
     let ((at, device), brief) = &folded.worst;
     let template = world.design.template(world.context(*at).variant);
     let class = world.design.class(template, *device)?;
-    let view = DeviceView::seen_along(world, *at, *device, class, &brief.way);
+    let view = DeviceView::seen_from(world, *at, *device, class, brief.standing.as_ref());
     let group = group(subject, view).ok()?;
     let main = group.main();
     let nets = class.pins.iter().enumerate().map(|(pin, name)| (name.clone(), main.net_text(pin).to_owned())).collect();

@@ -1,13 +1,14 @@
 //! Rules for nets, instance calls and classes.
 
 use super::finding::{in_cell, word};
-use super::fold::{Folded, Folds, Standing};
+use super::fold::{Folded, Folds};
 use super::verdict::{Asked, ask};
 use crate::declared::{Class, Rule, Subject};
 use crate::design::{InstanceIx, NetIx};
 use crate::diag::{Diagnostic, Finding, Worst};
 use crate::facts::{ClassView, Evidence, InstanceView, NetView, World};
 use crate::reach::ReachIx;
+use crate::roles::Standing;
 use crate::source::Span;
 use std::collections::BTreeMap;
 
@@ -43,7 +44,13 @@ fn judge_nets(world: World<'_>, rules: &[&Rule], asked: &[u32]) -> Vec<Diagnosti
                 if let (Some((verdict, evidence)), Some(place)) =
                     (ask(rules[rule as usize], &view), Asked::place(&view, "name"))
                 {
-                    folds.add((rule, verdict, place), Standing::of(at), count, (at, net), evidence);
+                    folds.add(
+                        (rule, verdict, place),
+                        Standing { anchor: at, path: Vec::new() },
+                        count,
+                        (at, net),
+                        evidence,
+                    );
                 }
             }
         }
@@ -70,7 +77,7 @@ fn judge_instances(world: World<'_>, rules: &[&Rule], asked: &[u32]) -> Vec<Diag
                 if let Some((verdict, evidence)) = ask(rules[rule as usize], &view) {
                     let card = &template.instances[instance.0 as usize];
                     let statement = (rule, verdict, Span::new(card.file, card.card, card.card));
-                    folds.add(statement, Standing::of(at), count, (at, instance), evidence);
+                    folds.add(statement, Standing { anchor: at, path: Vec::new() }, count, (at, instance), evidence);
                 }
             }
         }

@@ -1,14 +1,14 @@
 //! One device in its surroundings.
 
 use super::{Evidence, World};
-use crate::current::Current;
+use crate::current::{Current, Known};
 use crate::declared::Class;
 use crate::design::{Card, Design, DeviceIx, DeviceType, NetIx, Reading, Sizes};
 use crate::expr::Value;
 use crate::graph::{Context, Mark, rail, rail_in_mode};
 use crate::quantity::Dim;
 use crate::reach::ReachIx;
-use crate::roles::{Unit, Walker};
+use crate::roles::{Standing, Surroundings, Unit, Walk, Walks};
 use std::cell::{OnceCell, RefCell};
 use std::rc::Rc;
 
@@ -24,11 +24,13 @@ pub struct DeviceView<'w> {
     pub class: &'w Class,
     /// Whether notes are wanted in words, or only what was concerned and how badly.
     pub(super) in_words: bool,
-    /// As the walk around it knows it.
-    pub(super) unit: Unit,
-    /// Which surroundings to see it in.
-    pub(super) way: Vec<u32>,
-    pub(super) walk: OnceCell<Rc<RefCell<Walker<'w>>>>,
+    /// Where it is seen, and where else it stands.
+    pub(super) standing: Standing,
+    pub(super) surroundings: Surroundings,
+    pub(super) walks: OnceCell<Rc<Walks<'w, Known>>>,
+    pub(super) walk: OnceCell<Rc<Walk<'w, Known>>>,
+    /// As that walk knows it.
+    pub(super) unit: OnceCell<Unit>,
     pub(super) current: OnceCell<Option<Current>>,
     card: OnceCell<Card<'w>>,
     sizes: OnceCell<Sizes>,
@@ -54,9 +56,11 @@ impl<'w> DeviceView<'w> {
             device,
             class,
             in_words,
-            unit: Walker::start(device),
-            way: Vec::new(),
+            standing: Standing { anchor: at, path: Vec::new() },
+            surroundings: Surroundings::default(),
+            walks: OnceCell::new(),
             walk: OnceCell::new(),
+            unit: OnceCell::new(),
             current: OnceCell::new(),
             card: OnceCell::new(),
             sizes: OnceCell::new(),
@@ -111,8 +115,9 @@ impl<'w> DeviceView<'w> {
 
     /// Its dotted path, by the first instance in its surroundings.
     pub fn path(&self) -> String {
-        if let Some(walk) = self.walk.get() {
-            return walk.borrow().unit_path(self.unit);
+        if self.walk.get().is_some() {
+            let unit = self.unit();
+            return self.walk().borrow().unit_path(unit);
         }
         let above = self.world.reach.path(self.at);
         if above.is_empty() { self.name().to_owned() } else { format!("{above}.{}", self.name()) }

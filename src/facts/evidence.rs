@@ -1,5 +1,6 @@
 //! What a view noted while it answered: the finding's labels and reasons are made from it.
 
+use crate::roles::Standing;
 use crate::source::Span;
 
 /// Notes of one evaluation.
@@ -21,8 +22,8 @@ pub struct Evidence {
     pub modes: Vec<String>,
     /// How bad it is, for choosing the instance to show; larger is worse.
     pub badness: f64,
-    /// The surroundings that were looked at.
-    pub way: Vec<u32>,
+    /// Where the device was seen; none where its surroundings play no part.
+    pub standing: Option<Standing>,
     /// Whether the class leaves out something that was asked for.
     pub undeclared: bool,
 }

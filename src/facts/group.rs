@@ -6,9 +6,10 @@ use crate::design::DeviceIx;
 use crate::expr::Value;
 use crate::quantity::Dim;
 use crate::reach::ReachIx;
-use crate::roles::{Member, Unit};
+use crate::roles::{Member, Standing, Unit};
 use crate::source::Span;
 use std::cell::RefCell;
+use std::rc::Rc;
 
 /// A structure around one device, with the devices that rules may name in it.
 pub struct GroupView<'w> {
@@ -25,21 +26,27 @@ pub const PAIR: [&str; 3] = ["left", "right", "tail"];
 
 impl<'w> GroupView<'w> {
     /// The mirror whose output a device is; none where it is no output, or the reference stands outside of the netlist.
-    pub fn mirror(view: DeviceView<'w>) -> Result<GroupView<'w>, DeviceView<'w>> {
-        let mirror = view.walk().borrow_mut().mirror(view.unit);
+    pub fn mirror(view: DeviceView<'w>) -> Result<GroupView<'w>, Box<DeviceView<'w>>> {
+        let unit = view.unit();
+        let mirror = view.walk().borrow_mut().mirror(unit);
         let reference =
             mirror.filter(|mirror| mirror.member == Member::Output).and_then(|m| m.references.first().copied());
         match reference.and_then(|unit| view.beside(unit)) {
             Some(reference) => Ok(GroupView::of(vec![(MIRROR[0], view), (MIRROR[1], reference)])),
-            None => Err(view),
+            None => Err(Box::new(view)),
         }
     }
 
     /// The pair whose left half a device is.
-    pub fn pair(view: DeviceView<'w>) -> Result<GroupView<'w>, DeviceView<'w>> {
-        let pair = view.walk().borrow_mut().pair(view.unit);
-        let Some(pair) = pair.filter(|pair| pair.left.first() == Some(&view.unit)) else { return Err(view) };
-        let Some(right) = pair.right.first().and_then(|&unit| view.beside(unit)) else { return Err(view) };
+    pub fn pair(view: DeviceView<'w>) -> Result<GroupView<'w>, Box<DeviceView<'w>>> {
+        let unit = view.unit();
+        let pair = view.walk().borrow_mut().pair(unit);
+        let Some(pair) = pair.filter(|pair| pair.left.first() == Some(&unit)) else {
+            return Err(Box::new(view));
+        };
+        let Some(right) = pair.right.first().and_then(|&unit| view.beside(unit)) else {
+            return Err(Box::new(view));
+        };
         let tail = pair.tail.first().and_then(|&unit| view.beside(unit));
         let mut members = vec![(PAIR[0], view), (PAIR[1], right)];
         members.extend(tail.map(|tail| (PAIR[2], tail)));
@@ -117,24 +124,28 @@ impl<'w> GroupView<'w> {
 impl<'w> DeviceView<'w> {
     /// A view of a device that the walk around this one has met; none where it has no class.
     pub(super) fn beside(&self, unit: Unit) -> Option<DeviceView<'w>> {
-        let walk = self.walk();
-        let (at, class) = (walk.borrow().spot(unit.spot).at, walk.borrow().class(unit)?);
+        let around = self.around();
+        let (at, class) = {
+            let walk = around.walker.borrow();
+            (walk.spot(unit.spot).at, walk.class(unit)?)
+        };
         let mut view = DeviceView::of(self.world, at, unit.device, class, self.in_words);
-        view.unit = unit;
-        let _ = view.walk.set(std::rc::Rc::clone(walk));
+        view.standing = self.standing.clone();
+        let _ = view.walk.set(Rc::clone(around));
+        let _ = view.unit.set(unit);
         Some(view)
     }
 
-    /// Looks at a device in the surroundings of an earlier view ([`DeviceView::way`]).
-    pub fn seen_along(
+    /// Looks at a device where an earlier view saw it ([`DeviceView::standing`]).
+    pub fn seen_from(
         world: World<'w>,
         at: ReachIx,
         device: DeviceIx,
         class: &'w Class,
-        way: &[u32],
+        standing: Option<&Standing>,
     ) -> DeviceView<'w> {
         let mut view = DeviceView::new(world, at, device, class);
-        view.way = way.to_vec();
+        view.standing = standing.cloned().unwrap_or(view.standing);
         view
     }
 }

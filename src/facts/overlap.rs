@@ -114,14 +114,15 @@ impl DeviceView<'_> {
     /// Whether its source hangs on rails by resistors alone, all of which its gate surely passes by more than a threshold: then it
     /// conducts, wherever between its source settles.
     fn pulls_on_resistors(&self, mode: usize) -> bool {
+        let own = self.unit();
         let mut walker = self.walk().borrow_mut();
-        let Some(mos) = walker.mos(self.unit) else { return false };
+        let Some(mos) = walker.mos(own) else { return false };
         let Some(most) = self.class.threshold.map(|threshold| threshold.hi) else { return false };
         if walker.is_rail(mos.s) || walker.leads_out(mos.s) {
             return false;
         }
         let mut held = false;
-        for on in walker.each_on(mos.s).iter().filter(|on| on.unit != self.unit) {
+        for on in walker.each_on(mos.s).iter().filter(|on| on.unit != own) {
             match on.touch {
                 Touch::Gate { .. } | Touch::Capacitor | Touch::Nothing => {}
                 Touch::Resistor => {

@@ -1,11 +1,10 @@
 //! The part that a device plays in its circuit, and the current through it.
 
 use super::DeviceView;
-use crate::current::{By, Current, Currents, Step};
+use crate::current::{By, Current, Currents, Known, Step};
 use crate::expr::Value;
 use crate::quantity::{Dim, show};
-use crate::reach::ReachIx;
-use crate::roles::{Member, Played, Role, UNCLASSIFIED, Unit, Walker};
+use crate::roles::{Member, Played, Role, Standing, Surroundings, UNCLASSIFIED, Unit, Walk, Walker, Walks};
 use crate::source::Span;
 use std::cell::RefCell;
 use std::rc::Rc;
@@ -29,43 +28,65 @@ pub const ROLES: &[&str] = &[
 ];
 
 impl<'w> DeviceView<'w> {
+    /// Shares what it learns of its surroundings with other views.
+    pub fn sharing(self, walks: &Rc<Walks<'w, Known>>) -> DeviceView<'w> {
+        let _ = self.walks.set(Rc::clone(walks));
+        self
+    }
+
     /// The walk around it, begun when first asked for.
-    pub(super) fn walk(&self) -> &Rc<RefCell<Walker<'w>>> {
-        self.walk.get_or_init(|| Rc::new(RefCell::new(Walker::along(self.world.roles, self.at, &self.way))))
+    pub(super) fn around(&self) -> &Rc<Walk<'w, Known>> {
+        self.walk.get_or_init(|| {
+            let walks = self.walks.get_or_init(Rc::default);
+            let walk = walks.from(self.world.roles, self.standing.anchor);
+            walk.walker.borrow_mut().begin();
+            walk
+        })
+    }
+
+    pub(super) fn walk(&self) -> &RefCell<Walker<'w>> {
+        &self.around().walker
+    }
+
+    /// The device as the walk around it knows it.
+    pub(super) fn unit(&self) -> Unit {
+        *self.unit.get_or_init(|| self.walk().borrow_mut().unit(&self.standing.path, self.device))
+    }
+
+    /// Whether what was asked led out of where the device is seen: the answers count for nothing.
+    pub fn must_look_above(&self) -> bool {
+        self.walk.get().is_some_and(|walk| walk.walker.borrow().must_look_above())
     }
 
     /// Goes on to its next surroundings, if what was asked depended on them and there are more. After the last it is as new.
     pub fn next_surroundings(&mut self) -> bool {
-        let Some(walk) = self.walk.get() else { return false };
+        let Some(walk) = self.walk.take() else { return false };
+        let above = walk.walker.borrow().must_look_above();
+        self.unit.take();
         self.current.take();
-        if walk.borrow().way().is_empty() {
-            return false;
-        }
-        if walk.borrow_mut().advance() {
+        let now = std::mem::replace(&mut self.standing, Standing { anchor: self.at, path: Vec::new() });
+        if let Some(next) = self.surroundings.next(self.world.roles, now, above) {
+            self.standing = next;
             return true;
         }
-        self.walk.take();
+        self.surroundings = Surroundings::default();
         false
     }
 
-    /// Which surroundings it is seen in, for [`DeviceView::seen_along`].
-    pub fn way(&self) -> Vec<u32> {
-        self.walk.get().map_or_else(Vec::new, |walk| walk.borrow().way())
+    /// Where it is seen, for [`DeviceView::seen_from`].
+    pub fn standing(&self) -> &Standing {
+        &self.standing
     }
 
     /// How many instances stand in these surroundings.
     pub fn instances(&self) -> u64 {
-        self.walk.get().map_or_else(|| self.world.reach.get(self.at).count, |walk| walk.borrow().instances())
-    }
-
-    /// The context above which the surroundings do not matter, and the dotted path from there to its cell.
-    pub fn stands(&self) -> (ReachIx, String) {
-        self.walk.get().map_or_else(|| (self.at, String::new()), |walk| walk.borrow().stands(self.unit.spot))
+        self.world.reach.get(self.standing.anchor).count
     }
 
     /// All its roles with their evidence, the main one first.
     pub fn roles(&self) -> Vec<Played> {
-        self.walk().borrow_mut().roles(self.unit)
+        let unit = self.unit();
+        self.walk().borrow_mut().roles(unit)
     }
 
     /// The name of its main role.
@@ -112,7 +133,12 @@ impl<'w> DeviceView<'w> {
 
     /// Whether it is reference or output of a mirror; notes the others.
     pub(super) fn is_mirrored(&self) -> Value {
-        let mirror = self.walk().borrow_mut().mirror(self.unit);
+        let unit = self.unit();
+        let mirror = {
+            let mut walk = self.walk().borrow_mut();
+            let plays = walk.plays(unit, Role::MirrorReference) || walk.plays(unit, Role::MirrorOutput);
+            if plays { walk.mirror(unit) } else { None }
+        };
         let Some(mirror) = mirror else { return self.unless_crowded() };
         let (part, others, their) = match mirror.member {
             Member::Reference => ("the reference", &mirror.outputs, "output"),
@@ -141,10 +167,11 @@ impl<'w> DeviceView<'w> {
 
     /// Whether it gives gain: half of a pair, or a common-source stage; notes what shows it.
     pub(super) fn is_amplifying(&self) -> Value {
+        let unit = self.unit();
         let found = {
             let mut walk = self.walk().borrow_mut();
-            let pair = walk.playing(self.unit, Role::Pair).map(|with| (Role::Pair, with));
-            pair.or_else(|| walk.playing(self.unit, Role::Gain).map(|with| (Role::Gain, with)))
+            let pair = walk.playing(unit, Role::Pair).map(|with| (Role::Pair, with));
+            pair.or_else(|| walk.playing(unit, Role::Gain).map(|with| (Role::Gain, with)))
         };
         let Some((role, with)) = found else { return self.unless_crowded() };
         if !self.in_words {
@@ -186,7 +213,12 @@ impl<'w> DeviceView<'w> {
 
     /// The current through its channel; none where it is not known.
     pub fn current(&self) -> Option<&Current> {
-        self.current.get_or_init(|| Currents::new(&mut self.walk().borrow_mut()).of(self.unit)).as_ref()
+        let unit = self.unit();
+        self.current
+            .get_or_init(|| {
+                Currents::new(&mut self.walk().borrow_mut(), &mut self.around().beside.borrow_mut()).of(unit)
+            })
+            .as_ref()
     }
 
     /// That current, or the most that it can be, as a value.
@@ -200,10 +232,12 @@ impl<'w> DeviceView<'w> {
     /// Current per width that its channel is held to at every instant, A/m; none where it is not known. A device that works all the
     /// time carries what flows; one that switches also discharges its drain's net.
     pub(super) fn density_at_all_times(&self) -> Option<f64> {
+        let unit = self.unit();
         if self.works_all_the_time() {
             return self.density();
         }
-        let held = Currents::new(&mut self.walk().borrow_mut()).while_switching(self.unit)?;
+        let held = Currents::new(&mut self.walk().borrow_mut(), &mut self.around().beside.borrow_mut())
+            .while_switching(unit)?;
         self.density_of(held.amps)
     }
 

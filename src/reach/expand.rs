@@ -297,6 +297,18 @@ impl<'r> Reach<'r> {
         parents.iter().map(|&(above, instance)| (above.0, name(above, instance))).collect()
     }
 
+    /// The dotted names of instance statements that lead down from a context.
+    pub fn path_down(&self, from: ReachIx, path: &[InstanceIx]) -> String {
+        let mut here = from;
+        let mut names = Vec::with_capacity(path.len());
+        for &instance in path {
+            let context = self.contexts.get(self.get(here).context);
+            names.push(self.design.instance_name(self.design.template(context.variant), instance));
+            here = self.get(here).children[instance.0 as usize];
+        }
+        names.join(".")
+    }
+
     /// The name of a judged mode; none where the deck has no modes.
     pub fn mode_name(&self, mode: usize) -> Option<&'r str> {
         self.modes[mode].map(|mode| self.deck.modes[mode].name.as_str())

@@ -61,9 +61,5 @@ fn straight_beside(walker: &mut Walker<'_>, unit: Unit) -> bool {
     if super::drive::use_of_rail(walker, mos.g) == Some(super::Use::Supply) {
         return false;
     }
-    let beside = walker.units(mos.g, |touch| touch == Touch::Gate { n: mos.n });
-    beside.into_iter().filter(|&other| other != unit).any(|other| {
-        let Some(other) = walker.working(other) else { return false };
-        walker.same(other.d, other.g) && super::mirror::common_source(walker, other.s, mos.s)
-    })
+    super::mirror::beside(walker, &mos).straight
 }

@@ -29,6 +29,10 @@ const DEEPEST: usize = 8;
 impl Walker<'_> {
     /// What a net is used for.
     pub fn use_of(&mut self, net: Net) -> Use {
+        self.once(|walker| &mut walker.uses, net, |walker| walker.look_at_use(net))
+    }
+
+    fn look_at_use(&mut self, net: Net) -> Use {
         let rail = use_of_rail(self, net);
         if let Some(rail @ (Use::Supply | Use::Bias)) = rail {
             return rail;
@@ -88,24 +92,30 @@ impl Walker<'_> {
     /// joined, or each itself driven so, or of a latch); or a device that is driven so pulls it one way and a resistor to
     /// a rail the other; or it hangs on such a net through a resistor or a channel.
     pub fn rail_to_rail(&mut self, net: Net) -> bool {
-        self.driven_fully(net, 0)
+        let outermost = self.undriven.is_empty();
+        let found = self.driven_fully(net, 0);
+        if outermost {
+            self.undriven.clear();
+        }
+        found
     }
 
     fn driven_fully(&mut self, net: Net, depth: usize) -> bool {
         let net = if self.is_rail(net) { net } else { self.climb(net) };
-        if let Some(&known) = self.driven.get(&net) {
-            return known;
-        }
-        if depth >= DEEPEST {
+        // On the way back to itself a net drives nothing; what was seen once for this question is not seen again.
+        if depth >= DEEPEST || self.undriven.contains(&net) {
             return false;
         }
-        // On the way back to itself a net drives nothing.
-        self.driven.insert(net, false);
-        let found = self.look_at_drivers(net, depth + 1);
-        if found {
-            self.driven.insert(net, true);
-        } else if depth > 0 {
-            // What was found on the way of another question may be for lack of that one's answer.
+        let found = self.once(
+            |walker| &mut walker.driven,
+            net,
+            |walker| {
+                walker.undriven.insert(net);
+                walker.look_at_drivers(net, depth + 1)
+            },
+        );
+        // That it is not driven is known for good only where no other question is under way.
+        if !found && depth > 0 {
             self.driven.remove(&net);
         }
         found
@@ -122,6 +132,7 @@ impl Walker<'_> {
             on.iter().filter(|on| on.touch == Touch::Drain { n }).map(|on| on.unit).collect()
         };
         let (down, up) = (drains(true), drains(false));
+        let (down, up) = (self.distinct(down), self.distinct(up));
         for &low in &down {
             for &high in &up {
                 if self.complementary(low, high, depth) {
@@ -143,11 +154,21 @@ impl Walker<'_> {
             .filter(|on| matches!(on.touch, Touch::Drain { .. } | Touch::Source { .. }))
             .map(|on| on.unit)
             .collect();
+        let passes = self.distinct(passes);
         passes.into_iter().any(|pass| {
             let Some(mos) = self.working(pass) else { return false };
             let far = if self.same(mos.d, net) { mos.s } else { mos.d };
             self.driven_fully(far, depth)
         })
+    }
+
+    /// Of devices in parallel, with all nets in common, the first.
+    fn distinct(&mut self, units: Vec<Unit>) -> Vec<Unit> {
+        let mut seen = hashbrown::HashSet::new();
+        units
+            .into_iter()
+            .filter(|&unit| self.mos(unit).is_some_and(|mos| seen.insert((mos.n, mos.d, mos.g, mos.s))))
+            .collect()
     }
 
     fn gate_driven_fully(&mut self, unit: Unit, depth: usize) -> bool {

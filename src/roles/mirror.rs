@@ -1,6 +1,8 @@
 //! Current mirrors.
 
-use super::{Net, Role, Touch, Unit, Use, Walker};
+use super::{Mos, Net, Role, Touch, Unit, Use, Walker};
+use hashbrown::HashMap;
+use std::rc::Rc;
 
 /// What a device is in its mirror.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -38,32 +40,122 @@ pub(super) fn mirror(walker: &mut Walker<'_>, unit: Unit) -> Option<Mirror> {
     if rail == Some(Use::Supply) {
         return None;
     }
-    let gates = walker.units(mos.g, |touch| touch == Touch::Gate { n: mos.n });
-    let mut members = Vec::new();
-    for other in gates {
-        if other == unit {
-            members.push(other);
-        } else if let Some(found) = walker.working(other)
-            && common_source(walker, found.s, mos.s)
-        {
-            members.push(other);
-        }
+    let group = group(walker, &mos);
+    if !group.references.is_empty() && !group.outputs.is_empty() {
+        let member = if group.references.contains(&unit) { Member::Reference } else { Member::Output };
+        return Some(Mirror { member, references: group.references.clone(), outputs: group.outputs.clone() });
     }
-    let mut references = Vec::new();
-    if members.len() > 1 {
-        for &member in &members {
-            if walker.plays(member, Role::DiodeConnected) {
-                references.push(member);
-            }
-        }
-    }
-    let outputs: Vec<Unit> = members.iter().copied().filter(|member| !references.contains(member)).collect();
-    if !references.is_empty() && !outputs.is_empty() {
-        let member = if references.contains(&unit) { Member::Reference } else { Member::Output };
-        return Some(Mirror { member, references, outputs });
-    }
-    let outside = references.is_empty() && rail == Some(Use::Bias) && is_current_source(walker, unit, mos.s);
+    let outside = group.references.is_empty() && rail == Some(Use::Bias) && is_current_source(walker, unit, mos.s);
     outside.then(|| Mirror { member: Member::Output, references: Vec::new(), outputs: vec![unit] })
+}
+
+/// Devices that share gate and source: those that are diode-connected, and the others.
+#[derive(Debug, Default)]
+pub(super) struct Group {
+    references: Vec<Unit>,
+    outputs: Vec<Unit>,
+}
+
+fn group(walker: &mut Walker<'_>, mos: &Mos) -> Rc<Group> {
+    let key = (mos.g, mos.s, mos.n);
+    walker.once(
+        |walker| &mut walker.mirrors,
+        key,
+        |walker| {
+            let members = beside(walker, mos);
+            let mut found = Group::default();
+            for &member in &members.all {
+                match members.all.len() > 1 && walker.plays(member, Role::DiodeConnected) {
+                    true => found.references.push(member),
+                    false => found.outputs.push(member),
+                }
+            }
+            Rc::new(found)
+        },
+    )
+}
+
+/// The working devices of one polarity whose gates are on one net, by their sources and by what lies behind resistors there.
+#[derive(Debug, Default)]
+pub(super) struct Gates {
+    by_source: HashMap<Net, Vec<Unit>>,
+    by_far_end: HashMap<Net, Vec<Unit>>,
+}
+
+fn gates(walker: &mut Walker<'_>, gate: Net, n: bool) -> Rc<Gates> {
+    walker.once(
+        |walker| &mut walker.gates,
+        (gate, n),
+        |walker| {
+            let mut found = Gates::default();
+            for unit in walker.units(gate, |touch| touch == Touch::Gate { n }) {
+                let Some(mos) = walker.working(unit) else { continue };
+                found.by_source.entry(mos.s).or_default().push(unit);
+                for end in behind_resistors(walker, mos.s) {
+                    found.by_far_end.entry(end).or_default().push(unit);
+                }
+            }
+            Rc::new(found)
+        },
+    )
+}
+
+/// The working devices that share gate and source with one another.
+#[derive(Debug, Default)]
+pub(super) struct Beside {
+    /// All of them.
+    pub(super) all: Vec<Unit>,
+    /// Whether one has its gate straight on its drain.
+    pub(super) straight: bool,
+}
+
+/// The working devices that have a device's gate and polarity, and whose sources share a net with its own, or lead to one net
+/// through a resistor each, or one directly and one through a resistor.
+pub(super) fn beside(walker: &mut Walker<'_>, mos: &Mos) -> Rc<Beside> {
+    let key = (mos.g, mos.s, mos.n);
+    walker.once(
+        |walker| &mut walker.beside,
+        key,
+        |walker| {
+            let gates = gates(walker, mos.g, mos.n);
+            let mut all: Vec<Unit> = Vec::new();
+            let mut add = |units: Option<&Vec<Unit>>| all.extend(units.into_iter().flatten());
+            add(gates.by_source.get(&mos.s));
+            add(gates.by_far_end.get(&mos.s));
+            for end in behind_resistors(walker, mos.s) {
+                add(gates.by_source.get(&end));
+                if walker.is_rail(end) {
+                    add(gates.by_far_end.get(&end));
+                }
+            }
+            all.sort_unstable();
+            all.dedup();
+            let straight = all.iter().any(|&unit| walker.mos(unit).is_some_and(|mos| walker.same(mos.d, mos.g)));
+            Rc::new(Beside { all, straight })
+        },
+    )
+}
+
+/// The widest device of a class among those that share gate and source, and its width.
+pub(super) fn widest(walker: &mut Walker<'_>, mos: &Mos, class: u32) -> Option<(Unit, f64)> {
+    walker.once(
+        |walker| &mut walker.widest,
+        (mos.g, mos.s, class),
+        |walker| {
+            let members = beside(walker, mos);
+            let mut widest: Option<(Unit, f64)> = None;
+            for &unit in &members.all {
+                if walker.mos(unit).and_then(|mos| mos.class) != Some(class) {
+                    continue;
+                }
+                let Some(width) = walker.total_width(unit) else { continue };
+                if widest.is_none_or(|(_, most)| width > most) {
+                    widest = Some((unit, width));
+                }
+            }
+            widest
+        },
+    )
 }
 
 /// The role as a recogniser gives it: an output with its references, a reference with its outputs.
@@ -73,18 +165,6 @@ pub(super) fn playing(walker: &mut Walker<'_>, unit: Unit, member: Member) -> Op
         Member::Reference => mirror.outputs,
         Member::Output => mirror.references,
     })
-}
-
-/// Whether two sources are one net, or lead to one net through a resistor.
-pub(super) fn common_source(walker: &mut Walker<'_>, a: Net, b: Net) -> bool {
-    if walker.same(a, b) {
-        return true;
-    }
-    let (from_a, from_b) = (behind_resistors(walker, a), behind_resistors(walker, b));
-    let both = |walker: &Walker<'_>, nets: &[Net], net: Net| nets.iter().any(|&other| walker.same(other, net));
-    both(walker, &from_a, b)
-        || both(walker, &from_b, a)
-        || from_a.iter().any(|&net| walker.is_rail(net) && both(walker, &from_b, net))
 }
 
 /// The nets that lie behind resistors on a net that is no rail.

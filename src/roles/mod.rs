@@ -8,7 +8,7 @@
 //! A question starts at one device and walks its nets through the hierarchy, up and down, with a [`Walker`]. It stops at rails
 //! that carry supplies, and at nets with more than [`MOST_PINS`] pins, so that no list of a rail's million pins is ever walked.
 //! A cell that stands in several surroundings is asked about once for each of those that the question sees
-//! ([`Walker::advance`]), at most [`MOST_SURROUNDINGS`]. Names of roles are the trade's.
+//! ([`Surroundings`]), at most [`MOST_SURROUNDINGS`]. Names of roles are the trade's.
 
 mod back_to_back;
 mod cascode;
@@ -29,7 +29,9 @@ pub use drive::Use;
 pub use local::{Gates, MOST_PINS, Roles};
 pub use mirror::{Member, Mirror};
 pub use pair::Pair;
-pub use walk::{MOST_SURROUNDINGS, Mos, Net, Spot, SpotIx, Touch, Touching, Unit, Walker};
+pub use walk::{
+    MOST_SURROUNDINGS, Mos, Net, Spot, SpotIx, Standing, Surroundings, Touch, Touching, Unit, Walk, Walker, Walks,
+};
 
 /// What a transistor does in its circuit.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Hash, PartialOrd, Ord)]
@@ -103,7 +105,8 @@ pub struct Played {
 /// Looks for one role of a device: the other devices of the structure, or none where it does not play it.
 type Recogniser = fn(&mut Walker<'_>, Unit) -> Option<Vec<Unit>>;
 
-/// All roles with what recognises them; the first that a device plays is its main one.
+/// All roles with what recognises them; the first that a device plays is its main one. A recogniser may ask for roles that stand
+/// above its own here, and [`Role::Latch`]: so no question comes back to itself.
 pub const RECOGNISERS: &[(Role, Recogniser)] = &[
     (Role::Dummy, idle::dummy),
     (Role::Idle, idle::idle),
@@ -123,19 +126,14 @@ pub const RECOGNISERS: &[(Role, Recogniser)] = &[
 impl Walker<'_> {
     /// The devices with which a device plays a role; none where it does not.
     pub fn playing(&mut self, unit: Unit, role: Role) -> Option<Vec<Unit>> {
-        if let Some(known) = self.played.get(&(unit, role)) {
-            return known.clone();
-        }
-        // A question that comes back to itself on its way has no answer there.
-        if !self.asked.insert((unit, role)) {
-            return None;
-        }
-        let found = RECOGNISERS.iter().find(|(of, _)| *of == role).and_then(|(_, recognise)| recognise(self, unit));
-        self.asked.remove(&(unit, role));
-        if self.asked.is_empty() || found.is_some() {
-            self.played.insert((unit, role), found.clone());
-        }
-        found
+        self.once(
+            |walker| &mut walker.played,
+            (unit, role),
+            |walker| {
+                let recognise = RECOGNISERS.iter().find(|(of, _)| *of == role);
+                recognise.and_then(|(_, recognise)| recognise(walker, unit))
+            },
+        )
     }
 
     /// Whether a device plays a role.

@@ -1,6 +1,6 @@
 //! Devices that measure the current of another.
 
-use super::{Role, Touch, Unit, Walker};
+use super::{Mos, Role, Touch, Unit, Walker};
 
 /// How many times wider the measured device is at least (common practice, no source).
 const MANY: f64 = 10.0;
@@ -11,20 +11,33 @@ pub(super) fn sense(walker: &mut Walker<'_>, unit: Unit) -> Option<Vec<Unit>> {
     if super::drive::use_of_rail(walker, mos.g) == Some(super::Use::Supply) {
         return None;
     }
-    let beside = walker.units(mos.g, |touch| touch == Touch::Gate { n: mos.n });
-    let mut found = Vec::new();
-    for other in beside.into_iter().filter(|&other| other != unit) {
-        let Some(wide) = walker.working(other) else { continue };
-        let shares = walker.same(wide.d, mos.d) || walker.same(wide.s, mos.s);
-        if wide.class != mos.class || mos.class.is_none() || !shares {
+    let (class, own) = (mos.class?, walker.total_width(unit)?);
+    // Those with the source in common, and those with the drain in common (seen from the other end).
+    let at_source = super::mirror::widest(walker, &mos, class);
+    let at_drain = widest_at_drain(walker, unit, &mos, class);
+    let wide = |(other, width): (Unit, f64)| (other != unit && width >= own * MANY).then_some(other);
+    let found: Vec<Unit> = at_source.and_then(wide).into_iter().chain(at_drain.and_then(wide)).collect();
+    if found.is_empty() || walker.plays(unit, Role::MirrorOutput) || walker.plays(unit, Role::MirrorReference) {
+        return None;
+    }
+    Some(found)
+}
+
+fn widest_at_drain(walker: &mut Walker<'_>, unit: Unit, mos: &Mos, class: u32) -> Option<(Unit, f64)> {
+    if walker.is_rail(mos.s) {
+        // A device whose source is on a supply does not measure from its drain's side.
+        return None;
+    }
+    let mut widest = None;
+    for other in walker.units(mos.g, |touch| touch == Touch::Gate { n: mos.n }) {
+        let Some(wide) = walker.working(other).filter(|wide| wide.class == Some(class)) else { continue };
+        if other == unit || !walker.same(wide.d, mos.d) {
             continue;
         }
-        let (Some(own), Some(its)) = (walker.total_width(unit), walker.total_width(other)) else { continue };
-        if its >= own * MANY {
-            found.push(other);
+        let Some(width) = walker.total_width(other) else { continue };
+        if widest.is_none_or(|(_, most)| width > most) {
+            widest = Some((other, width));
         }
     }
-    let mirrored =
-        !found.is_empty() && walker.plays(unit, Role::MirrorOutput) || walker.plays(unit, Role::MirrorReference);
-    (!found.is_empty() && !mirrored).then_some(found)
+    widest
 }

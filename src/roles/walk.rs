@@ -1,21 +1,29 @@
 //! Walking a design from one device: its nets through the hierarchy, up and down, in one of the surroundings it stands in.
 //!
-//! A cell's context may have many callers. A walk that has to leave a cell takes the first of them and remembers that it chose;
-//! [`Walker::advance`] starts it again with the next, until all have been seen. So only those surroundings are told apart that the
-//! question looked at: a device that is decided inside its cell is asked about once, however many instances there are.
+//! A cell's context may have many callers. A walk begins in the cell itself (its anchor). Where the question leads out of the
+//! anchor, the walk notes that its answer is worth nothing ([`Walker::must_look_above`]), and the question is asked again from each
+//! caller ([`Surroundings`]). So only those surroundings are told apart that the question looked at: a device that is
+//! decided inside its cell is asked about once, however many instances there are; and all questions with one anchor share what
+//! they learn ([`Walks`]).
 
-use super::Role;
 use super::local::{MOST_PINS, Roles};
+use super::{Role, Use};
 use crate::declared::{Class, Kind};
 use crate::design::{DeviceIx, Element, InstanceIx, NetIx, Sizes};
 use crate::graph::{Context, Mark, Pin};
 use crate::names::Sym;
 use crate::reach::{Interval, ReachIx, Terminals};
 use hashbrown::{HashMap, HashSet};
+use std::cell::RefCell;
+use std::hash::Hash;
 use std::rc::Rc;
 
 /// At most so many surroundings of one device are looked at; the instances in the others are counted as not looked at.
-pub const MOST_SURROUNDINGS: usize = 256;
+pub const MOST_SURROUNDINGS: usize = 4096;
+
+/// Walks that know this many devices, or more of them than this, are given up for new ones: what they know costs memory.
+const MOST_KNOWN: usize = 100_000;
+const MOST_WALKS: usize = 1000;
 
 /// Index of a [`Spot`] in its walker.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Hash, PartialOrd, Ord)]
@@ -64,6 +72,8 @@ pub struct Mos {
     pub b: Option<Net>,
     /// Index of its class.
     pub class: Option<u32>,
+    /// Whether it carries nothing whatever happens: a dummy, or idle.
+    pub still: bool,
 }
 
 /// As what a device touches a net. `n` is its polarity.
@@ -102,98 +112,177 @@ pub struct Touching {
     pub touch: Touch,
 }
 
-#[derive(Clone, Copy, Debug)]
-struct Choice {
-    taken: u32,
-    of: u32,
+/// Where a device is looked at: a context, and the instance statements that lead from there down to the device's cell.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Standing {
+    /// The context; nothing above it matters.
+    pub anchor: ReachIx,
+    /// From there down.
+    pub path: Vec<InstanceIx>,
 }
 
-/// A walk from one device.
+/// The surroundings of one device that are still to be looked at.
+#[derive(Clone, Debug, Default)]
+pub struct Surroundings {
+    pending: Vec<Standing>,
+    met: usize,
+    cut: bool,
+}
+
+impl Surroundings {
+    /// The next surroundings, after those of `now`; `above`: whether these have to be told apart by their callers.
+    pub fn next(&mut self, ground: &Roles<'_>, now: Standing, above: bool) -> Option<Standing> {
+        if above {
+            let parents = &ground.reach.get(now.anchor).parents;
+            let room = MOST_SURROUNDINGS.saturating_sub(self.met);
+            if parents.len() > room {
+                let seen: u64 = parents[..room].iter().map(|&(parent, _)| ground.reach.get(parent).count).sum();
+                self.cut = true;
+                ground.leave_unseen(ground.reach.get(now.anchor).count.saturating_sub(seen));
+            }
+            self.met += parents.len().min(room);
+            self.pending.extend(parents[..parents.len().min(room)].iter().rev().map(|&(anchor, instance)| {
+                let path = std::iter::once(instance).chain(now.path.iter().copied()).collect();
+                Standing { anchor, path }
+            }));
+        }
+        self.pending.pop()
+    }
+
+    /// Whether there were too many to look at all of them.
+    pub fn are_cut(&self) -> bool {
+        self.cut
+    }
+}
+
+/// A walk, with what others want to keep beside it.
+pub struct Walk<'w, T> {
+    /// The walk.
+    pub walker: RefCell<Walker<'w>>,
+    /// What is kept beside it.
+    pub beside: RefCell<T>,
+}
+
+/// Walks by their anchors: what one question learned serves the next.
+#[derive(Default)]
+pub struct Walks<'w, T> {
+    all: RefCell<HashMap<ReachIx, Rc<Walk<'w, T>>>>,
+}
+
+impl<'w, T: Default> Walks<'w, T> {
+    /// The walk from a context.
+    pub fn from(&self, ground: &'w Roles<'w>, anchor: ReachIx) -> Rc<Walk<'w, T>> {
+        let mut all = self.all.borrow_mut();
+        let full = |walk: &Rc<Walk<'w, T>>| walk.walker.try_borrow().is_ok_and(|walk| walk.mos.len() >= MOST_KNOWN);
+        if all.get(&anchor).is_some_and(full) || all.len() >= MOST_WALKS {
+            all.clear();
+        }
+        let new = || Walk { walker: RefCell::new(Walker::new(ground, anchor)), beside: RefCell::default() };
+        Rc::clone(all.entry(anchor).or_insert_with(|| Rc::new(new())))
+    }
+}
+
+/// Something that was found, with what the way there met.
+#[derive(Clone, Debug)]
+pub(super) struct Found<T> {
+    value: T,
+    above: bool,
+    crowded: Option<Net>,
+}
+
+/// A device and its width, metres.
+type Width = (Unit, f64);
+
+/// A walk from one context.
 pub struct Walker<'w> {
     /// What it looks up.
     pub ground: &'w Roles<'w>,
     spots: Vec<Spot>,
-    way: Vec<Choice>,
-    chosen: usize,
-    runs: usize,
-    gave_up: bool,
+    above: bool,
     crowded: Option<Net>,
-    touching: HashMap<Net, Option<Rc<Vec<Touching>>>>,
-    mos: HashMap<Unit, Option<Mos>>,
+    touching: HashMap<Net, Found<Option<Rc<Vec<Touching>>>>>,
+    mos: HashMap<Unit, Found<Option<Mos>>>,
     sizes: HashMap<Unit, Rc<Sizes>>,
-    pub(super) played: HashMap<(Unit, Role), Option<Vec<Unit>>>,
-    pub(super) asked: HashSet<(Unit, Role)>,
-    pub(super) driven: HashMap<Net, bool>,
+    pub(super) played: HashMap<(Unit, Role), Found<Option<Vec<Unit>>>>,
+    pub(super) driven: HashMap<Net, Found<bool>>,
+    /// Nets that the question under way has found not to be driven so far.
+    pub(super) undriven: HashSet<Net>,
+    pub(super) uses: HashMap<Net, Found<Use>>,
+    pub(super) gates: HashMap<(Net, bool), Found<Rc<super::mirror::Gates>>>,
+    pub(super) beside: HashMap<(Net, Net, bool), Found<Rc<super::mirror::Beside>>>,
+    pub(super) mirrors: HashMap<(Net, Net, bool), Found<Rc<super::mirror::Group>>>,
+    pub(super) widest: HashMap<(Net, Net, u32), Found<Option<Width>>>,
 }
 
 impl<'w> Walker<'w> {
     /// A walk that starts in a context.
-    pub fn new(ground: &'w Roles<'w>, at: ReachIx) -> Walker<'w> {
-        Walker::along(ground, at, &[])
-    }
-
-    /// A walk that takes the same way as an earlier one ([`Walker::way`]).
-    pub fn along(ground: &'w Roles<'w>, at: ReachIx, way: &[u32]) -> Walker<'w> {
+    pub fn new(ground: &'w Roles<'w>, anchor: ReachIx) -> Walker<'w> {
         Walker {
             ground,
-            spots: vec![Spot { at, above: None, below: Vec::new() }],
-            way: way.iter().map(|&taken| Choice { taken, of: u32::MAX }).collect(),
-            chosen: 0,
-            runs: 1,
-            gave_up: false,
+            spots: vec![Spot { at: anchor, above: None, below: Vec::new() }],
+            above: false,
             crowded: None,
             touching: HashMap::new(),
             mos: HashMap::new(),
             sizes: HashMap::new(),
             played: HashMap::new(),
-            asked: HashSet::new(),
             driven: HashMap::new(),
+            undriven: HashSet::new(),
+            uses: HashMap::new(),
+            gates: HashMap::new(),
+            beside: HashMap::new(),
+            mirrors: HashMap::new(),
+            widest: HashMap::new(),
         }
     }
 
-    /// The device of the cell where the walk starts.
-    pub fn start(device: DeviceIx) -> Unit {
-        Unit { spot: SpotIx(0), device }
+    /// The device of the cell that a path of instances leads to.
+    pub fn unit(&mut self, path: &[InstanceIx], device: DeviceIx) -> Unit {
+        let spot = path.iter().fold(SpotIx(0), |spot, &instance| self.below(spot, instance));
+        Unit { spot, device }
     }
 
-    /// Which callers were chosen so far.
-    pub fn way(&self) -> Vec<u32> {
-        self.way[..self.chosen].iter().map(|choice| choice.taken).collect()
+    /// Begins a question: what earlier ones met on their way counts no more.
+    pub fn begin(&mut self) {
+        self.above = false;
+        self.crowded = None;
     }
 
-    /// Goes on to the next surroundings: forgets all, and gives false where there are no more (or too many).
-    pub fn advance(&mut self) -> bool {
-        self.way.truncate(self.chosen);
-        while let Some(last) = self.way.last_mut() {
-            if last.taken + 1 < last.of {
-                last.taken += 1;
-                break;
-            }
-            self.way.pop();
+    /// Whether the question led out of the anchor, so that its answer is worth nothing.
+    pub fn must_look_above(&self) -> bool {
+        self.above
+    }
+
+    /// Looks something up, or finds it; what the way there meets is met again by all that look it up.
+    pub(super) fn once<K: Eq + Hash + Copy, T: Clone>(
+        &mut self,
+        of: impl Fn(&mut Self) -> &mut HashMap<K, Found<T>>,
+        key: K,
+        find: impl FnOnce(&mut Self) -> T,
+    ) -> T {
+        if let Some(known) = of(self).get(&key) {
+            let known = known.clone();
+            self.above |= known.above;
+            self.crowded = self.crowded.or(known.crowded);
+            return known.value;
         }
-        if self.way.is_empty() {
-            return false;
-        }
-        if self.runs >= MOST_SURROUNDINGS {
-            let all = self.ground.reach.get(self.spots[0].at).count;
-            self.ground.leave_unseen(all.saturating_sub(MOST_SURROUNDINGS as u64));
-            self.gave_up = true;
-            return false;
-        }
-        let way = std::mem::take(&mut self.way);
-        *self = Walker { way, runs: self.runs + 1, ..Walker::new(self.ground, self.spots[0].at) };
-        true
+        let before = (std::mem::take(&mut self.above), self.crowded.take());
+        let value = find(self);
+        let found = Found { value: value.clone(), above: self.above, crowded: self.crowded };
+        of(self).insert(key, found);
+        self.above |= before.0;
+        self.crowded = before.1.or(self.crowded);
+        value
     }
 
-    /// Whether [`Walker::advance`] ended before all surroundings were seen.
-    pub fn gave_up(&self) -> bool {
-        self.gave_up
+    /// What the way of a question met so far, and a fresh start; to be given back to [`Walker::resume`].
+    pub fn pause(&mut self) -> bool {
+        std::mem::take(&mut self.above)
     }
 
-    /// How many instances of the design stand in these surroundings, as far as they were looked at.
-    pub fn instances(&self) -> u64 {
-        let highest = self.linked_top(SpotIx(0));
-        self.ground.reach.get(self.spot(highest).at).count
+    /// Goes on after [`Walker::pause`].
+    pub fn resume(&mut self, above: bool) {
+        self.above |= above;
     }
 
     /// A net with so many pins that it was not walked, if some question met one.
@@ -210,13 +299,6 @@ impl<'w> Walker<'w> {
     pub fn context(&self, at: SpotIx) -> &'w Context {
         let reach = self.ground.reach;
         reach.contexts.get(reach.get(self.spot(at).at).context)
-    }
-
-    fn linked_top(&self, mut at: SpotIx) -> SpotIx {
-        while let Some((above, _)) = self.spot(at).above {
-            at = above;
-        }
-        at
     }
 
     /// The dotted path of an instance; where the walk did not look, by the first caller.
@@ -255,25 +337,11 @@ impl<'w> Walker<'w> {
     }
 
     fn above(&mut self, at: SpotIx) -> Option<(SpotIx, InstanceIx)> {
-        if let Some(above) = self.spot(at).above {
-            return Some(above);
+        let above = self.spot(at).above;
+        if above.is_none() && !self.ground.reach.get(self.spot(at).at).parents.is_empty() {
+            self.above = true;
         }
-        let parents = &self.ground.reach.get(self.spot(at).at).parents;
-        if parents.is_empty() {
-            return None;
-        }
-        let of = parents.len() as u32;
-        if self.chosen == self.way.len() {
-            self.way.push(Choice { taken: 0, of });
-        }
-        let choice = &mut self.way[self.chosen];
-        choice.of = of;
-        self.chosen += 1;
-        let (parent, instance) = parents[(choice.taken as usize).min(parents.len() - 1)];
-        let above = SpotIx(self.spots.len() as u32);
-        self.spots.push(Spot { at: parent, above: None, below: vec![(instance, at)] });
-        self.spots[at.0 as usize].above = Some((above, instance));
-        Some((above, instance))
+        above
     }
 
     fn below(&mut self, at: SpotIx, instance: InstanceIx) -> SpotIx {
@@ -352,17 +420,18 @@ impl<'w> Walker<'w> {
     /// Everything that stands on a net, in this cell and all others; none where there is too much of it.
     pub fn on(&mut self, net: Net) -> Option<Rc<Vec<Touching>>> {
         let top = self.climb(net);
-        if let Some(known) = self.touching.get(&top) {
-            return known.clone();
-        }
-        let mut found = Vec::new();
-        let complete = self.gather(top, &mut found, &mut 0);
-        let result = complete.then(|| Rc::new(found));
-        if result.is_none() {
-            self.crowded = Some(top);
-        }
-        self.touching.insert(top, result.clone());
-        result
+        self.once(
+            |walker| &mut walker.touching,
+            top,
+            |walker| {
+                let mut found = Vec::new();
+                let complete = walker.gather(top, &mut found, &mut 0);
+                if !complete {
+                    walker.crowded = Some(top);
+                }
+                complete.then(|| Rc::new(found))
+            },
+        )
     }
 
     /// What is on a net, and nothing where there is too much of it.
@@ -449,10 +518,22 @@ impl<'w> Walker<'w> {
             return (true, false);
         }
         let class = self.class(unit);
-        let turned = class.is_none_or(|class| !class.asymmetric) && self.works_backwards(unit, drain, source);
+        let symmetric = class.is_none_or(|class| !class.asymmetric);
+        let turned =
+            symmetric && (self.is_drawn_backwards(unit, drain, source) || self.works_backwards(unit, drain, source));
         let depletion = class.and_then(|class| class.threshold).is_some_and(|threshold| threshold.lo < 0.0);
         let idle = !depletion && context.same(gate, if turned { drain } else { source });
         (idle, turned)
+    }
+
+    /// Whether a body stands on the drawn drain, and not on the drawn source: extracted netlists name the two in any order.
+    fn is_drawn_backwards(&self, unit: Unit, drain: NetIx, source: NetIx) -> bool {
+        let context = self.context(unit.spot);
+        let pins = self.ground.design().template(context.variant).device_pins(unit.device);
+        let at = self.ground.reach.get(self.spot(unit.spot).at).context;
+        let (_, Terminals::Mos { b: Some(b), .. }) = self.ground.element(at, unit.device) else { return false };
+        let body = pins[b as usize];
+        context.same(body, drain) && !context.same(body, source)
     }
 
     /// Whether the drawn drain of a device never stands on the far side of its source in any mode, and stands on the near one.
@@ -486,12 +567,7 @@ impl<'w> Walker<'w> {
 
     /// A MOS transistor with its nets; none where the device is none.
     pub fn mos(&mut self, unit: Unit) -> Option<Mos> {
-        if let Some(known) = self.mos.get(&unit) {
-            return *known;
-        }
-        let found = self.look_at(unit);
-        self.mos.insert(unit, found);
-        found
+        self.once(|walker| &mut walker.mos, unit, |walker| walker.look_at(unit))
     }
 
     fn look_at(&mut self, unit: Unit) -> Option<Mos> {
@@ -500,7 +576,7 @@ impl<'w> Walker<'w> {
         let variant = self.context(unit.spot).variant;
         let template = self.ground.design().template(variant);
         let pins = template.device_pins(unit.device);
-        let (_, turned) = self.manner(unit, d, g, s);
+        let (still, turned) = self.manner(unit, d, g, s);
         let (d, s) = if turned { (s, d) } else { (d, s) };
         let class = self.ground.design().device_type(template, unit.device).class;
         let (d, g, s) = (pins[d as usize], pins[g as usize], pins[s as usize]);
@@ -512,13 +588,13 @@ impl<'w> Walker<'w> {
             s: self.net(unit.spot, s),
             b: b.map(|b| self.net(unit.spot, b)),
             class,
+            still,
         })
     }
 
     /// A MOS transistor that can carry current: no dummy, not idle.
     pub fn working(&mut self, unit: Unit) -> Option<Mos> {
-        let mos = self.mos(unit)?;
-        (!self.plays(unit, Role::Dummy) && !self.plays(unit, Role::Idle)).then_some(mos)
+        self.mos(unit).filter(|mos| !mos.still)
     }
 
     /// The other end of a two-terminal device.
@@ -561,8 +637,8 @@ impl<'w> Walker<'w> {
         })
     }
 
-    /// Chooses callers up to the top, for a question that wants the full path.
-    pub fn choose_all(&mut self, spot: SpotIx) {
+    /// Looks up to the top, for a question that wants the full path.
+    pub fn reach_the_top(&mut self, spot: SpotIx) {
         let mut here = spot;
         while let Some((above, _)) = self.above(here) {
             here = above;
