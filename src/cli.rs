@@ -5,21 +5,21 @@
 mod output;
 mod progress;
 
-use crate::deck::{load_decks, read_date};
+use crate::deck::load_decks;
 use crate::diag::Severity;
 use crate::facts::vocabulary::vocabulary;
 use crate::load::Disk;
 use crate::pipeline::{self, Job, Outcome};
 use crate::report::text::Look;
-use crate::report::{json, short, text};
+use crate::report::{Setting, github, gitlab, json, markdown, sarif, short, text};
 use crate::source::SourceMap;
-use crate::waiver::Date;
+use crate::waiver::{Date, read_date};
 use crate::{init, reference, survey, tracing};
 use clap::{Args, Parser, Subcommand, ValueEnum};
 use output::Output;
 use progress::Spinner;
 use std::io::{self, Write};
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 
 /// Checks that the high-voltage transistors of a SPICE netlist are used as their process allows.
 #[derive(Debug, Parser)]
@@ -73,6 +73,15 @@ struct Lint {
     /// How to write the report
     #[arg(long, value_enum, default_value_t = Format::Text)]
     format: Format,
+    /// Let the findings pass that this file knows, and name those that are no longer there
+    #[arg(long, value_name = "FILE")]
+    baseline: Option<PathBuf>,
+    /// Write a file that knows all findings of this run, and let them pass
+    #[arg(long, value_name = "FILE")]
+    write_baseline: Option<PathBuf>,
+    /// List accepted findings too, marked as such
+    #[arg(long)]
+    with_waived: bool,
     /// Fail (exit code 1) if a finding is at least this grave
     #[arg(long, value_enum, value_name = "LEVEL", default_value_t = Level::Error)]
     fail_on: Level,
@@ -143,6 +152,14 @@ enum Format {
     Short,
     /// One JSON object
     Json,
+    /// SARIF 2.1.0, for whatever shows results of static analysis
+    Sarif,
+    /// Annotations of GitHub Actions, as lines of a job's output
+    Github,
+    /// GitLab's code quality report
+    Gitlab,
+    /// A comment at a change: a table, details folded away
+    Markdown,
 }
 
 #[derive(Clone, Copy, Debug, ValueEnum)]
@@ -205,23 +222,55 @@ pub fn run() -> u8 {
 }
 
 fn job(netlists: Vec<PathBuf>, inputs: &Inputs) -> Job {
-    Job { netlists, decks: inputs.deck.clone(), top: inputs.top.clone(), modes: inputs.mode.clone(), ..Job::default() }
+    let (decks, top, modes) = (inputs.deck.clone(), inputs.top.clone(), inputs.mode.clone());
+    Job { netlists, decks, top, modes, last: true, ..Job::default() }
 }
 
 fn run_lint(lint: Lint) -> io::Result<u8> {
-    let job = Job { only: lint.only, today: lint.today, ..job(lint.netlists, &lint.inputs) };
+    let job = Job { only: lint.only, today: lint.today, baseline: lint.baseline, ..job(lint.netlists, &lint.inputs) };
     let spinner = Spinner::new();
-    let outcome = pipeline::lint(&Disk, &job, &spinner);
+    let mut outcome = pipeline::lint(&Disk, &job, &spinner);
+    outcome.report.with_waived = lint.with_waived;
     spinner.finish();
+    if let Some(path) = &lint.write_baseline {
+        write_baseline(&mut outcome, path)?;
+    }
+    let setting = Setting { base: pipeline::base(&Disk), exit_code: exit_code(&outcome, lint.fail_on.severity()) };
     let mut output = Output::open(lint.inputs.out.as_deref())?;
     let look = output.look();
-    match lint.format {
-        Format::Text => output.write(|out| text::write(&outcome.report, &outcome.sources, look, out))?,
-        Format::Short => output.write(|out| short::write(&outcome.report, &outcome.sources, out))?,
-        Format::Json => output.write(|out| json::write(&outcome.report, &outcome.sources, out))?,
-    }
+    output.write(|out| write(&outcome, lint.format, &setting, look, out))?;
     output.finish()?;
-    Ok(exit_code(&outcome, lint.fail_on.severity()))
+    std::mem::forget(outcome);
+    Ok(setting.exit_code)
+}
+
+/// A baseline that cannot be written is said on standard error; the report follows all the same.
+fn write_baseline(outcome: &mut Outcome, path: &Path) -> io::Result<()> {
+    match pipeline::accept_all(&Disk, outcome, path) {
+        Ok(text) => {
+            let mut output = Output::open(Some(path))?;
+            output.write(|out| out.write_all(text.as_bytes()))?;
+            output.finish()
+        }
+        Err(why) => {
+            (outcome.could_not, outcome.report.could_not) = (true, true);
+            let _ = writeln!(io::stderr(), "drainwise: {} is not written: {why}", path.display());
+            Ok(())
+        }
+    }
+}
+
+fn write(outcome: &Outcome, format: Format, setting: &Setting, look: Look, out: &mut dyn Write) -> io::Result<()> {
+    let (report, sources) = (&outcome.report, &outcome.sources);
+    match format {
+        Format::Text => text::write(report, sources, look, out),
+        Format::Short => short::write(report, sources, out),
+        Format::Json => json::write(report, sources, out),
+        Format::Sarif => sarif::write(report, sources, setting, out),
+        Format::Github => github::write(report, sources, setting, out),
+        Format::Gitlab => gitlab::write(report, sources, setting, out),
+        Format::Markdown => markdown::write(report, sources, setting, out),
+    }
 }
 
 fn exit_code(outcome: &Outcome, fail_on: Severity) -> u8 {

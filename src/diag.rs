@@ -100,15 +100,40 @@ pub struct Finding {
     pub modes: Vec<String>,
 }
 
+/// Where it was said that a finding is accepted.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Hash)]
+pub enum Accepted {
+    /// Among the waivers of a deck.
+    Deck,
+    /// In a comment at the card.
+    Comment,
+    /// In a baseline: known before, by nobody accepted in words.
+    Baseline,
+}
+
 /// Where a waiver came from, on a diagnostic that it hides.
 #[derive(Clone, Debug, PartialEq, Eq)]
 pub struct Waived {
+    /// Where it was said.
+    pub how: Accepted,
+    /// The place of that.
+    pub place: Span,
     /// Why it was accepted.
     pub reason: String,
     /// By whom, where that was said.
     pub by: Option<String>,
     /// Last day it holds, `YYYY-MM-DD`, where there is one.
     pub until: Option<String>,
+}
+
+impl Waived {
+    /// What such a finding is called in reports.
+    pub fn word(&self) -> &'static str {
+        match self.how {
+            Accepted::Deck | Accepted::Comment => "waived",
+            Accepted::Baseline => "known",
+        }
+    }
 }
 
 /// One message with its place.
@@ -126,6 +151,9 @@ pub struct Diagnostic {
     pub label: String,
     /// Further places.
     pub labels: Vec<Label>,
+    /// Chains of steps that lead here, each in its order, from where it begins to the place itself: how a voltage comes from its
+    /// rail. Their steps stand among the labels too.
+    pub chains: Vec<Vec<Label>>,
     /// What to do about it.
     pub help: Option<String>,
     /// Where the reason can be read.
@@ -148,6 +176,7 @@ impl Diagnostic {
             span,
             label: String::new(),
             labels: Vec::new(),
+            chains: Vec::new(),
             help: None,
             cite: None,
             finding: None,

@@ -16,6 +16,7 @@ mod paths;
 mod text;
 
 pub use files::{Disk, Files, Memory};
+pub use paths::relative;
 use text::Trouble;
 
 /// How deep files may include one another.

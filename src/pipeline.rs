@@ -1,5 +1,10 @@
 //! The whole program as one readable function: load, elaborate, find contexts, compute reach, ask the rules, word the findings.
 
+mod comments;
+mod known;
+
+pub use known::accept_all;
+
 use crate::current::caps;
 use crate::deck::{self, DeckFiles};
 use crate::declared::{Deck, Rule};
@@ -9,13 +14,14 @@ use crate::engine;
 use crate::facts::vocabulary::{asks_for_voltages, vocabulary};
 use crate::facts::{World, ratings::count_pairs};
 use crate::graph::Contexts;
-use crate::load::{Files, LoadRequest, load};
+use crate::load::{Files, LoadRequest, load, relative};
 use crate::names::{Names, nearest};
 use crate::reach::Reach;
-use crate::report::{Pairs, Report, Summary};
+use crate::report::{Base, Pairs, Report, RuleText, Summary};
 use crate::roles::{MOST_SURROUNDINGS, Roles};
 use crate::source::{SourceMap, Span};
-use crate::waiver::{self, Date};
+use crate::waiver::baseline::Known;
+use crate::waiver::{self, Date, Waiver};
 use std::path::{Path, PathBuf};
 
 /// What a run is asked to do.
@@ -33,8 +39,12 @@ pub struct Job {
     pub modes: Vec<String>,
     /// Voltages are wanted whatever the rules ask for.
     pub all_voltages: bool,
+    /// A list of known findings, which do not fail.
+    pub baseline: Option<PathBuf>,
     /// The day against which waivers are held; none: today.
     pub today: Option<Date>,
+    /// The process ends with this run: what was built is left for the system to take back at once, instead of piece by piece.
+    pub last: bool,
 }
 
 /// What a run of `lint` gives.
@@ -67,6 +77,10 @@ pub struct Loaded {
     cards_skipped: u64,
     files: u64,
     top: Option<(String, Span)>,
+    known: Vec<Known>,
+    /// The number of the first text that is a netlist.
+    first_netlist: usize,
+    in_comments: Vec<Waiver>,
     shown_netlists: Vec<String>,
     shown_decks: Vec<String>,
 }
@@ -76,10 +90,14 @@ pub fn read(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Result<Loa
     progress.stage("reading decks");
     let mut sources = SourceMap::new();
     let arguments = sources.add("command line", command_line(job));
-    let decks = if job.decks.is_empty() { nearest_deck(files, job) } else { job.decks.clone() };
+    let decks = decks_of(files, job);
     let (deck, mut diagnostics) = deck::load_decks(&Decks(files), &decks, &mut sources, &|subject| vocabulary(subject));
     diagnostics.extend(unknown_words(&sources, arguments, job, &deck));
-    let mut netlists = job.netlists.clone();
+    let known = known::read(files, job, &mut sources).unwrap_or_else(|fault| {
+        diagnostics.push(*fault);
+        Vec::new()
+    });
+    let mut netlists: Vec<PathBuf> = job.netlists.iter().map(|path| relative(path, files)).collect();
     if netlists.is_empty() {
         netlists = deck.netlists.iter().map(|(path, _)| PathBuf::from(path)).collect();
     }
@@ -97,6 +115,7 @@ pub fn read(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Result<Loa
     };
     let roots = decks.iter().filter_map(folder).chain(deck.include_roots.iter().map(PathBuf::from)).collect();
     let request = LoadRequest { netlists: netlists.clone(), roots, skips: deck.include_skips.clone() };
+    let first_netlist = sources.files().count();
     let loaded = load(files, &request, &mut sources, &mut names);
     diagnostics.extend(loaded.diagnostics.iter().cloned());
     let top = match &job.top {
@@ -112,6 +131,9 @@ pub fn read(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Result<Loa
         diagnostics,
         names,
         top,
+        known,
+        first_netlist,
+        in_comments: Vec::new(),
         shown_netlists: netlists.iter().map(|path| path.display().to_string()).collect(),
         shown_decks: decks.iter().map(|path| path.display().to_string()).collect(),
     })
@@ -124,8 +146,21 @@ pub fn with_world<R>(
     progress: &dyn Progress,
     work: impl FnOnce(World<'_>, Seen) -> R,
 ) -> (SourceMap, R) {
-    let Loaded { sources, deck, mut diagnostics, names, tree, cards_skipped, files, top, shown_netlists, shown_decks } =
-        loaded;
+    let Loaded {
+        sources,
+        deck,
+        mut diagnostics,
+        names,
+        tree,
+        cards_skipped,
+        files,
+        top,
+        shown_netlists,
+        shown_decks,
+        known: _,
+        first_netlist: _,
+        in_comments,
+    } = loaded;
     progress.stage("elaborating");
     let cards = tree.card_count;
     let cells = tree.cells.len() as u64 - 1;
@@ -155,15 +190,20 @@ pub fn with_world<R>(
         cards_skipped: cards_skipped + design.cards_skipped,
         cells,
         files,
+        in_comments,
         shown_netlists,
         shown_decks,
     };
     let result = work(World { deck: &deck, design: &design, contexts: &contexts, reach: &reach, roles: &roles }, seen);
-    drop(roles);
-    drop(reach);
-    drop(contexts);
-    drop(design);
+    put_away(job, roles);
+    put_away(job, reach);
+    put_away(job, contexts);
+    put_away(job, design);
     (sources, result)
+}
+
+fn put_away<T>(job: &Job, built: T) {
+    if job.last { std::mem::forget(built) } else { drop(built) }
 }
 
 /// What reading found, beside the world.
@@ -174,22 +214,32 @@ pub struct Seen {
     cards_skipped: u64,
     cells: u64,
     files: u64,
+    in_comments: Vec<Waiver>,
     shown_netlists: Vec<String>,
     shown_decks: Vec<String>,
 }
 
 /// The main job.
 pub fn lint(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Outcome {
-    let loaded = match read(files, job, progress) {
+    let mut loaded = match read(files, job, progress) {
         Ok(loaded) => loaded,
         Err(outcome) => return *outcome,
     };
+    let known = std::mem::take(&mut loaded.known);
+    let Loaded { sources, first_netlist, tree, names, deck, .. } = &loaded;
+    let (in_comments, faults) = comments::waivers(sources, *first_netlist, tree, names, deck);
+    loaded.in_comments = in_comments;
+    loaded.diagnostics.extend(faults);
     let (sources, (mut report, could_not)) = with_world(loaded, job, progress, |world, seen| {
         progress.stage("asking the rules");
         judge(world, seen, job)
     });
     report.sort(&sources);
-    Outcome { sources, report, could_not }
+    let mut outcome = Outcome { sources, report, could_not };
+    let partial = could_not || job.top.is_some() || !job.modes.is_empty();
+    let asked = |known: &Known| !partial && (job.only.is_empty() || job.only.contains(&known.rule));
+    known::forgive(&mut outcome, &known, asked);
+    outcome
 }
 
 /// The rules that a job asks.
@@ -219,22 +269,36 @@ fn judge(world: World<'_>, mut seen: Seen, job: &Job) -> (Report, bool) {
     diagnostics.extend(engine::hygiene(world.design, world.contexts, world.deck, &rules, summary.devices));
     diagnostics.extend(engine::rails_unmatched(world.design, world.contexts, world.deck, &rules));
     diagnostics.retain(|diagnostic| diagnostic.severity != Severity::Silent);
-    let waivers: Vec<waiver::Waiver> = world
+    let waivers: Vec<Waiver> = world
         .deck
         .waivers
         .iter()
+        .chain(&seen.in_comments)
         .filter(|waiver| job.only.is_empty() || job.only.contains(&waiver.rule))
         .cloned()
         .collect();
     let complaints = waiver::apply(&mut diagnostics, &waivers, job.today.unwrap_or_else(waiver::today));
     diagnostics.extend(engine::waivers(complaints, &rules));
-    summary.findings = Summary::count(&diagnostics);
     for beyond in judged.beyond.iter().filter(|beyond| beyond.severity != Severity::Silent) {
-        summary.findings.add(beyond.severity, beyond.instances);
+        summary.unlisted.add(beyond.severity, beyond.instances);
         let (rule, instances, most) = (&beyond.rule, beyond.instances, engine::MOST_FINDINGS);
         summary.not_listed.push(format!("{instances} more of {rule}, beyond the first {most} statements"));
     }
-    (Report { diagnostics, summary }, could_not)
+    summary.count(&diagnostics);
+    let rules = rules.iter().map(|rule| rule_text(rule)).collect();
+    (Report { rules, could_not, diagnostics, summary, ..Report::default() }, could_not)
+}
+
+fn rule_text(rule: &Rule) -> RuleText {
+    RuleText {
+        id: rule.id.clone(),
+        about: rule.subject.word(),
+        severity: rule.severity,
+        title: rule.title.clone(),
+        why: rule.why.clone(),
+        cite: rule.cite.clone(),
+        examples: rule.examples.as_ref().map(|examples| (examples.fires.clone(), examples.quiet.clone())),
+    }
 }
 
 /// Counts what a run looked at.
@@ -289,7 +353,10 @@ fn top_name(design: &Design<'_>, top: crate::design::VariantIx) -> String {
 fn not_looked_at(world: World<'_>, unjudged: u64) -> Vec<String> {
     let mut lines = Vec::new();
     if unjudged > 0 {
-        lines.push(format!("{unjudged} devices whose model no class names, or whose card does not fit it"));
+        lines.push(match unjudged {
+            1 => "one device whose model no class names, or whose card does not fit it".to_owned(),
+            _ => format!("{unjudged} devices whose model no class names, or whose card does not fit it"),
+        });
     }
     let reached = world
         .design
@@ -328,8 +395,9 @@ fn has_error(diagnostics: &[Diagnostic]) -> bool {
 
 /// The outcome of a run that could not be done.
 pub fn refused(sources: SourceMap, diagnostics: Vec<Diagnostic>) -> Outcome {
-    let summary = Summary { findings: Summary::count(&diagnostics), ..Summary::default() };
-    let mut report = Report { diagnostics, summary };
+    let mut summary = Summary::default();
+    summary.count(&diagnostics);
+    let mut report = Report { diagnostics, summary, could_not: true, ..Report::default() };
     report.sort(&sources);
     Outcome { sources, report, could_not: true }
 }
@@ -337,7 +405,7 @@ pub fn refused(sources: SourceMap, diagnostics: Vec<Diagnostic>) -> Outcome {
 /// Reads the decks of a job alone.
 pub fn read_decks(files: &dyn Files, job: &Job) -> (Deck, Outcome) {
     let mut sources = SourceMap::new();
-    let decks = if job.decks.is_empty() { nearest_deck(files, job) } else { job.decks.clone() };
+    let decks = decks_of(files, job);
     let (deck, diagnostics) = deck::load_decks(&Decks(files), &decks, &mut sources, &|subject| vocabulary(subject));
     (deck, checked(sources, diagnostics))
 }
@@ -345,7 +413,9 @@ pub fn read_decks(files: &dyn Files, job: &Job) -> (Deck, Outcome) {
 /// The outcome of a run that only checked something.
 pub fn checked(sources: SourceMap, diagnostics: Vec<Diagnostic>) -> Outcome {
     let could_not = has_error(&diagnostics);
-    Outcome { could_not, ..refused(sources, diagnostics) }
+    let mut outcome = refused(sources, diagnostics);
+    (outcome.could_not, outcome.report.could_not) = (could_not, could_not);
+    outcome
 }
 
 /// The words of the command line that messages can point at.
@@ -379,6 +449,20 @@ fn unknown_words(sources: &SourceMap, file: crate::source::FileId, job: &Job, de
     };
     let unknown_rules = job.only.iter().filter_map(|word| check(word, &rules, "rule"));
     unknown_rules.chain(job.modes.iter().filter_map(|word| check(word, &modes, "mode"))).collect()
+}
+
+/// The decks that a job names, else the nearest.
+fn decks_of(files: &dyn Files, job: &Job) -> Vec<PathBuf> {
+    let decks = if job.decks.is_empty() { nearest_deck(files, job) } else { job.decks.clone() };
+    decks.iter().map(|path| relative(path, files)).collect()
+}
+
+/// Where paths count from in reports that are read elsewhere: the nearest folder upward that holds a `.git`, else the folder one
+/// is in.
+pub fn base(files: &dyn Files) -> Base {
+    let Some(here) = files.here() else { return Base::default() };
+    let root = here.ancestors().find(|folder| files.exists(&folder.join(".git"))).unwrap_or(&here).to_owned();
+    Base::new(root, here)
 }
 
 /// The nearest `drainwise.yaml` upward from the first netlist, or from here.

@@ -1,7 +1,10 @@
 //! Waivers: findings that someone accepted, with a reason and, where wanted, a last day. The late pass marks finished
 //! diagnostics, and says which waivers hide nothing and which are past their day.
 
-use crate::diag::{Diagnostic, Finding, Label, Waived};
+pub mod baseline;
+pub mod comment;
+
+use crate::diag::{Accepted, Diagnostic, Finding, Label, Waived};
 use crate::names::{Glob, nearest};
 use crate::source::Span;
 use std::fmt;
@@ -21,6 +24,29 @@ impl fmt::Display for Date {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         write!(f, "{:04}-{:02}-{:02}", self.year, self.month, self.day)
     }
+}
+
+/// Reads `2027-03-01`; none for what is no day of the calendar.
+pub fn read_date(text: &str) -> Option<Date> {
+    let mut parts = text.split('-');
+    let mut part = |digits: usize| {
+        let part = parts.next()?;
+        let plain = part.len() == digits && part.bytes().all(|byte| byte.is_ascii_digit());
+        plain.then(|| part.parse::<u16>().ok()).flatten()
+    };
+    let (year, month, day) = (part(4)?, part(2)?, part(2)?);
+    let leap = year % 4 == 0 && (year % 100 != 0 || year % 400 == 0);
+    let days = match month {
+        1 | 3 | 5 | 7 | 8 | 10 | 12 => 31,
+        4 | 6 | 9 | 11 => 30,
+        2 if leap => 29,
+        2 => 28,
+        _ => return None,
+    };
+    if parts.next().is_some() || day == 0 || day > days {
+        return None;
+    }
+    Some(Date { year, month: month as u8, day: day as u8 })
 }
 
 /// Today, in universal time.
@@ -64,6 +90,20 @@ pub struct Waiver {
     pub until: Option<Date>,
     /// Where it stands.
     pub place: Span,
+    /// For one in a comment: the card that it stands at. It accepts what is found there, in every instance.
+    pub card: Option<Span>,
+}
+
+impl Waiver {
+    /// Whether it stands in a comment.
+    pub fn in_comment(&self) -> bool {
+        self.card.is_some()
+    }
+
+    /// What it names, as people write it.
+    pub fn shown_at(&self) -> &str {
+        self.at.text().trim_start_matches('/')
+    }
 }
 
 /// What is wrong with a waiver.
@@ -82,8 +122,8 @@ pub struct Complaint {
     pub kind: Fault,
     /// The waiver.
     pub waiver: Waiver,
-    /// For one that hides nothing: a finding of the same rule at a similar place.
-    pub near: Option<String>,
+    /// For one that hides nothing: what it may have meant, as a sentence.
+    pub hint: Option<String>,
 }
 
 /// Marks the diagnostics that waivers hide on the day `today` (`until` is inclusive). A finding about several instances is
@@ -96,13 +136,13 @@ pub fn apply(diagnostics: &mut [Diagnostic], waivers: &[Waiver], today: Date) ->
         let about: Vec<(usize, &Waiver)> = waivers
             .iter()
             .enumerate()
-            .filter(|(_, waiver)| waiver.rule == diagnostic.code && concerns(waiver, finding))
+            .filter(|(_, waiver)| waiver.rule == diagnostic.code && concerns(waiver, diagnostic.span, finding))
             .collect();
         for (index, _) in &about {
             used[*index] = true;
         }
         let valid: Vec<&Waiver> = about.iter().map(|(_, waiver)| *waiver).filter(|waiver| holds(waiver)).collect();
-        match cover(&valid, finding) {
+        match cover(&valid, diagnostic.span, finding) {
             Cover::Whole(waiver) => diagnostic.waived = Some(waived(waiver)),
             Cover::Part(waiver, text) => diagnostic.labels.push(Label { span: waiver.place, text }),
             Cover::Nothing => {}
@@ -114,14 +154,20 @@ pub fn apply(diagnostics: &mut [Diagnostic], waivers: &[Waiver], today: Date) ->
             true => Fault::Expired,
             false => Fault::Stale,
         };
-        let near = if kind == Fault::Stale { nearest_finding(waiver, diagnostics) } else { None };
-        Some(Complaint { kind, waiver: waiver.clone(), near })
+        let hint = if kind == Fault::Stale { hint(waiver, diagnostics) } else { None };
+        Some(Complaint { kind, waiver: waiver.clone(), hint })
     });
     complaints.collect()
 }
 
 fn waived(waiver: &Waiver) -> Waived {
-    Waived { reason: waiver.reason.clone(), by: waiver.by.clone(), until: waiver.until.map(|date| date.to_string()) }
+    Waived {
+        how: if waiver.in_comment() { Accepted::Comment } else { Accepted::Deck },
+        place: waiver.place,
+        reason: waiver.reason.clone(),
+        by: waiver.by.clone(),
+        until: waiver.until.map(|date| date.to_string()),
+    }
 }
 
 enum Cover<'w> {
@@ -130,20 +176,30 @@ enum Cover<'w> {
     Whole(&'w Waiver),
 }
 
-/// Whether a waiver says something about a finding at all.
-fn concerns(waiver: &Waiver, finding: &Finding) -> bool {
+/// Whether a waiver says something about a finding at all; `span` is the finding's place.
+fn concerns(waiver: &Waiver, span: Span, finding: &Finding) -> bool {
     let pair =
         waiver.pair.as_ref().is_none_or(|pair| finding.pairs.iter().any(|other| other.eq_ignore_ascii_case(pair)));
-    pair && (names_statement(waiver, finding) || finding.paths.iter().any(|path| waiver.at.matches_path(path)))
+    pair && stands_at(waiver, span, finding)
 }
 
-/// Whether a waiver names the statement itself, as `cell/device`.
-fn names_statement(waiver: &Waiver, finding: &Finding) -> bool {
-    waiver.at.text().contains('/') && waiver.at.matches(&format!("{}/{}", finding.cell, finding.device))
+fn stands_at(waiver: &Waiver, span: Span, finding: &Finding) -> bool {
+    names_statement(waiver, span, finding)
+        || (!waiver.in_comment() && finding.paths.iter().any(|path| waiver.at.matches_path(path)))
+}
+
+/// Whether a waiver names the statement itself: as `cell/device`, or by standing at its card. A finding whose place is in another file
+/// than the card (a deck) is known by its names.
+fn names_statement(waiver: &Waiver, span: Span, finding: &Finding) -> bool {
+    let named = || waiver.at.text().contains('/') && waiver.at.matches(&format!("{}/{}", finding.cell, finding.device));
+    match waiver.card {
+        Some(card) if card.file == span.file => card.start <= span.start && span.end <= card.end,
+        _ => named(),
+    }
 }
 
 /// How much of a finding the waivers cover: every instance and, where they narrow, every pair.
-fn cover<'w>(waivers: &[&'w Waiver], finding: &Finding) -> Cover<'w> {
+fn cover<'w>(waivers: &[&'w Waiver], span: Span, finding: &Finding) -> Cover<'w> {
     let Some(&first) = waivers.first() else { return Cover::Nothing };
     let pairs: Vec<Option<&str>> = if finding.pairs.is_empty() {
         vec![None]
@@ -154,11 +210,13 @@ fn cover<'w>(waivers: &[&'w Waiver], finding: &Finding) -> Cover<'w> {
         waiver.pair.as_ref().is_none_or(|wanted| pair.is_some_and(|pair| pair.eq_ignore_ascii_case(wanted)))
     };
     let whole_statement =
-        |pair| waivers.iter().any(|waiver| covers_pair(&waiver, pair) && names_statement(waiver, finding));
+        |pair| waivers.iter().any(|waiver| covers_pair(&waiver, pair) && names_statement(waiver, span, finding));
     let path_covered = |path: &String| {
         pairs.iter().all(|&pair| {
             whole_statement(pair)
-                || waivers.iter().any(|waiver| covers_pair(&waiver, pair) && waiver.at.matches_path(path))
+                || waivers
+                    .iter()
+                    .any(|waiver| !waiver.in_comment() && covers_pair(&waiver, pair) && waiver.at.matches_path(path))
         })
     };
     let statement = pairs.iter().all(|&pair| whole_statement(pair));
@@ -182,19 +240,38 @@ fn cover<'w>(waivers: &[&'w Waiver], finding: &Finding) -> Cover<'w> {
     )
 }
 
-fn nearest_finding(waiver: &Waiver, diagnostics: &[Diagnostic]) -> Option<String> {
-    let findings = diagnostics
-        .iter()
-        .filter(|diagnostic| diagnostic.code == waiver.rule)
-        .filter_map(|diagnostic| diagnostic.finding.as_ref());
+/// What a waiver that hides nothing may have meant: another pair at its place, the same rule at a place of a similar name or of the same
+/// device's name, or another rule at its place.
+fn hint(waiver: &Waiver, diagnostics: &[Diagnostic]) -> Option<String> {
+    let found = || diagnostics.iter().filter_map(|one| Some((one, one.finding.as_deref()?)));
+    let here = |&(one, finding): &(&Diagnostic, &Finding)| stands_at(waiver, one.span, finding);
+    if let Some((_, finding)) = found().filter(here).find(|(one, _)| one.code == waiver.rule) {
+        return Some(format!("the finding there is about {}", finding.pairs.join(", ")));
+    }
     let slash = waiver.at.text().contains('/');
-    let places: Vec<String> = findings
-        .flat_map(
-            |finding| if slash { vec![format!("{}/{}", finding.cell, finding.device)] } else { finding.paths.clone() },
-        )
+    let places: Vec<String> = found()
+        .filter(|(one, _)| one.code == waiver.rule)
+        .flat_map(|(_, finding)| match slash {
+            true => vec![format!("{}/{}", finding.cell, finding.device)],
+            false => finding.paths.clone(),
+        })
         .take(5000)
         .collect();
-    nearest(waiver.at.text(), places.iter().map(String::as_str)).map(str::to_owned)
+    if let Some(near) = nearest(waiver.at.text(), places.iter().map(String::as_str)) {
+        let near = near.trim_start_matches('/');
+        return Some(match waiver.in_comment() {
+            true => format!("there is one at `{near}`: put the comment at that card"),
+            false => format!("did you mean `{near}`?"),
+        });
+    }
+    let last = |path: &str| path.rsplit(['.', '/']).next().unwrap_or_default().to_ascii_lowercase();
+    if let Some(same) = places.iter().find(|place| last(place) == last(waiver.at.text())) {
+        return Some(format!("there is one at `{}`", same.trim_start_matches('/')));
+    }
+    let mut others: Vec<&str> = found().filter(here).map(|(one, _)| one.code.as_str()).collect();
+    others.dedup();
+    let other = nearest(&waiver.rule, others.iter().copied()).or(others.first().copied())?;
+    Some(format!("what is found there is `{other}`"))
 }
 
 #[cfg(test)]
@@ -236,6 +313,7 @@ mod tests {
             by: None,
             until: None,
             place: place(),
+            card: None,
         }
     }
 

@@ -28,6 +28,8 @@ classes:
 rails: {VSS: 0V, VIN: 6V..48V, CTL: 0V..5V}
 ";
 
+const FORMATS: [&str; 7] = ["text", "short", "json", "sarif", "github", "gitlab", "markdown"];
+
 /// One finding: three fingers.
 const BLOCK: &str = "\
 * coil switch
@@ -300,7 +302,7 @@ fn json_has_all_fields() {
 #[test]
 fn the_same_input_gives_the_same_bytes() {
     let bench = Bench::with_block();
-    for format in ["text", "short", "json"] {
+    for format in FORMATS {
         let line = format!("lint block.sp --format {format}");
         assert_eq!(bench.run(&line).out, bench.run(&line).out, "{format}");
     }
@@ -368,7 +370,7 @@ fn there_is_no_colour_where_there_is_no_terminal() {
 fn a_closed_pipe_is_no_error() {
     let devices: String = (0..3000).map(|n| format!("M{n} OUT CTL VSS VSS ldn60 w=60u l=0.6u nf=3\n")).collect();
     let bench = Bench::new(&[("many.sp", &format!("* many coils\nRL VIN OUT 1k\n{devices}"))]);
-    for format in ["text", "short", "json"] {
+    for format in FORMATS {
         let mut child = std::process::Command::new(assert_cmd::cargo::cargo_bin("drainwise"))
             .args(["lint", "many.sp", "--format", format])
             .current_dir(bench.folder.path())

@@ -9,7 +9,7 @@ use drainwise::diag::Severity;
 use drainwise::load::Memory;
 use drainwise::pipeline::{Job, Outcome, Progress, lint};
 use drainwise::report::text::Look;
-use drainwise::report::{json, short, text};
+use drainwise::report::{Setting, github, gitlab, json, markdown, sarif, short, text};
 use drainwise::waiver::Date;
 use proptest::prelude::*;
 use std::fs;
@@ -69,13 +69,20 @@ fn sound(outcome: &Outcome) {
     }
 }
 
-/// The report in each of the three formats.
-fn written(outcome: &Outcome) -> [String; 3] {
+/// The report in each format.
+fn written(outcome: &Outcome) -> [String; 7] {
+    let (report, sources, setting) = (&outcome.report, &outcome.sources, &Setting::default());
+    let others = [sarif::write, github::write, gitlab::write, markdown::write].map(|write| {
+        let mut bytes = Vec::new();
+        write(report, sources, setting, &mut bytes).unwrap();
+        bytes
+    });
+    let [log, lines, issues, comment] = others;
     let (mut plain, mut line, mut data) = (Vec::new(), Vec::new(), Vec::new());
     text::write(&outcome.report, &outcome.sources, Look { width: 100, colour: false }, &mut plain).unwrap();
     short::write(&outcome.report, &outcome.sources, &mut line).unwrap();
     json::write(&outcome.report, &outcome.sources, &mut data).unwrap();
-    [plain, line, data].map(|bytes| String::from_utf8(bytes).unwrap())
+    [plain, line, data, log, lines, issues, comment].map(|bytes| String::from_utf8(bytes).unwrap())
 }
 
 /// The run could not be done, and an error with these words stands on this line of the block or deck.
@@ -304,7 +311,7 @@ fn terminal_escapes_are_never_sent() {
         DECK,
     );
     assert!(outcome.report.diagnostics.len() > 3);
-    let [plain, line, data] = written(&outcome);
+    let [plain, line, data, ..] = written(&outcome);
     for report in [&plain, &line, &data] {
         let sent = report.chars().find(|&c| c.is_control() && c != '\n' && c != '\t');
         // JSON may write a C1 control as it is inside a string; the escape that starts a sequence it must not
@@ -312,7 +319,7 @@ fn terminal_escapes_are_never_sent() {
         assert_eq!(sent, None, "{report:?}");
     }
     let bad_deck = deck("rails: {\"A\\e[31m\": 7\u{1b}[31m}\nru\u{1b}les: 1\n");
-    let [plain, line, _] = written(&bad_deck);
+    let [plain, line, ..] = written(&bad_deck);
     assert!(!plain.contains('\u{1b}') && !line.contains('\u{1b}'));
 }
 

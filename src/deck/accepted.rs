@@ -4,7 +4,7 @@ use super::keys::WAIVER;
 use super::node::{Node, Shape};
 use super::value::{Checker, Fields};
 use crate::names::Glob;
-use crate::waiver::{Date, Waiver};
+use crate::waiver::{Date, Waiver, read_date};
 
 /// The waivers of a list; `rules` are the ids that there are.
 pub(crate) fn waivers(checker: &mut Checker, node: &Node, rules: &[&str]) -> Vec<Waiver> {
@@ -33,7 +33,7 @@ fn waiver(checker: &mut Checker, node: &Node, rules: &[&str]) -> Option<Waiver> 
         Some(node) => Some(date(checker, node)?),
         None => None,
     };
-    Some(Waiver { rule: rule?, at: Glob::new(at?), pair, reason: reason?, by, until, place: node.span })
+    Some(Waiver { rule: rule?, at: Glob::new(at?), pair, reason: reason?, by, until, place: node.span, card: None })
 }
 
 /// A text that says something.
@@ -63,27 +63,4 @@ fn date(checker: &mut Checker, node: &Node) -> Option<Date> {
         checker.error(node.span, format!("a day of the calendar is needed here, such as 2027-03-01, not `{text}`"));
     }
     date
-}
-
-/// Reads `2027-03-01`; none for what is no day of the calendar.
-pub fn read_date(text: &str) -> Option<Date> {
-    let mut parts = text.split('-');
-    let mut part = |digits: usize| {
-        let part = parts.next()?;
-        let plain = part.len() == digits && part.bytes().all(|byte| byte.is_ascii_digit());
-        plain.then(|| part.parse::<u16>().ok()).flatten()
-    };
-    let (year, month, day) = (part(4)?, part(2)?, part(2)?);
-    let leap = year % 4 == 0 && (year % 100 != 0 || year % 400 == 0);
-    let days = match month {
-        1 | 3 | 5 | 7 | 8 | 10 | 12 => 31,
-        4 | 6 | 9 | 11 => 30,
-        2 if leap => 29,
-        2 => 28,
-        _ => return None,
-    };
-    if parts.next().is_some() || day == 0 || day > days {
-        return None;
-    }
-    Some(Date { year, month: month as u8, day: day as u8 })
 }

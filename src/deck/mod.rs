@@ -25,7 +25,6 @@ mod fixture;
 #[cfg(test)]
 mod tests;
 
-pub use accepted::read_date;
 pub use load::DeckFiles;
 pub use rule::Vocabularies;
 

@@ -126,6 +126,11 @@ impl Template {
     pub fn boundary(&self) -> impl Iterator<Item = NetIx> + '_ {
         (0..self.ports).map(NetIx).chain(self.implicit.iter().copied())
     }
+
+    /// The net at a position of the boundary.
+    pub(crate) fn boundary_at(&self, position: u32) -> NetIx {
+        if position < self.ports { NetIx(position) } else { self.implicit[(position - self.ports) as usize] }
+    }
 }
 
 /// An elaborated design with everything needed to look at it.

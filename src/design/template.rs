@@ -114,6 +114,7 @@ impl<'a> Reader<'a> {
         let tree = self.tree;
         let mut work = Work::new(self, cell);
         let source = &tree.cells[cell.0 as usize];
+        work.built.template.nets.reserve(source.ports.len() * 2);
         for port in &source.ports {
             work.port(port.name);
         }
@@ -170,6 +171,7 @@ impl<'r, 'a> Work<'r, 'a> {
         if self.built.template.files.last().is_none_or(|&(_, last)| last != file) {
             self.built.template.files.push((devices, file));
         }
+        self.make_room(text, cards);
         for &card in cards {
             self.card(text, file, card);
         }
@@ -182,6 +184,20 @@ impl<'r, 'a> Work<'r, 'a> {
                 guard,
             });
         }
+    }
+
+    /// Room for what the cards will need, so that few tables grow.
+    fn make_room(&mut self, text: &str, cards: &[u32]) {
+        let is_call = |&&card: &&u32| matches!(text.as_bytes().get(card as usize), Some(b'x' | b'X'));
+        // Looking at a large cell's cards twice would cost more than room that is never touched.
+        let calls = if cards.len() <= 1000 { cards.iter().filter(is_call).count() } else { 0 };
+        let (devices, template) = (cards.len() - calls, &mut self.built.template);
+        template.cards.reserve(devices);
+        template.types.reserve(devices);
+        template.first_pin.reserve(devices + 1);
+        template.pins.reserve(devices * 4);
+        template.instances.reserve(calls);
+        template.links.reserve(calls * 8);
     }
 
     fn card(&mut self, text: &'a str, file: FileId, start: u32) {

@@ -2,12 +2,13 @@
 
 use super::finding;
 use super::fold::Folds;
+use super::quick::{Quick, Seen};
 use super::verdict::{Asked, ask};
 use crate::declared::{Class, Rule, Subject};
 use crate::design::DeviceIx;
 use crate::diag::{Diagnostic, Verdict};
 use crate::expr::{Arg, Expr, Node, Scope, Value, evaluate, specialise};
-use crate::facts::{DeviceView, Evidence, World, vocabulary};
+use crate::facts::{Cells, DeviceView, Evidence, Shape, World, vocabulary};
 use crate::reach::ReachIx;
 use crate::source::Span;
 use std::rc::Rc;
@@ -31,27 +32,43 @@ impl Asked for DeviceView<'_> {
 
 /// Asks the device rules of every device in every context.
 pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> (Vec<Diagnostic>, Vec<(u32, Verdict, u64)>) {
-    let by_class: Vec<Vec<(u32, Rule)>> = world.deck.classes.iter().map(|class| rules_for(class, rules)).collect();
+    let by_class: Vec<(Shape<'_>, Vec<Ready>)> =
+        world.deck.classes.iter().map(|class| (Shape::of(class), rules_for(class, rules))).collect();
     let mut folds: Folds<(ReachIx, DeviceIx)> = Folds::new();
     let walks = Rc::default();
     for at in world.reach.indices() {
-        let template = world.design.template(world.context(at).variant);
+        let (context, count) = (world.context(at), world.reach.get(at).count);
+        let (template, around) = (world.design.template(context.variant), Cells::new(world, at));
         for device in template.devices() {
             let Some(class) = world.design.device_type(template, device).class else { continue };
-            let asked = &by_class[class as usize];
+            let (shape, asked) = &by_class[class as usize];
             if asked.is_empty() {
                 continue;
             }
-            let mut view =
-                DeviceView::for_verdict(world, at, device, &world.deck.classes[class as usize]).sharing(&walks);
-            for (rule, asked) in asked {
+            let glance = around.glance(device, *shape);
+            let mut view = None;
+            for ready in asked {
+                let seen = ready.quick.see(&glance);
+                debug_assert!(agrees(seen, &ready.page, &DeviceView::for_verdict(world, at, device, shape.class())));
+                if seen == Seen::Fine {
+                    continue;
+                }
+                let (file, start) = template.device_card(device);
+                let place = Span::new(file, start, start);
+                if let Seen::Fails(verdict) = seen
+                    && folds.beyond((ready.rule, verdict, place), count)
+                {
+                    continue;
+                }
+                let class = &world.deck.classes[class as usize];
+                let view =
+                    view.get_or_insert_with(|| DeviceView::for_verdict(world, at, device, class).sharing(&walks));
                 loop {
-                    let answer = ask(asked, &view).filter(|_| !view.must_look_above());
+                    let answer = ask(&ready.page, view).filter(|_| !view.must_look_above());
                     if let Some((verdict, mut evidence)) = answer {
-                        let (file, start) = template.device_card(device);
-                        let statement = (*rule, verdict, Span::new(file, start, start));
                         evidence.standing = Some(view.standing().clone());
-                        folds.add(statement, view.standing().clone(), view.instances(), (at, device), evidence);
+                        let (standing, instances) = (view.standing().clone(), view.instances());
+                        folds.add((ready.rule, verdict, place), standing, instances, (at, device), evidence);
                     }
                     if !view.next_surroundings() {
                         break;
@@ -64,11 +81,32 @@ pub(super) fn judge(world: World<'_>, rules: &[&Rule]) -> (Vec<Diagnostic>, Vec<
     (folds.all.into_iter().map(|folded| finding::of_device(world, rules, folded)).collect(), left_out)
 }
 
+/// Whether a glance says what the rule says when it is asked in full. Held in builds for tests.
+fn agrees(seen: Seen, rule: &Rule, view: &DeviceView<'_>) -> bool {
+    let verdict = ask(rule, view).map(|(verdict, _)| verdict);
+    match seen {
+        Seen::Fine => verdict.is_none(),
+        Seen::Fails(expected) => verdict == Some(expected),
+        Seen::Unsure => true,
+    }
+}
+
 /// The rules that can apply to a class at all, those whose `where` is not false whatever the instance is; each with its
 /// conditions made shorter by what the class decides.
-fn rules_for(class: &Class, rules: &[&Rule]) -> Vec<(u32, Rule)> {
+fn rules_for(class: &Class, rules: &[&Rule]) -> Vec<Ready> {
     let devices = rules.iter().enumerate().filter(|(_, rule)| rule.subject == Subject::Device);
-    devices.filter_map(|(index, rule)| Some((index as u32, for_class(class, rule)?))).collect()
+    let ready = |(index, rule): (usize, &&Rule)| {
+        let page = for_class(class, rule)?;
+        Some(Ready { rule: index as u32, quick: Quick::new(&page), page })
+    };
+    devices.filter_map(ready).collect()
+}
+
+/// A rule made ready for a class: its number, and its page with the conditions that are left.
+struct Ready {
+    rule: u32,
+    quick: Quick,
+    page: Rule,
 }
 
 fn for_class(class: &Class, rule: &Rule) -> Option<Rule> {

@@ -102,6 +102,8 @@ pub(super) fn word(
     let mut diagnostic = Diagnostic::new(rule.id.clone(), severity, span, message);
     diagnostic.label = own.map(|label| label.text).unwrap_or_default();
     diagnostic.labels = labels;
+    let step = |(span, text): &(Span, String)| Label { span: *span, text: text.clone() };
+    diagnostic.chains = evidence.chains.iter().map(|chain| chain.iter().map(step).collect()).collect();
     diagnostic.help = help.filter(|help| !help.is_empty());
     diagnostic.cite = rule.cite.clone();
     diagnostic.finding = Some(Box::new(finding));

@@ -50,6 +50,17 @@ impl<S> Folds<S> {
         left
     }
 
+    /// Counts a failing statement that is not listed, because more than are listed were found before it; false for all others,
+    /// which have to be added with what was noted.
+    pub(super) fn beyond(&mut self, statement: Statement, count: u64) -> bool {
+        let Some((listed, left_out)) = self.counts.get_mut(&(statement.0, statement.1)) else { return false };
+        if *listed < MOST_FINDINGS || self.index.contains_key(&statement) {
+            return false;
+        }
+        *left_out = left_out.saturating_add(count);
+        true
+    }
+
     /// Adds what was found where `count` instances stand.
     pub(super) fn add(&mut self, statement: Statement, place: Standing, count: u64, subject: S, evidence: Evidence) {
         let badness = evidence.badness;

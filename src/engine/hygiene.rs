@@ -161,12 +161,14 @@ pub fn waivers(complaints: Vec<waiver::Complaint>, rules: &[&Rule]) -> Vec<Diagn
         };
         let waiver = complaint.waiver;
         let until = waiver.until.map_or(String::new(), |date| date.to_string());
-        let at = waiver.at.text().to_owned();
+        let at = waiver.shown_at().to_owned();
         let values =
             [("rule", waiver.rule.clone()), ("at", at.clone()), ("until", until), ("reason", waiver.reason.clone())];
         let mut made = make(rules, id, waiver.place, &values, finding("", &at, 1))?;
-        if let Some(near) = complaint.near {
-            made.help = Some(format!("did you mean `{near}`?"));
+        if complaint.hint.is_some() {
+            made.help = complaint.hint;
+        } else if complaint.kind == waiver::Fault::Stale && waiver.in_comment() {
+            made.help = Some("take this comment out, or put it at the card that it is meant for".to_owned());
         }
         Some(made)
     });

@@ -9,6 +9,7 @@ mod fold;
 mod groups;
 mod hygiene;
 mod others;
+mod quick;
 mod verdict;
 
 pub use fold::MOST_FINDINGS;

@@ -1,5 +1,6 @@
 //! One device in its surroundings.
 
+use super::glance::{Cells, Glance, Shape};
 use super::{Evidence, World};
 use crate::current::{Current, Known};
 use crate::declared::Class;
@@ -146,15 +147,19 @@ impl<'w> DeviceView<'w> {
         Some(self.context().same(a, b))
     }
 
+    /// What a first look at it says.
+    pub(super) fn glance(&self) -> Glance<'w> {
+        Cells::new(self.world, self.at).glance(self.device, Shape::of(self.class))
+    }
+
     /// d, g and s on one net, or d on s: it can do nothing.
     pub fn is_dummy(&self) -> bool {
-        self.class.kind.is_mos() && self.tied("d", "s") == Some(true)
+        self.glance().is_dummy()
     }
 
     /// Gate on source: it never turns on. An enhancement device, or one whose threshold is not declared.
     pub fn is_idle(&self) -> bool {
-        let depletion = self.class.threshold.is_some_and(|threshold| threshold.lo < 0.0);
-        self.class.kind.is_mos() && !depletion && self.tied("g", "s") == Some(true)
+        self.glance().is_idle()
     }
 
     /// Notes that a pin is concerned.

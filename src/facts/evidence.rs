@@ -14,6 +14,8 @@ pub struct Evidence {
     pub why: Vec<String>,
     /// Places that explain, with their words.
     pub places: Vec<(Span, String)>,
+    /// Chains of places that lead to the result, each in its order.
+    pub chains: Vec<Vec<(Span, String)>>,
     /// Values that show it, as people write them.
     pub values: Vec<(String, String)>,
     /// The mode that it is worst in.

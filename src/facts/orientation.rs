@@ -12,12 +12,14 @@ impl DeviceView<'_> {
     /// A mode in which drain and source are surely level says nothing either way.
     pub(super) fn is_swapped(&self) -> Value {
         let (Some(d), Some(s)) = (self.class.pin("d"), self.class.pin("s")) else { return Value::Bool(false) };
+        if self.glance().can_block(d, s) {
+            return Value::Bool(false);
+        }
         let (mut unknown, mut wrong) = (false, None);
         for mode in 0..self.world.reach.modes.len() {
             let drop = self.voltage(mode, d, s);
             let drop = if self.class.kind == Kind::Pmos { drop.negated() } else { drop };
             match drop.known_hi() {
-                Some(hi) if hi > 1e-6 => return Value::Bool(false),
                 Some(_) if drop.known_lo().is_none() => unknown = true,
                 Some(_) if drop.lo < -1e-6 => wrong = wrong.or(Some(mode)),
                 Some(_) => {}

@@ -1,5 +1,6 @@
 //! Ratings: do the declared rails keep each rated pair of terminals inside its range?
 
+use super::glance::{Cells, Excess, Shape, TOLERANCE};
 use super::{DeviceView, World};
 use crate::declared::Rating;
 use crate::expr::Value;
@@ -19,9 +20,6 @@ pub enum Outcome {
     Unproven,
 }
 
-/// Voltages closer than this are the same, volts.
-const TOLERANCE: f64 = 1e-6;
-
 /// Longer chains are cut in a finding; `drainwise trace` shows all of one.
 const MOST_STEPS: usize = 6;
 
@@ -39,18 +37,21 @@ pub struct PairCounts {
 /// Counts all rated pairs of high-voltage devices.
 pub fn count_pairs(world: World<'_>) -> PairCounts {
     let mut counts = PairCounts::default();
+    let shapes: Vec<_> = world
+        .deck
+        .classes
+        .iter()
+        .map(|class| (class.high_voltage && !class.ratings.is_empty()).then(|| (Shape::of(class), &class.ratings)))
+        .collect();
     for at in world.reach.indices() {
-        let count = world.reach.get(at).count;
+        let (count, around) = (world.reach.get(at).count, Cells::new(world, at));
         let template = world.design.template(world.context(at).variant);
         for device in template.devices() {
-            let Some(class) =
-                world.design.class(template, device).filter(|class| class.high_voltage && !class.ratings.is_empty())
-            else {
-                continue;
-            };
-            let view = DeviceView::new(world, at, device, class);
-            for rating in &class.ratings {
-                let slot = match view.judge_rating(rating).0 {
+            let class = world.design.device_type(template, device).class;
+            let Some(&(shape, ratings)) = class.and_then(|class| shapes[class as usize].as_ref()) else { continue };
+            let glance = around.glance(device, shape);
+            for rating in ratings {
+                let slot = match glance.judge_rating(rating).0 {
                     Outcome::Proven => &mut counts.proven,
                     Outcome::Violated => &mut counts.violated,
                     Outcome::Unproven => &mut counts.unproven,
@@ -62,14 +63,6 @@ pub fn count_pairs(world: World<'_>) -> PairCounts {
     counts
 }
 
-/// The mode in which a pair is farthest outside, and by how much.
-#[derive(Clone, Copy, Debug, PartialEq)]
-struct Excess {
-    mode: usize,
-    volts: f64,
-    range: Interval,
-}
-
 impl DeviceView<'_> {
     /// V(plus) − V(minus) of a device's pins in a mode.
     pub fn voltage(&self, mode: usize, plus: usize, minus: usize) -> Interval {
@@ -79,34 +72,10 @@ impl DeviceView<'_> {
         }
     }
 
-    fn judge_rating(&self, rating: &Rating) -> (Outcome, Option<Excess>) {
-        let mut worst: Option<Excess> = None;
-        let mut known = true;
-        for mode in 0..self.world.reach.modes.len() {
-            let range = self.voltage(mode, rating.plus, rating.minus);
-            let above = range.known_hi().map_or(f64::NEG_INFINITY, |hi| hi - rating.range.hi);
-            let below = range.known_lo().map_or(f64::NEG_INFINITY, |lo| rating.range.lo - lo);
-            let volts = above.max(below);
-            if volts > TOLERANCE && worst.is_none_or(|worst| volts > worst.volts) {
-                worst = Some(Excess { mode, volts, range });
-            }
-            known &= (range.hi.is_finite() || rating.range.hi == f64::INFINITY)
-                && (range.lo.is_finite() || rating.range.lo == f64::NEG_INFINITY);
-        }
-        let outcome = match worst {
-            Some(_) => Outcome::Violated,
-            None if known => Outcome::Proven,
-            None => Outcome::Unproven,
-        };
-        (outcome, worst)
-    }
-
     /// Whether all rated pairs stay inside their ratings in every mode; notes those that do not, the worst one with numbers.
     pub(super) fn ratings_held(&self) -> Value {
-        if self.class.ratings.iter().all(|rating| self.judge_rating(rating).0 == Outcome::Proven) {
-            return Value::Bool(true);
-        }
-        let judged: Vec<_> = self.class.ratings.iter().map(|rating| (rating, self.judge_rating(rating))).collect();
+        let glance = self.glance();
+        let judged: Vec<_> = self.class.ratings.iter().map(|rating| (rating, glance.judge_rating(rating))).collect();
         let violated: Vec<_> =
             judged.iter().filter_map(|(rating, (_, worst))| worst.map(|worst| (*rating, worst))).collect();
         if let Some(&(rating, worst)) = violated.iter().reduce(|a, b| if b.1.volts > a.1.volts { b } else { a }) {
@@ -185,6 +154,7 @@ impl DeviceView<'_> {
             return;
         }
         let ends = |step: &Step| format!("{} to {}", step.net, show(step.volts, Dim::VOLT));
+        let mut chain = Vec::new();
         for step in steps.iter().take(MOST_STEPS) {
             let place = match &step.by {
                 StepBy::Rail(Some(slot)) => Some((
@@ -202,12 +172,17 @@ impl DeviceView<'_> {
                 _ => None,
             };
             if let Some((span, words)) = place {
+                chain.push((span, words.clone()));
                 self.note(|evidence| {
                     if !evidence.places.iter().any(|(known, _)| *known == span) {
                         evidence.places.push((span, words));
                     }
                 });
             }
+        }
+        if let (Some(place), false) = (self.pin_place(pin), chain.is_empty()) {
+            chain.push((place, format!("{} is on {}", self.class.pins[pin], self.net_text(pin))));
+            self.note(|evidence| evidence.chains.push(chain));
         }
     }
 

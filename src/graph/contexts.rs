@@ -3,7 +3,7 @@
 use super::joins::Joins;
 use super::marks::{Mark, MarkSet, Marks, Pending};
 use crate::declared::Deck;
-use crate::design::{Design, InstanceIx, NetIx, VariantIx};
+use crate::design::{Design, InstanceIx, NetIx, Template, VariantIx};
 use crate::diag::Diagnostic;
 use hashbrown::HashMap;
 
@@ -38,13 +38,27 @@ pub struct Contexts {
     pub diagnostics: Vec<Diagnostic>,
 }
 
-/// What an instance brings to the cell below: which boundary positions are one net, and what each is known as.
-#[derive(PartialEq, Eq, Hash, Clone)]
-struct Key {
-    variant: VariantIx,
+/// What an instance brings to the cell below: which boundary positions are one net, and what each is known as. Filled anew for
+/// each instance statement, so that nothing is allocated for one whose context is known already.
+#[derive(Default)]
+struct Brought {
+    /// Pairs of positions that are one net: the first one, and each later one.
     joined: Vec<(u32, u32)>,
     marks: Vec<(u32, MarkSet)>,
     pending: Vec<Pending>,
+    /// All of it as numbers, the variant in front.
+    key: Vec<u32>,
+}
+
+impl Brought {
+    /// Makes the key. Each list stands behind its length, so that no two contents look alike.
+    fn seal(&mut self, variant: VariantIx) {
+        self.key.clear();
+        self.key.extend([variant.0, self.joined.len() as u32, self.marks.len() as u32]);
+        self.joined.iter().for_each(|&(first, other)| self.key.extend([first, other]));
+        self.marks.iter().for_each(|&(position, set)| self.key.extend([position, set.0]));
+        self.pending.iter().for_each(|pending| self.key.extend(pending.numbers()));
+    }
 }
 
 impl Contexts {
@@ -59,6 +73,9 @@ impl Contexts {
             all: Vec::new(),
             marks: Marks::new(deck),
             diagnostics: Vec::new(),
+            brought: Brought::default(),
+            first_on: Vec::new(),
+            instance_count: 0,
         };
         for &top in &design.tops {
             work.top(top);
@@ -138,10 +155,15 @@ struct Work<'w, 'a> {
     design: &'w Design<'a>,
     deck: &'w Deck,
     joins: Joins,
-    known: HashMap<Key, ContextIx>,
+    known: HashMap<Box<[u32]>, ContextIx>,
     all: Vec<Context>,
     marks: Marks,
     diagnostics: Vec<Diagnostic>,
+    brought: Brought,
+    /// For each net of the cell in hand, the instance statement (by its number among all that were looked at) that was last seen
+    /// on it, and the first of its positions there.
+    first_on: Vec<(u64, u32)>,
+    instance_count: u64,
 }
 
 impl Work<'_, '_> {
@@ -173,32 +195,43 @@ impl Work<'_, '_> {
         if inside.is_none() && joined.is_empty() {
             return None;
         }
-        let mut nets = inside.unwrap_or_else(|| petgraph::unionfind::UnionFind::new(template.nets.len()));
-        let boundary: Vec<NetIx> = template.boundary().collect();
-        for &(a, b) in joined {
-            nets.union(boundary[a as usize].0, boundary[b as usize].0);
-        }
-        let mut lowest = vec![u32::MAX; template.nets.len()];
-        (0..template.nets.len() as u32)
-            .map(|net| {
+        // A tree of each group, in which a net's parent is never a later net: the roots are the lowest ones.
+        let mut above: Box<[u32]> = (0..template.nets.len() as u32).collect();
+        if let Some(mut nets) = inside {
+            let mut lowest = vec![u32::MAX; template.nets.len()];
+            for net in 0..template.nets.len() as u32 {
                 let low = &mut lowest[nets.find_mut(net) as usize];
                 *low = (*low).min(net);
-                *low
-            })
-            .collect::<Vec<u32>>()
-            .into_boxed_slice()
-            .into()
+                above[net as usize] = *low;
+            }
+        }
+        for &(a, b) in joined {
+            let (a, b) = (template.boundary_at(a), template.boundary_at(b));
+            let (a, b) = (top_of(&above, a.0), top_of(&above, b.0));
+            above[a.max(b) as usize] = a.min(b);
+        }
+        for net in 0..above.len() {
+            above[net] = above[above[net] as usize];
+        }
+        Some(above)
     }
 
     fn expand(&mut self, at: ContextIx) {
+        let design = self.design;
         let variant = self.all[at.0 as usize].variant;
-        let template = self.design.template(variant);
+        let template = design.template(variant);
+        if template.instances.is_empty() {
+            return;
+        }
+        if self.first_on.len() < template.nets.len() {
+            self.first_on.resize(template.nets.len(), (0, 0));
+        }
         let mut children = Vec::with_capacity(template.instances.len());
-        for (instance, &child) in template.instance_indices().zip(&self.design.variants[variant.0 as usize].children) {
-            let key = self.key(at, instance, child);
-            let context = match self.known.get(&key) {
+        for (instance, &child) in template.instance_indices().zip(&design.variants[variant.0 as usize].children) {
+            self.bring(at, template, instance, child);
+            let context = match self.known.get(self.brought.key.as_slice()) {
                 Some(&known) => known,
-                None => self.add(key),
+                None => self.add(child),
             };
             self.all[context.0 as usize].parents.push((at, instance));
             children.push(context);
@@ -206,47 +239,55 @@ impl Work<'_, '_> {
         self.all[at.0 as usize].children = children;
     }
 
-    fn key(&self, at: ContextIx, instance: InstanceIx, child: VariantIx) -> Key {
-        let context = &self.all[at.0 as usize];
-        let template = self.design.template(context.variant);
-        let pins = template.instance_pins(instance);
-        let mut joined = Vec::new();
-        let mut marks = Vec::new();
-        // Sorted, the positions of one net stand side by side, the first of them in front.
-        let mut by_net: Vec<(NetIx, u32)> =
-            pins.iter().zip(0..).map(|(&net, position)| (context.root(net), position)).collect();
-        by_net.sort_unstable();
-        for group in by_net.chunk_by(|a, b| a.0 == b.0) {
-            joined.extend(group[1..].iter().map(|&(_, position)| (group[0].1, position)));
-        }
-        joined.sort_unstable_by_key(|&(_, position)| position);
-        for (position, &net) in pins.iter().enumerate() {
-            let set = context.mark_set(net);
-            if set != MarkSet(0) {
-                marks.push((position as u32, set));
+    fn bring(&mut self, at: ContextIx, template: &Template, instance: InstanceIx, child: VariantIx) {
+        let (context, brought) = (&self.all[at.0 as usize], &mut self.brought);
+        brought.joined.clear();
+        brought.marks.clear();
+        brought.pending.clear();
+        self.instance_count += 1;
+        for (&net, position) in template.instance_pins(instance).iter().zip(0..) {
+            let first = &mut self.first_on[context.root(net).0 as usize];
+            if first.0 == self.instance_count {
+                brought.joined.push((first.1, position));
+            } else {
+                *first = (self.instance_count, position);
+            }
+            if !context.marks.is_empty() {
+                let set = context.mark_set(net);
+                if set != MarkSet(0) {
+                    brought.marks.push((position, set));
+                }
             }
         }
-        let pending = match context.pending.as_slice() {
-            [] => Vec::new(),
-            pending => self.marks.below_instance(self.deck, pending, self.design.instance_name(template, instance)),
-        };
-        Key { variant: child, joined, marks, pending }
+        if !context.pending.is_empty() {
+            let name = self.design.instance_name(template, instance);
+            brought.pending = self.marks.below_instance(self.deck, &context.pending, name);
+        }
+        brought.seal(child);
     }
 
-    fn add(&mut self, key: Key) -> ContextIx {
+    fn add(&mut self, variant: VariantIx) -> ContextIx {
         let index = ContextIx(self.all.len() as u32);
-        let template = self.design.template(key.variant);
-        let roots = self.roots(key.variant, &key.joined);
-        let boundary: Vec<NetIx> = template.boundary().collect();
+        let template = self.design.template(variant);
+        let brought = std::mem::take(&mut self.brought);
+        let roots = self.roots(variant, &brought.joined);
         let mut found: Vec<(NetIx, Mark)> = Vec::new();
-        for &(position, set) in &key.marks {
-            found.extend(self.marks.of(set).iter().map(|&mark| (boundary[position as usize], mark)));
+        for &(position, set) in &brought.marks {
+            found.extend(self.marks.of(set).iter().map(|&mark| (template.boundary_at(position), mark)));
         }
-        found.extend(self.marks.on_nets(self.deck, self.design, template, &key.pending));
+        found.extend(self.marks.on_nets(self.deck, self.design, template, &brought.pending));
         let marks = self.gather(&roots, found.into_iter());
-        let (variant, pending) = (key.variant, key.pending.clone());
+        let pending = brought.pending.clone();
         self.all.push(Context { variant, count: 0, children: Vec::new(), parents: Vec::new(), roots, marks, pending });
-        self.known.insert(key, index);
+        self.known.insert(brought.key.as_slice().into(), index);
+        self.brought = brought;
         index
     }
+}
+
+fn top_of(above: &[u32], mut net: u32) -> u32 {
+    while above[net as usize] != net {
+        net = above[net as usize];
+    }
+    net
 }

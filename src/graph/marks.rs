@@ -34,6 +34,16 @@ pub(super) struct Pending {
     segment: u32,
 }
 
+impl Pending {
+    /// As numbers, for keys.
+    pub(super) fn numbers(&self) -> [u32; 3] {
+        match self.slot {
+            RailSlot::Always(rail) => [u32::MAX, rail, self.segment],
+            RailSlot::InMode(mode, rail) => [mode, rail, self.segment],
+        }
+    }
+}
+
 /// The rails of a run and all sets of marks that occur on nets.
 #[derive(Debug, Default)]
 pub struct Marks {

@@ -43,10 +43,20 @@ pub(super) fn candidates(written: &Path, from: &Path, folders: &[PathBuf]) -> Ve
     out
 }
 
-/// A path as messages show it: with forward slashes, and relative where it was given so or lies below the folder one is in.
+/// A path as messages show it: with forward slashes, and never absolute.
 pub(super) fn shown(path: &Path, files: &dyn Files) -> String {
+    flat(&relative(path, files)).to_string_lossy().replace('\\', "/")
+}
+
+/// The same file by a path that counts from the folder one is in, so that nothing of the machine gets into a report. That folder is
+/// free of links, so going up from it is safe.
+pub fn relative(path: &Path, files: &dyn Files) -> PathBuf {
+    let Some(here) = files.here().filter(|_| path.is_absolute()) else { return path.to_owned() };
     let path = flat(path);
-    let here = files.here().filter(|_| path.is_absolute());
-    let path = here.and_then(|here| path.strip_prefix(here).map(Path::to_owned).ok()).unwrap_or(path);
-    path.to_string_lossy().replace('\\', "/")
+    let same = path.components().zip(here.components()).take_while(|(a, b)| a == b).count();
+    if same == 0 {
+        return path;
+    }
+    let up = here.components().skip(same).map(|_| Component::ParentDir);
+    up.chain(path.components().skip(same)).collect()
 }

@@ -6,6 +6,7 @@
 
 pub mod fields;
 pub mod letters;
+pub mod remarks;
 pub mod structure;
 pub mod tree;
 pub mod values;

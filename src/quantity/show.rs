@@ -45,7 +45,7 @@ fn single_letters(dim: Dim) -> Option<String> {
 }
 
 fn with_unit(number: &str, unit: &str) -> String {
-    format!("{number} {unit}")
+    [number, " ", unit].concat()
 }
 
 fn square(value: f64) -> String {
@@ -60,15 +60,16 @@ fn square(value: f64) -> String {
 /// With the prefix that leaves one to three digits before the point, from the powers of ten given.
 fn prefixed(value: f64, unit: &str, powers: std::ops::RangeInclusive<i32>) -> String {
     const PREFIXES: [&str; 11] = ["a", "f", "p", "n", "µ", "m", "", "k", "M", "G", "T"];
-    let (_, mut digits, power) = scientific(value);
+    let (number, power) = scientific(value);
     let mut steps = power.div_euclid(3).clamp(powers.start() / 3, powers.end() / 3);
-    let mut scaled = decimal_point(value < 0.0, &digits, power - 3 * steps);
-    if digits == "0" || power - 3 * steps < -3 {
-        (digits, scaled, steps) = ("0".into(), "0".into(), 0);
-    }
-    debug_assert!(!digits.is_empty());
+    let scaled = if number.is_zero() || power - 3 * steps < -3 {
+        steps = 0;
+        "0".into()
+    } else {
+        decimal_point(value < 0.0, number.text(), power - 3 * steps)
+    };
     let prefix = usize::try_from(steps + 6).ok().and_then(|index| PREFIXES.get(index)).unwrap_or(&"");
-    format!("{scaled} {prefix}{unit}")
+    [&scaled, " ", prefix, unit].concat()
 }
 
 /// Without a prefix: whole numbers in full, others with four digits, very large and very small ones with an exponent.
@@ -79,47 +80,125 @@ fn plain(value: f64) -> String {
             return whole.to_string();
         }
     }
-    let (negative, digits, power) = scientific(value);
-    if (-4..6).contains(&power) || digits == "0" {
-        return decimal_point(negative, &digits, power);
+    let (number, power) = scientific(value);
+    if (-4..6).contains(&power) || number.is_zero() {
+        return decimal_point(number.negative, number.text(), power);
     }
-    format!("{}e{power}", decimal_point(negative, &digits, 0))
+    format!("{}e{power}", decimal_point(number.negative, number.text(), 0))
 }
 
 fn rounded(value: f64) -> String {
-    let (negative, digits, power) = scientific(value);
-    decimal_point(negative, &digits, power)
+    let (number, power) = scientific(value);
+    decimal_point(number.negative, number.text(), power)
 }
 
-/// Sign, significant digits without trailing zeros, and the power of ten of the first digit.
-fn scientific(value: f64) -> (bool, String, i32) {
-    let text = format!("{:.*e}", DIGITS - 1, value.abs());
-    let (mantissa, power) = text.split_once('e').unwrap_or((&text, "0"));
-    let digits: String = mantissa.chars().filter(char::is_ascii_digit).collect();
-    match digits.trim_end_matches('0') {
-        "" => (false, "0".into(), 0),
-        digits => (value < 0.0, digits.into(), power.parse().unwrap_or(0)),
+/// Sign and significant digits without trailing zeros; zero has one digit and no sign.
+struct Rounded {
+    negative: bool,
+    digits: [u8; DIGITS],
+    count: usize,
+}
+
+impl Rounded {
+    fn new(negative: bool, digits: [u8; DIGITS]) -> Rounded {
+        let count = digits.iter().rposition(|&digit| digit != b'0').map_or(0, |last| last + 1);
+        Rounded { negative: negative && count > 0, digits, count: count.max(1) }
     }
+
+    fn is_zero(&self) -> bool {
+        self.digits[0] == b'0'
+    }
+
+    fn text(&self) -> &str {
+        std::str::from_utf8(&self.digits[..self.count]).unwrap_or("0")
+    }
+}
+
+/// A number's digits, and the power of ten of the first one.
+fn scientific(value: f64) -> (Rounded, i32) {
+    let (whole, power) = four_digits(value.abs()).unwrap_or_else(|| by_formatting(value.abs()));
+    let digit = |at: u32| b'0' + (whole / 10u16.pow(3 - at) % 10) as u8;
+    let number = Rounded::new(value < 0.0, [digit(0), digit(1), digit(2), digit(3)]);
+    let power = if number.is_zero() { 0 } else { power };
+    (number, power)
+}
+
+/// The first four digits of a positive number of common size, rounded; none where one product cannot tell which way to round.
+fn four_digits(size: f64) -> Option<(u16, i32)> {
+    const TENS: [f64; 19] =
+        [1e0, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8, 1e9, 1e10, 1e11, 1e12, 1e13, 1e14, 1e15, 1e16, 1e17, 1e18];
+    if !(1e-12..1e12).contains(&size) {
+        return None;
+    }
+    let power = size.log10().floor() as i32;
+    let by = TENS.get((3 - power).unsigned_abs() as usize)?;
+    let scaled = if power <= 3 { size * by } else { size / by };
+    let whole = scaled.round();
+    if (scaled - scaled.floor() - 0.5).abs() < 1e-6 || !(1000.0..=10_000.0).contains(&whole) {
+        return None;
+    }
+    Some(if whole == 10_000.0 { (1000, power + 1) } else { (whole as u16, power) })
+}
+
+/// The same by the standard library, which is exact and slow.
+fn by_formatting(size: f64) -> (u16, i32) {
+    let text = format!("{:.*e}", DIGITS - 1, size);
+    let (mantissa, power) = text.split_once('e').unwrap_or((&text, "0"));
+    let digits = mantissa.bytes().filter(u8::is_ascii_digit);
+    (digits.fold(0, |whole, digit| whole * 10 + u16::from(digit - b'0')), power.parse().unwrap_or(0))
 }
 
 /// `digits` with the point behind the digit of power zero.
 fn decimal_point(negative: bool, digits: &str, power: i32) -> String {
-    let sign = if negative { "-" } else { "" };
-    let Ok(before) = usize::try_from(power + 1) else {
-        let zeros = "0".repeat(power.unsigned_abs() as usize - 1);
-        return format!("{sign}0.{zeros}{digits}");
-    };
-    match before {
-        0 => format!("{sign}0.{digits}"),
-        _ if digits.len() <= before => format!("{sign}{digits}{}", "0".repeat(before - digits.len())),
-        _ => format!("{sign}{}.{}", &digits[..before], &digits[before..]),
+    let mut text = String::with_capacity(12);
+    if negative {
+        text.push('-');
     }
+    let zeros = |text: &mut String, count: usize| (0..count).for_each(|_| text.push('0'));
+    match usize::try_from(power + 1) {
+        Ok(before @ 1..) if digits.len() <= before => {
+            text.push_str(digits);
+            zeros(&mut text, before - digits.len());
+        }
+        Ok(before @ 1..) => {
+            text.push_str(&digits[..before]);
+            text.push('.');
+            text.push_str(&digits[before..]);
+        }
+        _ => {
+            text.push_str("0.");
+            zeros(&mut text, power.unsigned_abs() as usize - 1);
+            text.push_str(digits);
+        }
+    }
+    text
 }
 
 #[cfg(test)]
 mod tests {
     use super::*;
     use proptest::prelude::*;
+
+    /// The quick way to round says what the standard library says.
+    #[test]
+    fn quick_digits_are_exact() {
+        let mut state = 1u64;
+        for round in 0..200_000 {
+            state = state.wrapping_mul(6364136223846793005).wrapping_add(1442695040888963407);
+            let mantissa = (state >> 40) as f64 / if round % 2 == 0 { 1.0 } else { 16_777.216 };
+            let size = mantissa * 10f64.powi((state % 23) as i32 - 14);
+            if let Some(found) = four_digits(size) {
+                assert_eq!(found, by_formatting(size), "{size:e}");
+            }
+        }
+        for whole in 0..20_000 {
+            for size in [f64::from(whole) / 1000.0, f64::from(whole) / 2.0, f64::from(whole) * 1e-6] {
+                if let Some(found) = four_digits(size) {
+                    assert_eq!(found, by_formatting(size), "{size:e}");
+                }
+            }
+        }
+    }
 
     /// A space between number and unit, prefixes by thousands: International System of Units, 9th brochure, section 5.4 (from
     /// memory). The choice of V, µm and µA/µm where a designer expects them is common practice, no source.

@@ -1,18 +1,21 @@
 //! All contexts of a design with their reaches: the fixpoint from the top, then every cell in each of its surroundings.
 
+use super::bounds::{Caps, PairBounds};
 use super::frames::{Frames, TopFacts};
-use super::interval::Interval;
-use super::plan::{Cap, Ground, PairBounds, Plans};
-use super::solve::{Answer, InputKey, Inputs, Solver};
+use super::held::{Held, HeldIx, WIDEST, settle};
+use super::inputs::{InputKey, Inputs};
+use super::plan::{Cap, Ground, Plans};
+use super::rings::{RingIx, Rings};
+use super::shared::Shared;
+use super::solve::Solver;
 use super::state::State;
 use super::terminals::{Terminals, table};
-use crate::declared::{Deck, End};
+use crate::declared::Deck;
 use crate::design::{Design, InstanceIx, NetIx};
 use crate::diag::Diagnostic;
-use crate::graph::{ContextIx, Contexts, Mark, paths, rail, rail_in_mode};
+use crate::graph::{ContextIx, Contexts, paths};
 use hashbrown::HashMap;
-use std::cell::RefCell;
-use std::rc::Rc;
+use std::sync::Arc;
 
 /// Index in [`Reach::all`].
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Hash, PartialOrd, Ord)]
@@ -37,7 +40,9 @@ pub struct ReachContext {
     pub(super) open: Vec<bool>,
     /// For each mode.
     pub(super) bounds: Vec<PairBounds>,
-    pub(super) caps: Vec<HashMap<NetIx, Vec<f64>>>,
+    pub(super) caps: Vec<Caps>,
+    /// For each mode, its rings and what is ruled out in them.
+    held: Vec<(RingIx, HeldIx)>,
 }
 
 /// The reach of everything.
@@ -58,139 +63,10 @@ pub struct Reach<'r> {
     pub diagnostics: Vec<Diagnostic>,
     pub(super) plans: Plans,
     pub(super) asked: Vec<Vec<(ContextIx, u32, Inputs)>>,
+    /// For each top.
+    pub(super) rings: Vec<Rings>,
+    pub(super) held: Vec<Arc<Held>>,
     terminals: Vec<Terminals>,
-}
-
-/// What all runs under one top share.
-pub(super) struct Shared<'s> {
-    pub(super) design: &'s Design<'s>,
-    pub(super) contexts: &'s Contexts,
-    pub(super) deck: &'s Deck,
-    pub(super) plans: &'s Plans,
-    pub(super) terminals: &'s [Terminals],
-    pub(super) frames: &'s Frames,
-    pub(super) modes: &'s [Option<usize>],
-    /// The highest that any net can be by rails and sources alone, volts; also its negative.
-    pub(super) span: f64,
-    known: RefCell<HashMap<InputKey, u32>>,
-    answers: RefCell<Vec<Rc<Answer>>>,
-    asked: RefCell<Vec<(ContextIx, u32, Inputs)>>,
-    /// Finished states of large cells, by the answer's number: running them once more would cost more than keeping them.
-    kept: RefCell<HashMap<u32, State>>,
-}
-
-/// Cells of at least this many nets keep the state of their answers.
-const LARGE_CELL: usize = 4096;
-
-impl<'s> Shared<'s> {
-    pub(super) fn new(reach: &'s Reach<'_>, frames: &'s Frames) -> Shared<'s> {
-        Shared {
-            design: reach.design,
-            contexts: reach.contexts,
-            deck: reach.deck,
-            plans: &reach.plans,
-            terminals: &reach.terminals,
-            frames,
-            modes: &reach.modes,
-            span: span(frames, reach.modes.len(), &reach.plans),
-            known: RefCell::default(),
-            answers: RefCell::default(),
-            asked: RefCell::default(),
-            kept: RefCell::default(),
-        }
-    }
-
-    /// What a context adds to its ports for these inputs, and the answer's number.
-    pub(super) fn answer(&self, at: ContextIx, mode: u32, inputs: Inputs) -> (u32, Rc<Answer>) {
-        let key = inputs.key(at, mode);
-        if let Some(&number) = self.known.borrow().get(&key) {
-            return (number, Rc::clone(&self.answers.borrow()[number as usize]));
-        }
-        let large = self.design.template(self.contexts.get(at).variant).nets.len() >= LARGE_CELL;
-        let mut solver = Solver::new(self, at, mode, &inputs, large);
-        solver.run();
-        let answer = Rc::new(Answer::of(&solver.state, solver.template, solver.context));
-        let number = self.answers.borrow().len() as u32;
-        self.answers.borrow_mut().push(Rc::clone(&answer));
-        if large {
-            self.kept.borrow_mut().insert(number, std::mem::take(&mut solver.state));
-        }
-        let mut known = self.known.borrow_mut();
-        // Told its own answer, the context adds nothing more: asking again is answered at once, at every level.
-        known.insert(inputs.with(&answer).key(at, mode), number);
-        known.insert(key, number);
-        drop(known);
-        self.asked.borrow_mut().push((at, mode, inputs));
-        (number, answer)
-    }
-
-    /// What contexts were asked, by the numbers of the answers.
-    pub(super) fn into_asked(self) -> Vec<(ContextIx, u32, Inputs)> {
-        self.asked.into_inner()
-    }
-
-    /// The finished state of an answer to these inputs, if it was kept; it is given away.
-    fn kept_state(&self, key: &InputKey) -> Option<State> {
-        let number = *self.known.borrow().get(key)?;
-        self.kept.borrow_mut().remove(&number)
-    }
-
-    /// The rails that are declared in a context itself, with their values in each frame.
-    pub(super) fn rails_in(&self, at: ContextIx, mode: u32) -> Vec<(NetIx, Vec<Interval>)> {
-        let context = self.contexts.get(at);
-        if context.parents.is_empty() {
-            let values = |net: NetIx| {
-                (0..self.frames.all.len())
-                    .map(|frame| self.frames.value(mode as usize, net, frame))
-                    .collect::<Option<Vec<_>>>()
-            };
-            return self.frames.rails.iter().filter_map(|&net| Some((net, values(net)?))).collect();
-        }
-        let template = self.design.template(context.variant);
-        let boundary: Vec<NetIx> = if context.marked().is_empty() {
-            Vec::new()
-        } else {
-            template.boundary().map(|net| context.root(net)).collect()
-        };
-        let inner = context.marked().iter().filter(|(net, _)| !boundary.contains(net));
-        inner.filter_map(|&(net, set)| Some((net, self.inner_rail(self.contexts.marks.of(set), mode)?))).collect()
-    }
-
-    /// A rail inside an instance: its ends are converted through ground.
-    fn inner_rail(&self, marks: &[Mark], mode: u32) -> Option<Vec<Interval>> {
-        let slot = rail_in_mode(self.deck, marks, self.modes[mode as usize])?;
-        let declared = rail(self.deck, slot);
-        let frames = 0..self.frames.all.len();
-        Some(
-            frames
-                .map(|frame| Interval {
-                    lo: self.end(&declared.low, mode, frame).lo,
-                    hi: self.end(&declared.high, mode, frame).hi,
-                })
-                .collect(),
-        )
-    }
-
-    fn end(&self, end: &End, mode: u32, frame: usize) -> Interval {
-        match end {
-            End::Volts(volts) => {
-                match self.frames.all[frame].net.and_then(|net| self.frames.value(mode as usize, net, 0)) {
-                    Some(base) => Interval { lo: volts - base.hi, hi: volts - base.lo },
-                    None => Interval::point(*volts),
-                }
-            }
-            End::Net { net, offset } => {
-                let top = self
-                    .frames
-                    .all
-                    .iter()
-                    .find(|frame| frame.name.eq_ignore_ascii_case(net))
-                    .and_then(|frame| frame.net);
-                let value = top.and_then(|net| self.frames.value(mode as usize, net, frame)).unwrap_or(Interval::ANY);
-                Interval { lo: value.lo + offset, hi: value.hi + offset }
-            }
-        }
-    }
 }
 
 impl<'r> Reach<'r> {
@@ -223,6 +99,8 @@ impl<'r> Reach<'r> {
             diagnostics: Vec::new(),
             plans,
             asked: Vec::new(),
+            rings: Vec::new(),
+            held: Vec::new(),
             terminals,
         };
         for top in contexts.indices().filter(|&at| contexts.get(at).parents.is_empty()) {
@@ -252,6 +130,7 @@ impl<'r> Reach<'r> {
                 open: Vec::new(),
                 bounds: Vec::new(),
                 caps: Vec::new(),
+                held: Vec::new(),
             }
         });
         Reach {
@@ -264,6 +143,8 @@ impl<'r> Reach<'r> {
             diagnostics: Vec::new(),
             plans: Plans { all: Vec::new() },
             asked: Vec::new(),
+            rings: Vec::new(),
+            held: Vec::new(),
             terminals: Vec::new(),
         }
     }
@@ -280,6 +161,9 @@ impl<'r> Reach<'r> {
 
     /// The dotted path of the first instance in a context; empty for a top.
     pub fn path(&self, at: ReachIx) -> String {
+        if self.get(at).parents.is_empty() {
+            return String::new();
+        }
         paths::all(at.0, 1, |at| self.above(at)).0.pop().unwrap_or_default()
     }
 
@@ -335,9 +219,11 @@ impl<'r> Reach<'r> {
         };
         let frames = Frames::new(&facts, &mut self.diagnostics);
         let top = self.frames.len() as u32;
-        let (contexts, asked) = Expander::new(self, &frames, top, self.all.len() as u32).run(at);
-        self.all.extend(contexts);
-        self.asked.push(asked);
+        let found = Expander::new(self, &frames, at, top, self.all.len() as u32).run(at);
+        self.all.extend(found.contexts);
+        self.asked.push(found.asked);
+        self.rings.push(found.rings);
+        self.held.push(found.held);
         self.frames.push(frames);
     }
 
@@ -363,18 +249,12 @@ impl<'r> Reach<'r> {
     }
 }
 
-/// The highest voltage, of either sign, that rails and sources can add up to.
-fn span(frames: &Frames, modes: usize, plans: &Plans) -> f64 {
-    let rails = (0..modes).flat_map(|mode| {
-        let values = frames
-            .rails
-            .iter()
-            .flat_map(move |&net| (0..frames.all.len()).filter_map(move |frame| frames.value(mode, net, frame)));
-        values.flat_map(|value| [value.lo.abs(), value.hi.abs()]).filter(|volts| volts.is_finite())
-    });
-    let sources =
-        plans.all.iter().flat_map(|plan| &plan.sources).map(|link| link.range.lo.abs().max(link.range.hi.abs()));
-    rails.fold(0.0, f64::max) + sources.filter(|volts| volts.is_finite()).sum::<f64>()
+/// What is found under one top.
+struct Found {
+    contexts: Vec<ReachContext>,
+    asked: Vec<(ContextIx, u32, Inputs)>,
+    rings: Rings,
+    held: Arc<Held>,
 }
 
 /// Finds the reach contexts under one top.
@@ -387,48 +267,55 @@ struct Expander<'e> {
 }
 
 impl<'e> Expander<'e> {
-    fn new(reach: &'e Reach<'_>, frames: &'e Frames, top: u32, base: u32) -> Expander<'e> {
-        Expander { shared: Shared::new(reach, frames), top, base, known: HashMap::new(), all: Vec::new() }
+    fn new(reach: &'e Reach<'_>, frames: &'e Frames, at: ContextIx, top: u32, base: u32) -> Expander<'e> {
+        Expander { shared: Shared::new(reach, frames, at), top, base, known: HashMap::new(), all: Vec::new() }
     }
 
-    fn run(mut self, at: ContextIx) -> (Vec<ReachContext>, Vec<(ContextIx, u32, Inputs)>) {
+    fn run(mut self, at: ContextIx) -> Found {
         let modes = self.shared.modes.len();
-        let inputs = (0..modes).map(|_| self.outside(at)).collect();
+        let inputs = (0..modes).map(|mode| self.outside(at, mode as u32)).collect();
         self.add(at, inputs);
         let mut next = 0;
         while next < self.all.len() {
             self.expand(next);
             next += 1;
         }
-        (self.all, self.shared.asked.into_inner())
+        Found {
+            contexts: self.all,
+            asked: self.shared.asked.into_inner(),
+            rings: self.shared.rings.into_owned(),
+            held: self.shared.held.into_inner(),
+        }
     }
 
     /// What a top gets from outside: nothing at all.
-    fn outside(&self, at: ContextIx) -> Inputs {
-        let template = self.shared.design.template(self.shared.contexts.get(at).variant);
+    fn outside(&self, at: ContextIx, mode: u32) -> Inputs {
+        let template = self.shared.template_of(at);
         let ports = template.boundary().count();
         let tied = |net: NetIx| self.shared.frames.rails.binary_search(&self.shared.contexts.get(at).root(net)).is_ok();
         Inputs {
             values: vec![super::state::NOTHING; ports * self.shared.frames.all.len() * 2],
-            driven: vec![false; ports],
+            drive: vec![0; ports],
             fixed: vec![false; ports],
             tied: template.boundary().map(tied).collect(),
             open: template.boundary().map(|net| !tied(net)).collect(),
             caps: Vec::new(),
             bounds: Vec::new(),
+            ring: self.shared.rings.of_top(mode),
+            held: WIDEST,
         }
     }
 
-    fn add(&mut self, at: ContextIx, inputs: Vec<Inputs>) -> ReachIx {
+    fn add(&mut self, at: ContextIx, mut inputs: Vec<Inputs>) -> ReachIx {
         let index = ReachIx(self.base + self.all.len() as u32);
         let mut states = Vec::with_capacity(inputs.len());
         let (mut tied, mut open, mut bounds, mut caps) = (Vec::new(), Vec::new(), Vec::new(), Vec::new());
-        for (mode, inputs) in inputs.iter().enumerate() {
-            let mut solver = Solver::new(&self.shared, at, mode as u32, inputs, true);
-            match self.shared.kept_state(&inputs.key(at, mode as u32)) {
-                Some(state) => solver.state = state,
-                None => solver.run(),
-            }
+        let is_top = self.all.is_empty();
+        for (mode, inputs) in (0..).zip(&mut inputs) {
+            let mut solver = match is_top {
+                true => settle(&self.shared, at, mode, inputs),
+                false => self.finished(at, mode, inputs),
+            };
             states.push(std::mem::take(&mut solver.state));
             (tied, open) = (solver.tied, solver.open);
             bounds.push(solver.bounds);
@@ -445,8 +332,18 @@ impl<'e> Expander<'e> {
             open,
             bounds,
             caps,
+            held: inputs.iter().map(|inputs| (inputs.ring, inputs.held)).collect(),
         });
         index
+    }
+
+    fn finished(&self, at: ContextIx, mode: u32, inputs: &Inputs) -> Solver<'_> {
+        let mut solver = Solver::new(&self.shared, at, mode, inputs, true);
+        match self.shared.kept_state(&inputs.key(at, mode)) {
+            Some(state) => solver.state = state,
+            None => solver.run(),
+        }
+        solver
     }
 
     fn expand(&mut self, index: usize) {
@@ -484,7 +381,8 @@ impl<'e> Expander<'e> {
             let state = std::mem::take(&mut here.states[mode]);
             let limits = (std::mem::take(&mut here.bounds[mode]), std::mem::take(&mut here.caps[mode]));
             let groups = (std::mem::take(&mut here.tied), std::mem::take(&mut here.open));
-            let solver = Solver::finished(&self.shared, at, mode as u32, state, groups, limits);
+            let held = here.held[mode];
+            let solver = Solver::finished(&self.shared, at, mode as u32, state, groups, limits, held);
             for (instance, inputs) in per_instance.iter_mut().enumerate() {
                 inputs.push(solver.inputs_for(InstanceIx(instance as u32)));
             }

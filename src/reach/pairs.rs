@@ -3,6 +3,7 @@
 use super::expand::{Reach, ReachContext, ReachIx};
 use super::interval::Interval;
 use crate::design::NetIx;
+use crate::graph::Context;
 
 /// Why a net's voltage is not known, in one mode.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -36,7 +37,11 @@ impl Reach<'_> {
     /// V(x) − V(y) in a mode: what the frames say together, with what clamps and body diodes say; 0 where they are one net.
     pub fn between(&self, at: ReachIx, mode: usize, x: NetIx, y: NetIx) -> Interval {
         let here = self.get(at);
-        let context = self.contexts.get(here.context);
+        self.between_here(here, self.contexts.get(here.context), mode, x, y)
+    }
+
+    /// The same, where the context is at hand.
+    pub fn between_here(&self, here: &ReachContext, context: &Context, mode: usize, x: NetIx, y: NetIx) -> Interval {
         let (x, y) = (context.root(x), context.root(y));
         if x == y {
             return Interval::point(0.0);

@@ -2,6 +2,7 @@
 //! nets an inductor lifts. Worked out once for each context, from the leaves up; a cell's part is seen by its callers through
 //! its boundary.
 
+use super::bounds::{PairList, PairTable};
 use super::frames::SourceLink;
 use super::interval::Interval;
 use super::terminals::Terminals;
@@ -14,43 +15,6 @@ use petgraph::unionfind::UnionFind;
 
 /// A diode drop, volts: how far a body diode lets its drain go beyond its source (0.9 V: common practice, no source).
 pub(super) const DIODE_DROP: f64 = 0.9;
-
-/// What clamps and body diodes say of the voltage between two nets. Looked up by the pair, so that a rail with a million devices
-/// on it costs no more than any net.
-#[derive(Clone, Debug, Default, PartialEq)]
-pub(super) struct PairBounds {
-    by_pair: HashMap<(NetIx, NetIx), Interval>,
-}
-
-impl PairBounds {
-    /// V(x) − V(y) stays in the range, too.
-    pub(super) fn add(&mut self, x: NetIx, y: NetIx, range: Interval) {
-        if x == y {
-            return;
-        }
-        let (key, range) = if x < y { ((x, y), range) } else { ((y, x), range.negated()) };
-        let known = self.by_pair.entry(key).or_insert(Interval::ANY);
-        *known = known.and(range);
-    }
-
-    /// What is known of V(x) − V(y).
-    pub(super) fn between(&self, x: NetIx, y: NetIx) -> Interval {
-        if self.by_pair.is_empty() {
-            return Interval::ANY;
-        }
-        let found = |x: NetIx, y: NetIx| self.by_pair.get(&(x, y)).copied();
-        if x < y { found(x, y) } else { found(y, x).map(Interval::negated) }.unwrap_or(Interval::ANY)
-    }
-
-    pub(super) fn is_empty(&self) -> bool {
-        self.by_pair.is_empty()
-    }
-
-    /// All pairs, in no particular order: V(x) − V(y) is in the range.
-    pub(super) fn iter(&self) -> impl Iterator<Item = (NetIx, NetIx, Interval)> + '_ {
-        self.by_pair.iter().map(|(&(x, y), &range)| (x, y, range))
-    }
-}
 
 /// A bound of the voltage between two nets of a context that something other than its devices' kinds gives.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -78,6 +42,8 @@ struct Shown {
     inductor: Vec<bool>,
     /// Whether a body, source, resistor or diode stands on it.
     carries: Vec<bool>,
+    /// Whether nothing inside moves it: only gates and the like stand on it.
+    listens: Vec<bool>,
     bounds: Vec<(u32, u32, Interval)>,
     sources: Vec<(u32, u32, Interval)>,
 }
@@ -96,14 +62,17 @@ pub(super) struct Plan {
     pub(super) inductor: Vec<bool>,
     /// Nets that a body, source, resistor or diode stands on.
     pub(super) carries: Vec<bool>,
-    pub(super) bounds: PairBounds,
-    /// Nets of which some pair bound speaks.
-    pub(super) bounded: Vec<bool>,
+    pub(super) bounds: PairTable,
     pub(super) sources: Vec<SourceLink>,
     shown: Shown,
 }
 
 impl Plan {
+    /// For each boundary position, whether nothing inside moves it.
+    pub(super) fn listens(&self) -> &[bool] {
+        &self.shown.listens
+    }
+
     /// The group of a net.
     pub(super) fn group(&self, net: NetIx) -> u32 {
         self.group[net.0 as usize]
@@ -175,6 +144,9 @@ struct Maker<'m> {
     groups: UnionFind<u32>,
     /// Nets with an unknown drive.
     open: Vec<NetIx>,
+    bounds: PairList,
+    /// Nets that something moves.
+    moved: Vec<bool>,
     plan: Plan,
 }
 
@@ -184,7 +156,8 @@ impl<'m> Maker<'m> {
         let template = ground.design.template(context.variant);
         let nets = template.nets.len();
         let plan = Plan { inductor: vec![false; nets], carries: vec![false; nets], ..Plan::default() };
-        Maker { ground, at, context, template, groups: UnionFind::new(nets), open: Vec::new(), plan }
+        let (groups, bounds, moved) = (UnionFind::new(nets), PairList::default(), vec![false; nets]);
+        Maker { ground, at, context, template, groups, open: Vec::new(), bounds, moved, plan }
     }
 
     fn make(mut self, plans: &Plans) -> Plan {
@@ -197,7 +170,7 @@ impl<'m> Maker<'m> {
         let caps = self.ground.caps;
         let first = caps.partition_point(|cap| cap.context < self.at);
         for cap in caps[first..].iter().take_while(|cap| cap.context == self.at) {
-            self.plan.bounds.add(cap.net, cap.rail, cap.range);
+            self.bounds.add(cap.net, cap.rail, cap.range);
         }
         let (context, marks) = (self.context, &self.ground.contexts.marks);
         let mut groups = std::mem::replace(&mut self.groups, UnionFind::new(0));
@@ -215,11 +188,7 @@ impl<'m> Maker<'m> {
         }
         self.plan.group_has_rail = has_rail;
         self.gather_open();
-        self.plan.bounded = vec![false; self.template.nets.len()];
-        for (x, y, _) in self.plan.bounds.iter() {
-            self.plan.bounded[x.0 as usize] = true;
-            self.plan.bounded[y.0 as usize] = true;
-        }
+        self.plan.bounds = std::mem::take(&mut self.bounds).pack(self.template.nets.len());
         self.show();
         self.plan
     }
@@ -242,7 +211,7 @@ impl<'m> Maker<'m> {
                         } else {
                             Interval { lo: f64::NEG_INFINITY, hi: DIODE_DROP }
                         };
-                        self.plan.bounds.add(d, s, range);
+                        self.bounds.add(d, s, range);
                     }
                 }
             }
@@ -264,7 +233,7 @@ impl<'m> Maker<'m> {
                     .class
                     .map(|class| &self.ground.design.classes[class as usize]);
                 if let Some(clamp) = class.and_then(|class| class.clamp) {
-                    self.plan.bounds.add(k, a, Interval { lo: clamp.lo, hi: clamp.hi });
+                    self.bounds.add(k, a, Interval { lo: clamp.lo, hi: clamp.hi });
                 }
             }
             Terminals::Through { a, b, resistor } => {
@@ -336,6 +305,8 @@ impl<'m> Maker<'m> {
 
     fn tie(&mut self, a: NetIx, b: NetIx) {
         self.groups.union(a.0, b.0);
+        self.moved[a.0 as usize] = true;
+        self.moved[b.0 as usize] = true;
     }
 
     fn carry(&mut self, nets: &[NetIx]) {
@@ -359,9 +330,10 @@ impl<'m> Maker<'m> {
             }
             self.plan.inductor[here.0 as usize] |= shown.inductor[at];
             self.plan.carries[here.0 as usize] |= shown.carries[at];
+            self.moved[here.0 as usize] |= !shown.listens[at];
         }
         for &(x, y, range) in &shown.bounds {
-            self.plan.bounds.add(net(x), net(y), range);
+            self.bounds.add(net(x), net(y), range);
         }
         for &(plus, minus, range) in &shown.sources {
             self.plan.sources.push(SourceLink { plus: net(plus), minus: net(minus), range });
@@ -380,6 +352,7 @@ impl<'m> Maker<'m> {
             plan.shown.open.push(plan.group_open[group as usize]);
             plan.shown.inductor.push(plan.inductor[net.0 as usize]);
             plan.shown.carries.push(plan.carries[net.0 as usize]);
+            plan.shown.listens.push(!self.moved[net.0 as usize]);
             positions.entry(net).or_insert(position as u32);
         }
         for (x, y, range) in plan.bounds.iter() {

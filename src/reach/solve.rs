@@ -1,93 +1,19 @@
 //! The fixpoint of one context in one mode.
 
-use super::expand::Shared;
+use super::bounds::{Caps, PairBounds};
+use super::held::HeldIx;
+use super::inputs::Inputs;
 use super::interval::Interval;
-use super::plan::{PairBounds, Plan};
-use super::state::{ANSWER, NOTHING, OUTSIDE, Side, State};
+use super::plan::Plan;
+use super::rings::{Ring, RingIx};
+use super::shared::Shared;
+use super::state::{ANSWER, DRIVEN, NOTHING, OUTSIDE, Side, State};
 use super::terminals::Terminals;
 use super::touch::{Toucher, Touches};
 use crate::design::{DeviceIx, InstanceIx, NetIx, Template, VariantIx};
 use crate::graph::{Context, ContextIx};
-use hashbrown::HashMap;
 use std::collections::VecDeque;
-
-/// What the surroundings bring to a context in one mode, at its boundary positions. Positions that are one net agree.
-#[derive(Clone, Debug, Default, PartialEq)]
-pub(super) struct Inputs {
-    /// For each position, frame and side; as in [`State`].
-    pub(super) values: Vec<f64>,
-    pub(super) driven: Vec<bool>,
-    /// Rails and nets of which nothing is known.
-    pub(super) fixed: Vec<bool>,
-    /// Whether something outside ties the port to a rail.
-    pub(super) tied: Vec<bool>,
-    /// Whether conducting paths outside lead from the port to an undeclared port or global of the top.
-    pub(super) open: Vec<bool>,
-    /// What clamps and body diodes outside hold the ports to: as `values`, infinite where they say nothing; empty where they say
-    /// nothing of any port.
-    pub(super) caps: Vec<f64>,
-    /// Clamps outside between ports: positions and range of V(x) − V(y).
-    pub(super) bounds: Vec<(u32, u32, Interval)>,
-}
-
-/// The inputs as a key: values by their bits.
-#[derive(Clone, Debug, PartialEq, Eq, Hash)]
-pub(super) struct InputKey {
-    pub(super) at: ContextIx,
-    pub(super) mode: u32,
-    bits: Vec<u64>,
-    flags: Vec<u8>,
-    bounds: Vec<(u32, u32, u64, u64)>,
-}
-
-impl Inputs {
-    pub(super) fn key(&self, at: ContextIx, mode: u32) -> InputKey {
-        InputKey {
-            at,
-            mode,
-            bits: self
-                .values
-                .iter()
-                .chain(&self.caps)
-                .map(|value| if *value == 0.0 { 0 } else { value.to_bits() })
-                .collect(),
-            flags: self.flags(),
-            bounds: self.bounds.iter().map(|(x, y, range)| (*x, *y, range.lo.to_bits(), range.hi.to_bits())).collect(),
-        }
-    }
-
-    /// These inputs after the context has added its answer.
-    pub(super) fn with(&self, answer: &Answer) -> Inputs {
-        let mut joined = self.clone();
-        let per_port = self.values.len() / self.driven.len().max(1);
-        for (at, value) in joined.values.iter_mut().enumerate() {
-            if !self.fixed[at / per_port] {
-                *value = value.max(answer.values[at]);
-            }
-        }
-        for (driven, &answered) in joined.driven.iter_mut().zip(&answer.driven) {
-            *driven |= answered;
-        }
-        joined
-    }
-
-    fn flags(&self) -> Vec<u8> {
-        let flag = |at: usize| {
-            u8::from(self.driven[at])
-                | u8::from(self.fixed[at]) << 1
-                | u8::from(self.tied[at]) << 2
-                | u8::from(self.open[at]) << 3
-        };
-        (0..self.driven.len()).map(flag).collect()
-    }
-}
-
-/// What a context adds to its ports: values and whether they are driven, by boundary position.
-#[derive(Clone, Debug, Default)]
-pub(super) struct Answer {
-    pub(super) values: Vec<f64>,
-    pub(super) driven: Vec<bool>,
-}
+use std::sync::Arc;
 
 /// Cells of at most this many devices, and no instances, are swept whole.
 const SMALL_CELL: usize = 48;
@@ -106,11 +32,28 @@ pub(super) struct Solver<'s> {
     pub(super) tied: Vec<bool>,
     pub(super) open: Vec<bool>,
     pub(super) bounds: PairBounds,
-    pub(super) caps: HashMap<NetIx, Vec<f64>>,
+    pub(super) caps: Caps,
+    pub(super) ring: &'s Ring,
+    held: HeldIx,
+    pub(super) ruled_out: Arc<[u64]>,
     queue: VecDeque<u32>,
     queued: Vec<bool>,
-    asked: Vec<bool>,
+    waiting: Vec<Waiting>,
+    /// For each net, how often it grew.
+    grew: Vec<u32>,
+    /// For each instance, how often its nets had grown when it had answered last.
+    answered: Vec<u64>,
     ask: VecDeque<u32>,
+    ask_later: VecDeque<u32>,
+}
+
+/// In which list an instance waits to be asked.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+enum Waiting {
+    Not,
+    Soon,
+    /// Until all its inputs have a range, or nothing else is left to do.
+    Later,
 }
 
 impl<'s> Solver<'s> {
@@ -132,11 +75,17 @@ impl<'s> Solver<'s> {
             tied: Vec::new(),
             open: Vec::new(),
             bounds: PairBounds::default(),
-            caps: HashMap::new(),
+            caps: Caps::default(),
+            ring: shared.rings.get(inputs.ring),
+            held: inputs.held,
+            ruled_out: shared.held.borrow().ruled_out(inputs.held),
             queue: VecDeque::new(),
             queued: vec![false; template.nets.len()],
-            asked: vec![false; template.instances.len()],
+            waiting: vec![Waiting::Not; template.instances.len()],
+            grew: if template.instances.is_empty() { Vec::new() } else { vec![0; template.nets.len()] },
+            answered: vec![u64::MAX; template.instances.len()],
             ask: VecDeque::new(),
+            ask_later: VecDeque::new(),
         };
         solver.take_inputs(inputs);
         solver.fix_rails();
@@ -153,7 +102,8 @@ impl<'s> Solver<'s> {
         mode: u32,
         state: State,
         (tied, open): (Vec<bool>, Vec<bool>),
-        (bounds, caps): (PairBounds, HashMap<NetIx, Vec<f64>>),
+        (bounds, caps): (PairBounds, Caps),
+        (ring, held): (RingIx, HeldIx),
     ) -> Solver<'s> {
         let context = shared.contexts.get(at);
         let template = shared.design.template(context.variant);
@@ -171,16 +121,22 @@ impl<'s> Solver<'s> {
             open,
             bounds,
             caps,
+            ring: shared.rings.get(ring),
+            held,
+            ruled_out: shared.held.borrow().ruled_out(held),
             queue: VecDeque::new(),
             queued: Vec::new(),
-            asked: Vec::new(),
+            waiting: Vec::new(),
+            grew: Vec::new(),
+            answered: Vec::new(),
             ask: VecDeque::new(),
+            ask_later: VecDeque::new(),
         }
     }
 
     fn take_inputs(&mut self, inputs: &Inputs) {
         let frames = self.state.frames;
-        let (mut ports, mut open) = (Vec::with_capacity(inputs.driven.len()), vec![false; self.template.nets.len()]);
+        let (mut ports, mut open) = (Vec::with_capacity(inputs.drive.len()), vec![false; self.template.nets.len()]);
         for (position, net) in self.template.boundary().enumerate() {
             let net = self.context.root(net);
             ports.push((net, inputs.tied[position]));
@@ -188,7 +144,7 @@ impl<'s> Solver<'s> {
             let from = position * frames * 2;
             let to = self.state.at(net, 0, Side::Hi);
             self.state.values[to..to + frames * 2].copy_from_slice(&inputs.values[from..from + frames * 2]);
-            self.state.driven[net.0 as usize] |= inputs.driven[position];
+            self.state.drive[net.0 as usize] |= inputs.drive[position];
             self.state.fixed[net.0 as usize] |= inputs.fixed[position];
         }
         self.tied = self.plan.tied_groups(&ports);
@@ -207,7 +163,7 @@ impl<'s> Solver<'s> {
                 self.state.values[to + 1] = -value.lo;
             }
             self.state.fixed[net.0 as usize] = true;
-            self.state.driven[net.0 as usize] = true;
+            self.state.drive[net.0 as usize] |= DRIVEN;
         }
     }
 
@@ -231,7 +187,7 @@ impl<'s> Solver<'s> {
         loop {
             let before = waiting.len();
             waiting.retain(|link| {
-                let known = |net: NetIx| self.state.fixed[net.0 as usize] && self.state.driven[net.0 as usize];
+                let known = |net: NetIx| self.state.fixed[net.0 as usize] && self.state.is_driven(net);
                 let (to, from, range) = match (known(link.plus), known(link.minus)) {
                     (false, true) => (link.plus, link.minus, link.range),
                     (true, false) => (link.minus, link.plus, link.range.negated()),
@@ -245,7 +201,7 @@ impl<'s> Solver<'s> {
                     self.state.values[at + 1] = lo - range.lo;
                 }
                 self.state.fixed[to.0 as usize] = true;
-                self.state.driven[to.0 as usize] = true;
+                self.state.drive[to.0 as usize] |= DRIVEN;
                 false
             });
             if waiting.len() == before {
@@ -264,14 +220,15 @@ impl<'s> Solver<'s> {
         for &(x, y, range) in &inputs.bounds {
             self.bounds.add(self.context.root(boundary[x as usize]), self.context.root(boundary[y as usize]), range);
         }
-        let all: Vec<(NetIx, NetIx, Interval)> = self.plan.bounds.iter().chain(self.bounds.iter()).collect();
-        for (x, y, range) in all {
+        let bounds = std::mem::take(&mut self.bounds);
+        for (x, y, range) in self.plan.bounds.iter().chain(bounds.iter()) {
             match (self.state.fixed[x.0 as usize], self.state.fixed[y.0 as usize]) {
                 (false, true) => self.cap(x, y, range),
                 (true, false) => self.cap(y, x, range.negated()),
                 _ => {}
             }
         }
+        self.bounds = bounds;
     }
 
     fn take_caps(&mut self, inputs: &Inputs) {
@@ -279,7 +236,7 @@ impl<'s> Solver<'s> {
         for (position, net) in self.template.boundary().enumerate() {
             let outside = &inputs.caps[position * ends..(position + 1) * ends];
             if outside.iter().any(|cap| cap.is_finite()) {
-                let caps = self.caps.entry(self.context.root(net)).or_insert_with(|| vec![f64::INFINITY; ends]);
+                let caps = self.caps.lower(self.context.root(net), self.template.nets.len(), ends);
                 caps.iter_mut().zip(outside).for_each(|(cap, &outside)| *cap = cap.min(outside));
             }
         }
@@ -288,7 +245,7 @@ impl<'s> Solver<'s> {
     /// V(net) − V(rail) stays in the range.
     fn cap(&mut self, net: NetIx, rail: NetIx, range: Interval) {
         let frames = self.state.frames;
-        let caps = self.caps.entry(net).or_insert_with(|| vec![f64::INFINITY; frames * 2]);
+        let caps = self.caps.lower(net, self.template.nets.len(), frames * 2);
         for frame in 0..frames {
             let (hi, lo) = (self.state.value(rail, frame, Side::Hi), self.state.value(rail, frame, Side::Lo));
             caps[frame * 2] = caps[frame * 2].min(hi + range.hi);
@@ -305,16 +262,58 @@ impl<'s> Solver<'s> {
             return self.sweep();
         }
         for instance in 0..self.template.instances.len() as u32 {
-            self.ask.push_back(instance);
-            self.asked[instance as usize] = true;
+            self.ask_soon(instance);
         }
         let pins = Touches::new(self.template, self.context, &self.state.fixed);
         loop {
             self.settle_devices(&pins);
-            let Some(instance) = self.ask.pop_front() else { break };
-            self.asked[instance as usize] = false;
-            self.ask_instance(InstanceIx(instance));
+            let Some(instance) = self.next_to_ask() else { break };
+            // Told its own answer and nothing else, a cell has nothing to add.
+            if self.growth(InstanceIx(instance)) != self.answered[instance as usize] {
+                self.ask_instance(InstanceIx(instance));
+                self.answered[instance as usize] = self.growth(InstanceIx(instance));
+            }
         }
+    }
+
+    /// How often the nets of an instance have grown, all together.
+    fn growth(&self, instance: InstanceIx) -> u64 {
+        let pins = self.template.instance_pins(instance);
+        pins.iter().map(|&net| u64::from(self.grew[self.context.root(net).0 as usize])).sum()
+    }
+
+    fn ask_soon(&mut self, instance: u32) {
+        if std::mem::replace(&mut self.waiting[instance as usize], Waiting::Soon) != Waiting::Soon {
+            self.ask.push_back(instance);
+        }
+    }
+
+    /// The next instance to ask. One whose inputs have no range yet waits: it would be asked again when they do. In what order
+    /// instances are asked changes no range.
+    fn next_to_ask(&mut self) -> Option<u32> {
+        while let Some(instance) = self.ask.pop_front() {
+            if self.has_its_inputs(InstanceIx(instance)) {
+                self.waiting[instance as usize] = Waiting::Not;
+                return Some(instance);
+            }
+            self.waiting[instance as usize] = Waiting::Later;
+            self.ask_later.push_back(instance);
+        }
+        while let Some(instance) = self.ask_later.pop_front() {
+            if self.waiting[instance as usize] == Waiting::Later {
+                self.waiting[instance as usize] = Waiting::Not;
+                return Some(instance);
+            }
+        }
+        None
+    }
+
+    fn has_its_inputs(&self, instance: InstanceIx) -> bool {
+        let listens = self.shared.plans.get(self.context.children[instance.0 as usize]).listens();
+        self.template.instance_pins(instance).iter().zip(listens).filter(|&(_, &listens)| listens).all(|(&net, _)| {
+            let at = self.state.at(self.context.root(net), 0, Side::Hi);
+            self.state.values[at] != NOTHING && self.state.values[at + 1] != NOTHING
+        })
     }
 
     /// A small cell needs no list of who stands where: all its devices are asked again until nothing changes.
@@ -334,11 +333,7 @@ impl<'s> Solver<'s> {
             for toucher in touches.on(NetIx(net)) {
                 match toucher {
                     Toucher::Device(device) => self.apply(device),
-                    Toucher::Instance(instance) => {
-                        if !std::mem::replace(&mut self.asked[instance.0 as usize], true) {
-                            self.ask.push_back(instance.0);
-                        }
-                    }
+                    Toucher::Instance(instance) => self.ask_soon(instance.0),
                 }
             }
         }
@@ -359,9 +354,7 @@ impl<'s> Solver<'s> {
                     self.raise(net, frame, side, answer.values[(position * frames + frame) * 2 + side.index()], by);
                 }
             }
-            if answer.driven[position] && !self.state.driven[net.0 as usize] {
-                self.set_driven(net);
-            }
+            self.set_drive(net, answer.drive[position]);
         }
     }
 
@@ -371,10 +364,12 @@ impl<'s> Solver<'s> {
         let frames = self.state.frames;
         let mut inputs = Inputs {
             values: Vec::with_capacity(pins.len() * frames * 2),
-            driven: Vec::with_capacity(pins.len()),
+            drive: Vec::with_capacity(pins.len()),
             fixed: Vec::with_capacity(pins.len()),
             tied: Vec::with_capacity(pins.len()),
             open: Vec::with_capacity(pins.len()),
+            ring: self.ring.below(instance),
+            held: self.shared.held.borrow().below(self.held, instance),
             ..Inputs::default()
         };
         let mut distinct: Vec<(NetIx, u32)> = Vec::new();
@@ -382,15 +377,15 @@ impl<'s> Solver<'s> {
             let net = self.context.root(net);
             let from = self.state.at(net, 0, Side::Hi);
             inputs.values.extend_from_slice(&self.state.values[from..from + frames * 2]);
-            inputs.driven.push(self.state.driven[net.0 as usize]);
+            inputs.drive.push(self.state.drive[net.0 as usize]);
             inputs.fixed.push(self.state.fixed[net.0 as usize]);
             inputs.tied.push(self.tied[self.plan.group(net) as usize]);
             inputs.open.push(self.open[self.plan.group(net) as usize]);
             distinct.push((net, position as u32));
         }
-        if distinct.iter().any(|(net, _)| self.caps.contains_key(net)) {
+        if distinct.iter().any(|&(net, _)| self.caps.of(net).is_some()) {
             for (net, _) in &distinct {
-                match self.caps.get(net) {
+                match self.caps.of(*net) {
                     Some(caps) => inputs.caps.extend_from_slice(caps),
                     None => inputs.caps.extend(std::iter::repeat_n(f64::INFINITY, frames * 2)),
                 }
@@ -399,7 +394,7 @@ impl<'s> Solver<'s> {
         if !self.plan.bounds.is_empty() || !self.bounds.is_empty() {
             distinct.sort_unstable();
             distinct.dedup_by_key(|&mut (net, _)| net);
-            let spoken_of = |net: NetIx| self.plan.bounded[net.0 as usize] || !self.bounds.is_empty();
+            let spoken_of = |net: NetIx| self.plan.bounds.speaks_of(net) || !self.bounds.is_empty();
             distinct.retain(|(net, _)| spoken_of(*net));
             for &(x, at_x) in distinct.iter().filter(|(net, _)| !self.state.fixed[net.0 as usize]) {
                 for &(y, at_y) in &distinct {
@@ -413,9 +408,15 @@ impl<'s> Solver<'s> {
         inputs
     }
 
+    /// Whether an earlier round ruled out that a device conducts at one end of its channel.
+    pub(super) fn is_ruled_out(&self, device: DeviceIx, end: usize) -> bool {
+        let at = device.0 as usize * 2 + end;
+        self.ruled_out.get(at / 64).is_some_and(|word| word >> (at % 64) & 1 == 1)
+    }
+
     /// What clamps and body diodes say of V(x) − V(y).
     pub(super) fn pair_bound(&self, x: NetIx, y: NetIx) -> Interval {
-        let spoken_of = |net: NetIx| self.plan.bounded[net.0 as usize];
+        let spoken_of = |net: NetIx| self.plan.bounds.speaks_of(net);
         if self.bounds.is_empty() && !(spoken_of(x) && spoken_of(y))
             || self.state.fixed[x.0 as usize] && self.state.fixed[y.0 as usize]
         {
@@ -428,16 +429,19 @@ impl<'s> Solver<'s> {
         self.shared.design.source_range(self.variant, device)
     }
 
+    #[inline]
     pub(super) fn raise(&mut self, net: NetIx, frame: usize, side: Side, value: f64, by: u32) {
-        if value == NOTHING || self.state.fixed[net.0 as usize] {
+        // Most raises are none: that is seen first. (What is not above [`NOTHING`] is nothing.)
+        let at = self.state.at(net, frame, side);
+        let least = self.state.values[at] + 1e-12;
+        if value <= least || self.state.fixed[net.0 as usize] {
             return;
         }
-        let value = match self.caps.get(&net) {
+        let value = match self.caps.of(net) {
             Some(caps) => value.min(caps[frame * 2 + side.index()]),
             None => value,
         };
-        let at = self.state.at(net, frame, side);
-        if value > self.state.values[at] + 1e-12 {
+        if value > least {
             self.state.values[at] = value;
             if let Some(setter) = self.state.setters.get_mut(at) {
                 *setter = by;
@@ -452,29 +456,21 @@ impl<'s> Solver<'s> {
         self.raise(net, frame, side, value, by);
     }
 
-    pub(super) fn set_driven(&mut self, net: NetIx) {
-        self.state.driven[net.0 as usize] = true;
-        self.touch(net);
+    pub(super) fn set_drive(&mut self, net: NetIx, drive: u8) {
+        let known = &mut self.state.drive[net.0 as usize];
+        if *known | drive != *known {
+            *known |= drive;
+            self.touch(net);
+        }
     }
 
     fn touch(&mut self, net: NetIx) {
+        if let Some(grew) = self.grew.get_mut(net.0 as usize) {
+            *grew += 1;
+        }
         if !self.state.fixed[net.0 as usize] && !std::mem::replace(&mut self.queued[net.0 as usize], true) {
             self.queue.push_back(net.0);
         }
-    }
-}
-
-impl Answer {
-    /// The boundary values of a finished state.
-    pub(super) fn of(state: &State, template: &Template, context: &Context) -> Answer {
-        let mut answer = Answer::default();
-        for net in template.boundary() {
-            let net = context.root(net);
-            let from = state.at(net, 0, Side::Hi);
-            answer.values.extend_from_slice(&state.values[from..from + state.frames * 2]);
-            answer.driven.push(state.driven[net.0 as usize]);
-        }
-        answer
     }
 }
 

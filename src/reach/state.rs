@@ -18,6 +18,13 @@ impl Side {
     pub(super) fn index(self) -> usize {
         self as usize
     }
+
+    pub(super) fn other(self) -> Side {
+        match self {
+            Side::Hi => Side::Lo,
+            Side::Lo => Side::Hi,
+        }
+    }
 }
 
 /// No value yet: nothing has reached the net on that side.
@@ -28,6 +35,13 @@ pub(super) const OUTSIDE: u32 = u32::MAX;
 /// The mark of an instance's answer among setters.
 pub(super) const ANSWER: u32 = 1 << 31;
 
+/// Something conducting connects the net with a rail.
+pub(super) const DRIVEN: u8 = 1;
+/// The net is the gate of an n-channel device in a ring, and of a p-channel one: wherever it stands, one of them conducts.
+pub(super) const OPENED_ABOVE: u8 = 2;
+/// See [`OPENED_ABOVE`].
+pub(super) const OPENED_BELOW: u8 = 4;
+
 /// Values of all nets of one cell in all frames, in one mode.
 #[derive(Clone, Debug, Default, PartialEq)]
 pub struct State {
@@ -36,8 +50,8 @@ pub struct State {
     pub(super) values: Vec<f64>,
     /// Who set each value; empty where nobody asked to remember.
     pub(super) setters: Vec<u32>,
-    /// Whether something conducting connects the net with a rail in this mode.
-    pub(super) driven: Vec<bool>,
+    /// For each net, what is known of its drive in this mode: [`DRIVEN`], [`OPENED_ABOVE`], [`OPENED_BELOW`].
+    pub(super) drive: Vec<u8>,
     /// Rails, and nets of which nothing is known: never raised.
     pub(super) fixed: Vec<bool>,
     /// Answers of instances that raised something: the instance and the answer's number.
@@ -50,7 +64,7 @@ impl State {
             frames,
             values: vec![NOTHING; nets * frames * 2],
             setters: if remember { vec![OUTSIDE; nets * frames * 2] } else { Vec::new() },
-            driven: vec![false; nets],
+            drive: vec![0; nets],
             fixed: vec![false; nets],
             answers: Vec::new(),
         }
@@ -81,24 +95,11 @@ impl State {
 
     /// Whether something conducting connects the (root) net with a rail in this mode.
     pub fn is_driven(&self, net: NetIx) -> bool {
-        self.driven[net.0 as usize]
+        self.drive[net.0 as usize] & DRIVEN != 0
     }
 
     /// Whether a (root) net's value is given: a rail, or a net of which nothing is known.
     pub fn is_fixed(&self, net: NetIx) -> bool {
         self.fixed[net.0 as usize]
-    }
-
-    /// The highest that `x` can be above `y` by the frames alone; [`NOTHING`] while one of them has no value yet.
-    pub(super) fn above(&self, x: NetIx, y: NetIx) -> f64 {
-        let mut least = f64::INFINITY;
-        for frame in 0..self.frames {
-            let (hi, lo) = (self.value(x, frame, Side::Hi), self.value(y, frame, Side::Lo));
-            if hi == NOTHING || lo == NOTHING {
-                return NOTHING;
-            }
-            least = least.min(hi + lo);
-        }
-        least
     }
 }

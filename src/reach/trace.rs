@@ -1,8 +1,10 @@
 //! Why a net's end of range is what it is: the chain of devices from a rail, read from the setters that the fixpoint kept.
 
-use super::expand::{Reach, ReachIx, Shared};
+use super::expand::{Reach, ReachIx};
+use super::inputs::Inputs;
 use super::plan::DIODE_DROP;
-use super::solve::{Inputs, Solver, answer_of};
+use super::shared::Shared;
+use super::solve::{Solver, answer_of};
 use super::state::{NOTHING, OUTSIDE, Side, State};
 use super::terminals::Terminals;
 use crate::design::{DeviceIx, InstanceIx, NetIx};
@@ -228,7 +230,7 @@ impl<'w> Walk<'w, '_> {
 
     /// Runs a context again with what it was told, and gives its state with what its own instances were asked.
     fn rerun(&self, top: u32, at: ContextIx, mode: u32, inputs: &Inputs) -> (State, Vec<(ContextIx, u32, Inputs)>) {
-        let shared = Shared::new(self.reach, &self.reach.frames[top as usize]);
+        let shared = Shared::again(self.reach, top as usize);
         let mut solver = Solver::new(&shared, at, mode, inputs, true);
         solver.run();
         let state = std::mem::take(&mut solver.state);

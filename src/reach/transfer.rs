@@ -3,9 +3,20 @@
 //! With the lowest voltage kept negated, a p-channel device does to one side what an n-channel device does to the other.
 
 use super::solve::Solver;
-use super::state::{NOTHING, Side};
+use super::state::{DRIVEN, NOTHING, OPENED_ABOVE, OPENED_BELOW, Side};
 use super::terminals::Terminals;
 use crate::design::{DeviceIx, NetIx};
+
+/// What opens a channel: the gate of a MOS, the base of a bipolar transistor.
+#[derive(Clone, Copy)]
+struct Gate {
+    net: NetIx,
+    /// The end of its range that opens the channel, and that limits how far the channel lifts that end of its nets.
+    limited: Side,
+    threshold: f64,
+    /// Whether its condition is in a ring: then it conducts unless that was ruled out.
+    held: bool,
+}
 
 impl Solver<'_> {
     /// Applies all transfers of a device.
@@ -18,14 +29,19 @@ impl Solver<'_> {
         match self.terminals[template.types[device.0 as usize].0 as usize] {
             Terminals::Mos { d, g, s, b, n, threshold } => {
                 let limited = if n { Side::Hi } else { Side::Lo };
-                self.channel(root(d), root(g), root(s), limited, threshold, by);
+                let gate = Gate { net: root(g), limited, threshold, held: self.ring.holds(device) };
+                self.channel(root(d), root(s), gate, by);
                 if let Some(b) = b.map(root) {
                     for end in [root(d), root(s)] {
                         if n { self.diode(b, end, by) } else { self.diode(end, b, by) }
                     }
                 }
             }
-            Terminals::Bipolar { c, b, e, n } => self.bipolar(root(c), root(b), root(e), n, by),
+            Terminals::Bipolar { c, b, e, n } => {
+                let limited = if n { Side::Hi } else { Side::Lo };
+                let base = Gate { net: root(b), limited, threshold: 0.0, held: self.ring.holds(device) };
+                self.bipolar(root(c), base, root(e), by);
+            }
             Terminals::Jfet { d, g, s, n } => {
                 self.through(root(d), root(s), by);
                 for end in [root(d), root(s)] {
@@ -49,16 +65,37 @@ impl Solver<'_> {
         }
     }
 
+    /// At which ends of its channel a finished run rules out that a device conducts: the gate never gets beyond its threshold there.
+    pub(super) fn rules_out(&self, device: DeviceIx) -> [bool; 2] {
+        let pins = self.template.device_pins(device);
+        let root = |pin: u8| self.context.root(pins[pin as usize]);
+        match self.terminals[self.template.types[device.0 as usize].0 as usize] {
+            Terminals::Mos { d, g, s, n, threshold, .. } => {
+                [root(d), root(s)].map(|end| root(g) != end && self.never_beyond(root(g), end, n, threshold))
+            }
+            Terminals::Bipolar { b, e, n, .. } => [self.never_beyond(root(b), root(e), n, 0.0), false],
+            _ => [false; 2],
+        }
+    }
+
+    fn never_beyond(&self, gate: NetIx, x: NetIx, n: bool, threshold: f64) -> bool {
+        let (high, low) = if n { (gate, x) } else { (x, gate) };
+        let most = |frame| self.state.reach(high, frame).hi - self.state.reach(low, frame).lo;
+        (0..self.state.frames).any(|frame| most(frame) <= threshold)
+    }
+
     /// A MOS channel. On the limited side (n: high) a net follows its neighbour up to a threshold from the gate; on the other
     /// side it follows fully, if the channel can conduct there.
-    fn channel(&mut self, d: NetIx, g: NetIx, s: NetIx, limited: Side, threshold: f64, by: u32) {
-        let full = if limited == Side::Hi { Side::Lo } else { Side::Hi };
-        let (at_d, at_s) = (self.conducts(g, d, limited, threshold), self.conducts(g, s, limited, threshold));
-        if at_d || at_s {
+    fn channel(&mut self, d: NetIx, s: NetIx, gate: Gate, by: u32) {
+        let (limited, full) = (gate.limited, gate.limited.other());
+        let (at_d, at_s) = (self.conducts(gate, d, (by, 0)), self.conducts(gate, s, (by, 1)));
+        // A ring of depletion devices can hold itself up: each adds what it needs.
+        let held = gate.held && gate.threshold <= 0.0;
+        if (at_d || at_s) && self.passes_drive(gate) {
             self.drive(d, s);
         }
         for frame in 0..self.state.frames {
-            let gate = self.state.value(g, frame, limited) - threshold;
+            let gate = self.gate_end(gate, held, frame) - gate.threshold;
             let (from_d, from_s) = (self.state.value(d, frame, limited), self.state.value(s, frame, limited));
             self.raise(s, frame, limited, from_d.min(gate), by);
             self.raise(d, frame, limited, from_s.min(gate), by);
@@ -74,16 +111,55 @@ impl Solver<'_> {
     }
 
     /// Whether the gate can pass its threshold against the channel's end `x`.
-    fn conducts(&self, g: NetIx, x: NetIx, limited: Side, threshold: f64) -> bool {
-        if threshold == f64::NEG_INFINITY {
+    fn conducts(&self, gate: Gate, x: NetIx, (device, end): (u32, usize)) -> bool {
+        if gate.threshold == f64::NEG_INFINITY {
             return true;
         }
-        let (high, low) = if limited == Side::Hi { (g, x) } else { (x, g) };
-        if g == x {
-            return threshold < 0.0;
+        if gate.net == x {
+            return gate.threshold < 0.0;
+        }
+        if gate.held && self.is_ruled_out(DeviceIx(device), end) {
+            return false;
         }
         // What clamps say is asked only where the frames alone would let it conduct.
-        self.state.above(high, low) > threshold && self.pair_bound(high, low).hi > threshold
+        self.beyond(gate, x) > gate.threshold && self.bounded_beyond(gate, x) > gate.threshold
+    }
+
+    /// How far a gate can be beyond `x` in the sense that opens its channel, by the frames alone; [`NOTHING`] while one of them has no
+    /// value yet.
+    fn beyond(&self, gate: Gate, x: NetIx) -> f64 {
+        let mut least = f64::INFINITY;
+        for frame in 0..self.state.frames {
+            let (end, against) =
+                (self.gate_end(gate, gate.held, frame), self.state.value(x, frame, gate.limited.other()));
+            if end == NOTHING || against == NOTHING {
+                return NOTHING;
+            }
+            least = least.min(end + against);
+        }
+        least
+    }
+
+    /// The same by clamps and body diodes.
+    fn bounded_beyond(&self, gate: Gate, x: NetIx) -> f64 {
+        let (high, low) = if gate.limited == Side::Hi { (gate.net, x) } else { (x, gate.net) };
+        self.pair_bound(high, low).hi
+    }
+
+    /// Whether a channel that can conduct counts as a driver: where its gate is driven. In a ring, it also does where its gate turns on
+    /// a device of each polarity, so that it cannot help to open one of them: crossed inverters drive each other, while a loop of
+    /// current mirrors can rest without current, all its gates floating.
+    fn passes_drive(&mut self, gate: Gate) -> bool {
+        if gate.held {
+            self.set_drive(gate.net, if gate.limited == Side::Hi { OPENED_ABOVE } else { OPENED_BELOW });
+        }
+        let both = OPENED_ABOVE | OPENED_BELOW;
+        let drive = self.state.drive[gate.net.0 as usize];
+        drive & DRIVEN != 0 || drive & both == both || self.state.is_fixed(gate.net) || gate.threshold < 0.0
+    }
+
+    fn gate_end(&self, gate: Gate, held: bool, frame: usize) -> f64 {
+        if held { f64::INFINITY } else { self.state.value(gate.net, frame, gate.limited) }
     }
 
     /// A junction: its cathode follows its anode up, its anode follows its cathode down.
@@ -117,10 +193,12 @@ impl Solver<'_> {
         }
     }
 
-    fn bipolar(&mut self, c: NetIx, b: NetIx, e: NetIx, n: bool, by: u32) {
-        let (limited, full) = if n { (Side::Hi, Side::Lo) } else { (Side::Lo, Side::Hi) };
-        let on = if n { self.highest(b, e) } else { self.highest(e, b) } > 0.0 && b != e;
-        if on {
+    fn bipolar(&mut self, c: NetIx, base: Gate, e: NetIx, by: u32) {
+        let (b, limited, full) = (base.net, base.limited, base.limited.other());
+        let on = b != e
+            && !(base.held && self.is_ruled_out(DeviceIx(by), 0))
+            && self.beyond(base, e).min(self.bounded_beyond(base, e)) > 0.0;
+        if on && self.passes_drive(base) {
             self.drive(c, e);
             self.drive(b, e);
         }
@@ -134,21 +212,14 @@ impl Solver<'_> {
             }
         }
         for end in [e, c] {
-            if n { self.diode(b, end, by) } else { self.diode(end, b, by) }
+            if limited == Side::Hi { self.diode(b, end, by) } else { self.diode(end, b, by) }
         }
     }
 
     /// Something conducting between two nets: what drives one drives the other.
     fn drive(&mut self, a: NetIx, b: NetIx) {
-        let (at_a, at_b) = (self.state.driven[a.0 as usize], self.state.driven[b.0 as usize]);
-        if at_a != at_b {
-            self.set_driven(if at_a { b } else { a });
-        }
-    }
-
-    /// The highest that `x` can be above `y`, by the frames and by clamps between them.
-    pub(super) fn highest(&self, x: NetIx, y: NetIx) -> f64 {
-        let by_frames = self.state.above(x, y);
-        if by_frames == NOTHING { NOTHING } else { by_frames.min(self.pair_bound(x, y).hi) }
+        let both = (self.state.drive[a.0 as usize] | self.state.drive[b.0 as usize]) & DRIVEN;
+        self.set_drive(a, both);
+        self.set_drive(b, both);
     }
 }

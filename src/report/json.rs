@@ -1,7 +1,7 @@
 //! The report as one JSON object: `findings` and `summary`, for programs.
 
 use super::{Report, Summary};
-use crate::diag::{Diagnostic, Label, Verdict};
+use crate::diag::{Accepted, Diagnostic, Label, Verdict, Waived};
 use crate::source::{SourceMap, Span};
 use serde::Serialize;
 use serde::ser::{SerializeMap, Serializer};
@@ -58,6 +58,7 @@ struct Shape<'d> {
     cite: Option<&'d str>,
     fingerprint: &'d str,
     waiver: Option<WaiverShape<'d>>,
+    known: bool,
 }
 
 #[derive(Serialize)]
@@ -132,13 +133,18 @@ impl<'d> Shape<'d> {
             help: diagnostic.help.as_deref(),
             cite: diagnostic.cite.as_deref(),
             fingerprint: &diagnostic.fingerprint,
-            waiver: diagnostic.waived.as_ref().map(|waived| WaiverShape {
+            known: diagnostic.waived.as_ref().is_some_and(known),
+            waiver: diagnostic.waived.as_ref().filter(|waived| !known(waived)).map(|waived| WaiverShape {
                 reason: &waived.reason,
                 by: waived.by.as_deref(),
                 until: waived.until.as_deref(),
             }),
         }
     }
+}
+
+fn known(waived: &Waived) -> bool {
+    waived.how == Accepted::Baseline
 }
 
 /// The words at the finding's own place, as the first of its labels.
@@ -148,7 +154,7 @@ fn own_label<'d>(diagnostic: &'d Diagnostic, sources: &'d SourceMap) -> Option<L
 }
 
 #[derive(Serialize)]
-struct SummaryShape<'s> {
+pub(super) struct SummaryShape<'s> {
     files: u64,
     cards: u64,
     cards_skipped: u64,
@@ -179,10 +185,12 @@ struct CountsShape {
     warning: u64,
     note: u64,
     waived: u64,
+    #[serde(skip_serializing_if = "Option::is_none")]
+    known: Option<u64>,
 }
 
 impl<'s> SummaryShape<'s> {
-    fn of(summary: &'s Summary) -> SummaryShape<'s> {
+    pub(super) fn of(summary: &'s Summary) -> SummaryShape<'s> {
         let counts = summary.findings;
         SummaryShape {
             files: summary.files,
@@ -202,6 +210,7 @@ impl<'s> SummaryShape<'s> {
                 warning: counts.warning,
                 note: counts.note,
                 waived: counts.waived,
+                known: Some(counts.known).filter(|known| *known > 0),
             },
             not_looked_at: &summary.not_looked_at,
             not_listed: &summary.not_listed,

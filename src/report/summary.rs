@@ -1,6 +1,6 @@
 //! The summary of a run: counts, and what was and was not looked at. A run that looked at nothing must not look clean.
 
-use crate::diag::{Diagnostic, Severity};
+use crate::diag::{Accepted, Diagnostic, Severity};
 
 /// Rated terminal pairs of high-voltage devices, over all instances (saturating).
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
@@ -24,9 +24,17 @@ pub struct Counts {
     pub note: u64,
     /// Findings that a waiver hides.
     pub waived: u64,
+    /// Findings that a baseline knows.
+    pub known: u64,
 }
 
 impl Counts {
+    /// The gravest severity that is counted.
+    pub fn worst(&self) -> Option<Severity> {
+        let all = [(self.error, Severity::Error), (self.warning, Severity::Warning), (self.note, Severity::Note)];
+        all.into_iter().find(|(count, _)| *count > 0).map(|(_, severity)| severity)
+    }
+
     /// Counts further findings of one severity.
     pub fn add(&mut self, severity: Severity, count: u64) {
         let slot = match severity {
@@ -77,34 +85,40 @@ pub struct Summary {
     pub not_looked_at: Vec<String>,
     /// Findings that are counted and not listed, a line each.
     pub not_listed: Vec<String>,
+    /// Those by severity.
+    pub unlisted: Counts,
     /// What was judged.
     pub judged: Judged,
 }
 
 impl Summary {
-    /// Counts findings by severity.
-    pub fn count(diagnostics: &[Diagnostic]) -> Counts {
-        let mut counts = Counts::default();
+    /// Counts findings by severity, those that are not listed too.
+    pub fn count(&mut self, diagnostics: &[Diagnostic]) {
+        let mut counts = self.unlisted;
         for diagnostic in diagnostics {
             let slot = match diagnostic.severity {
+                _ if diagnostic.waived.as_ref().is_some_and(|waived| waived.how == Accepted::Baseline) => {
+                    &mut counts.known
+                }
                 _ if diagnostic.waived.is_some() => &mut counts.waived,
                 Severity::Error => &mut counts.error,
                 Severity::Warning => &mut counts.warning,
                 Severity::Note => &mut counts.note,
                 Severity::Silent => continue,
             };
-            *slot += 1;
+            *slot = slot.saturating_add(1);
         }
-        counts
+        self.findings = counts;
     }
 
     /// The summary in lines for people.
     pub fn lines(&self) -> Vec<String> {
         let mut lines = Vec::new();
         let counts = self.findings;
-        let waived = if counts.waived > 0 { format!(", {} waived", counts.waived) } else { String::new() };
+        let hidden = [(counts.waived, "waived"), (counts.known, "known")].into_iter().filter(|(count, _)| *count > 0);
+        let hidden: String = hidden.map(|(count, what)| format!(", {count} {what}")).collect();
         lines.push(format!(
-            "found      {}, {}, {}{waived}",
+            "found      {}, {}, {}{hidden}",
             plural(counts.error, "error"),
             plural(counts.warning, "warning"),
             plural(counts.note, "note")

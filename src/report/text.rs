@@ -3,6 +3,7 @@
 //! Snippets show the lines that labels touch and nothing else; long lines are cut around the label, and what a terminal would
 //! obey is shown as a visible sign.
 
+use super::cut::{Cut, floor};
 use super::visible::visible;
 use super::{CAUTION, Report};
 use crate::diag::{Diagnostic, Severity, Verdict};
@@ -28,10 +29,7 @@ pub struct Look {
 /// At most this many findings of one rule are drawn; the rest are counted.
 pub const MOST_OF_A_RULE: usize = 100;
 
-/// Longer lines are cut around what a label points at.
-const LONGEST_LINE: usize = 160;
-
-/// Writes all findings that no waiver hides, the summary, and the caution.
+/// Writes all findings that are to be listed, the summary, and the caution.
 pub fn write(report: &Report, sources: &SourceMap, look: Look, out: &mut dyn Write) -> io::Result<()> {
     let handler = GraphicalReportHandler::new_themed(theme(look.colour))
         .with_width(look.width.max(40))
@@ -39,7 +37,7 @@ pub fn write(report: &Report, sources: &SourceMap, look: Look, out: &mut dyn Wri
         .with_links(false)
         .without_syntax_highlighting();
     let mut drawn: HashMap<&str, usize> = HashMap::new();
-    for diagnostic in report.diagnostics.iter().filter(|diagnostic| diagnostic.waived.is_none()) {
+    for diagnostic in report.listed() {
         let count = drawn.entry(diagnostic.code.as_str()).or_insert(0);
         *count += 1;
         if *count > MOST_OF_A_RULE {
@@ -150,6 +148,9 @@ impl Shown {
 /// `error finger-count`, with the number of instances and the modes.
 fn code(diagnostic: &Diagnostic) -> String {
     let mut code = format!("{} {}", diagnostic.severity.word(), diagnostic.code);
+    if let Some(waived) = &diagnostic.waived {
+        code.push_str(&format!(", {}", waived.word()));
+    }
     if let Some(finding) = &diagnostic.finding {
         if finding.verdict == Verdict::Unproven {
             code.push_str(", unproven");
@@ -249,39 +250,6 @@ impl Window {
         }
         (window, labels)
     }
-}
-
-/// A line cut around what its labels point at.
-struct Cut {
-    text: String,
-    from: usize,
-    to: usize,
-    lead: usize,
-}
-
-impl Cut {
-    fn new(line: &str, first: usize, last: usize) -> Cut {
-        if line.len() <= LONGEST_LINE {
-            return Cut { text: visible(line).into_owned(), from: 0, to: line.len(), lead: 0 };
-        }
-        let from = if first < LONGEST_LINE / 2 { 0 } else { floor(line, first - LONGEST_LINE / 4) };
-        let to = floor(line, (last + LONGEST_LINE / 4).min(from + LONGEST_LINE).max(from).min(line.len()));
-        let (head, tail) = (if from > 0 { "… " } else { "" }, if to < line.len() { " …" } else { "" });
-        Cut { text: format!("{head}{}{tail}", visible(&line[from..to])), from, to, lead: head.len() }
-    }
-
-    /// Where an offset of the line stands in the cut text.
-    fn place(&self, line: &str, offset: usize) -> usize {
-        let offset = offset.clamp(self.from, self.to);
-        self.lead + visible(&line[self.from..offset]).len()
-    }
-}
-
-fn floor(text: &str, mut offset: usize) -> usize {
-    while !text.is_char_boundary(offset) {
-        offset -= 1;
-    }
-    offset
 }
 
 impl SourceCode for Window {

@@ -40,7 +40,7 @@ pub struct Spot {
 }
 
 /// A net of one instance.
-#[derive(Clone, Copy, Debug, PartialEq, Eq, Hash)]
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Hash, PartialOrd, Ord)]
 pub struct Net {
     /// The instance.
     pub spot: SpotIx,

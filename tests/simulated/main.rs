@@ -7,7 +7,7 @@
 //! the models are and how "driven" is decided; `patterns.rs` lists what the circuits are made of.
 //!
 //! Circuits that keep a state of their own (latches) are a test apart: a least fixpoint builds every voltage up from the rails, and
-//! so may miss a state that only holds itself.
+//! so would miss a state that only holds itself.
 //!
 //! Environment: `DRAINWISE_SIMULATED_SEED` (first seed, 1), `DRAINWISE_SIMULATED_COUNT` (circuits, 320),
 //! `DRAINWISE_SIMULATED_ONLY` (one seed: prints netlist, deck, voltages and reaches). Offending circuits are left in
