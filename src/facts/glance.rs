@@ -252,7 +252,8 @@ impl Glance<'_> {
         let Cells { world, at, here, .. } = self.around;
         let gates = world.roles.gates(here.context, gate);
         let rail = world.marks_of(at, gate).iter().any(|mark| matches!(mark, Mark::Rail(_)));
-        (!rail && !(gates.shared && gates.reference)).then_some(Truth::No)
+        let possible = rail || gates.shared && gates.reference;
+        (!possible).then_some(Truth::No)
     }
 
     /// A pair's source is no rail, and a gain stage's drain is none.
