@@ -11,6 +11,7 @@ use super::{Role, Use};
 use crate::declared::{Class, Kind};
 use crate::design::{DeviceIx, Element, InstanceIx, NetIx, Sizes};
 use crate::graph::{Context, Mark, Pin};
+use crate::names::Sym;
 use crate::reach::{Interval, ReachIx, Terminals};
 use hashbrown::{HashMap, HashSet};
 use std::cell::RefCell;
@@ -189,6 +190,9 @@ pub(super) struct Found<T> {
     crowded: Option<Net>,
 }
 
+/// A device and its width, metres.
+type Width = (Unit, f64);
+
 /// A walk from one context.
 pub struct Walker<'w> {
     /// What it looks up.
@@ -207,7 +211,7 @@ pub struct Walker<'w> {
     pub(super) gates: HashMap<(Net, bool), Found<Rc<super::mirror::Gates>>>,
     pub(super) beside: HashMap<(Net, Net, bool), Found<Rc<super::mirror::Beside>>>,
     pub(super) mirrors: HashMap<(Net, Net, bool), Found<Rc<super::mirror::Group>>>,
-    pub(super) widest: HashMap<(Net, Net, u32), Found<Option<(Unit, f64)>>>,
+    pub(super) widest: HashMap<(Net, Net, u32), Found<Option<Width>>>,
 }
 
 impl<'w> Walker<'w> {
@@ -554,6 +558,12 @@ impl<'w> Walker<'w> {
     pub fn class(&self, unit: Unit) -> Option<&'w Class> {
         let template = self.ground.design().template(self.context(unit.spot).variant);
         self.ground.design().class(template, unit.device)
+    }
+
+    /// The model on a device's card.
+    pub fn model(&self, unit: Unit) -> Option<Sym> {
+        let template = self.ground.design().template(self.context(unit.spot).variant);
+        self.ground.design().device_type(template, unit.device).model
     }
 
     /// A MOS transistor with its nets; none where the device is none.
