@@ -251,7 +251,8 @@ impl Glance<'_> {
         let gate = self.net(self.shape.g)?;
         let Cells { world, here, .. } = self.around;
         let n = self.shape.class.kind == Kind::Nmos;
-        (!self.is_rail(gate) && !world.roles.may_mirror(here.context, gate, n)).then_some(Truth::No)
+        let rail = self.is_rail(gate) || self.modes().any(|mode| world.reach.is_rail(self.around.at, mode, gate));
+        (!rail && !world.roles.may_mirror(here.context, gate, n)).then_some(Truth::No)
     }
 
     /// A pair's source is no rail and bears a second one; a gain stage's drain is none and bears a load, its gate is none.
