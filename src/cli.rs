@@ -6,7 +6,7 @@ mod output;
 mod progress;
 
 use crate::changed::{self, Task};
-use crate::deck::load_decks;
+use crate::deck::{load_decks, schema};
 use crate::diag::Severity;
 use crate::facts::vocabulary::vocabulary;
 use crate::load::Disk;
@@ -16,7 +16,8 @@ use crate::report::{Setting, github, gitlab, json, markdown, sarif, short, text}
 use crate::source::SourceMap;
 use crate::waiver::{Date, read_date};
 use crate::{init, reference, survey, tracing};
-use clap::{Args, Parser, Subcommand, ValueEnum};
+use clap::{Args, CommandFactory, Parser, Subcommand, ValueEnum};
+use clap_complete::Shell;
 use output::Output;
 use progress::Spinner;
 use std::io::{self, Write};
@@ -49,6 +50,17 @@ enum Command {
     Init(Init),
     /// Checks a deck alone
     Deck(DeckArgs),
+    /// Prints the JSON Schema of decks, for editors
+    Schema(Page),
+    /// Prints what a shell needs to complete this program's commands
+    Completions {
+        /// The shell
+        shell: Shell,
+        #[command(flatten)]
+        page: Page,
+    },
+    /// Prints the manual page
+    Manual(Page),
 }
 
 #[derive(Debug, Args)]
@@ -171,6 +183,13 @@ struct DeckArgs {
     file: PathBuf,
 }
 
+#[derive(Debug, Args)]
+struct Page {
+    /// Write to this file, whole or not at all (default: standard output)
+    #[arg(long, value_name = "FILE")]
+    out: Option<PathBuf>,
+}
+
 #[derive(Clone, Copy, Debug, ValueEnum)]
 enum Format {
     /// Pictures of the places, for people
@@ -239,6 +258,9 @@ pub fn run() -> u8 {
         Command::Rules(rules) => run_rules(&rules),
         Command::Init(init) => run_init(init),
         Command::Deck(deck) => run_deck(&deck),
+        Command::Schema(page) => run_schema(&page),
+        Command::Completions { shell, page } => print(&page, &completions(shell)),
+        Command::Manual(page) => manual().and_then(|text| print(&page, &text)),
     };
     match result {
         Ok(code) => code,
@@ -449,4 +471,51 @@ fn run_deck(args: &DeckArgs) -> io::Result<u8> {
     output.write(|out| out.write_all(line.as_bytes()))?;
     output.finish()?;
     Ok(0)
+}
+
+fn print(page: &Page, text: &[u8]) -> io::Result<u8> {
+    let mut output = Output::open(page.out.as_deref())?;
+    output.write(|out| out.write_all(text))?;
+    output.finish()?;
+    Ok(0)
+}
+
+fn run_schema(page: &Page) -> io::Result<u8> {
+    let own = Job { decks: vec!["builtin:ldmos".into()], ..Job::default() };
+    let (deck, _) = pipeline::read_decks(&Disk, &own);
+    print(page, schema::schema(&deck.rules).as_bytes())
+}
+
+fn completions(shell: Shell) -> Vec<u8> {
+    let mut text = Vec::new();
+    clap_complete::generate(shell, &mut Cli::command(), "drainwise", &mut text);
+    text
+}
+
+/// One page: the program, then each command with its options.
+fn manual() -> io::Result<Vec<u8>> {
+    let mut text = Vec::new();
+    let mut whole = Cli::command();
+    whole.build();
+    let page = clap_mangen::Man::new(whole.clone());
+    page.render_title(&mut text)?;
+    page.render_name_section(&mut text)?;
+    page.render_synopsis_section(&mut text)?;
+    for command in whole.get_subcommands().filter(|command| command.get_name() != "help") {
+        let mut part = Vec::new();
+        let page = clap_mangen::Man::new(command.clone());
+        page.render_synopsis_section(&mut part)?;
+        page.render_description_section(&mut part)?;
+        page.render_options_section(&mut part)?;
+        writeln!(text, ".SH \"DRAINWISE {}\"", command.get_name().to_uppercase())?;
+        for line in String::from_utf8_lossy(&part).lines() {
+            match line.strip_prefix(".SH ") {
+                Some(title) => writeln!(text, ".SS {title}")?,
+                None => writeln!(text, "{line}")?,
+            }
+        }
+    }
+    page.render_extra_section(&mut text)?;
+    page.render_version_section(&mut text)?;
+    Ok(text)
 }
