@@ -5,7 +5,8 @@
 mod output;
 mod progress;
 
-use crate::deck::load_decks;
+use crate::changed::{self, Task};
+use crate::deck::{load_decks, schema};
 use crate::diag::Severity;
 use crate::facts::vocabulary::vocabulary;
 use crate::load::Disk;
@@ -15,7 +16,8 @@ use crate::report::{Setting, github, gitlab, json, markdown, sarif, short, text}
 use crate::source::SourceMap;
 use crate::waiver::{Date, read_date};
 use crate::{init, reference, survey, tracing};
-use clap::{Args, Parser, Subcommand, ValueEnum};
+use clap::{Args, CommandFactory, Parser, Subcommand, ValueEnum};
+use clap_complete::Shell;
 use output::Output;
 use progress::Spinner;
 use std::io::{self, Write};
@@ -36,6 +38,8 @@ Exit codes: 0 nothing at or above --fail-on, 1 findings, 2 the job could not be 
 enum Command {
     /// Judges netlists by the rules of their decks
     Lint(Lint),
+    /// Judges the designs that changed files take part in, each once: for hooks that run before a commit
+    Changed(Changed),
     /// Shows which voltages a net can have, and the chain of devices that gives them
     Trace(Trace),
     /// Shows what is in a netlist: classes, unmatched models, rails found and missing
@@ -46,6 +50,17 @@ enum Command {
     Init(Init),
     /// Checks a deck alone
     Deck(DeckArgs),
+    /// Prints the JSON Schema of decks, for editors
+    Schema(Page),
+    /// Prints what a shell needs to complete this program's commands
+    Completions {
+        /// The shell
+        shell: Shell,
+        #[command(flatten)]
+        page: Page,
+    },
+    /// Prints the manual page
+    Manual(Page),
 }
 
 #[derive(Debug, Args)]
@@ -91,6 +106,30 @@ struct Lint {
     /// The day against which waivers are held, as 2027-03-01 (default: today, UTC)
     #[arg(long, value_name = "DATE", value_parser = date)]
     today: Option<Date>,
+}
+
+#[derive(Debug, Args)]
+struct Changed {
+    /// Netlists and decks that changed; each is judged with its nearest drainwise.yaml, or as part of the design that this names
+    #[arg(required = true)]
+    files: Vec<PathBuf>,
+    /// How to write the reports
+    #[arg(long, value_enum, default_value_t = Lines::Text)]
+    format: Lines,
+    /// Fail (exit code 1) if a finding is at least this grave
+    #[arg(long, value_enum, value_name = "LEVEL", default_value_t = Level::Error)]
+    fail_on: Level,
+}
+
+/// The formats of which several reports may follow one another.
+#[derive(Clone, Copy, Debug, ValueEnum)]
+enum Lines {
+    /// Pictures of the places, for people
+    Text,
+    /// One line a finding
+    Short,
+    /// Annotations of GitHub Actions, as lines of a job's output
+    Github,
 }
 
 #[derive(Debug, Args)]
@@ -142,6 +181,13 @@ struct Init {
 struct DeckArgs {
     /// Deck to check, or `builtin:ldmos`, `builtin:sky130`, `builtin:gf180mcu`, `builtin:sg13g2`
     file: PathBuf,
+}
+
+#[derive(Debug, Args)]
+struct Page {
+    /// Write to this file, whole or not at all (default: standard output)
+    #[arg(long, value_name = "FILE")]
+    out: Option<PathBuf>,
 }
 
 #[derive(Clone, Copy, Debug, ValueEnum)]
@@ -206,11 +252,15 @@ pub fn run() -> u8 {
     };
     let result = match cli.command {
         Command::Lint(lint) => run_lint(lint),
+        Command::Changed(changed) => run_changed(&changed),
         Command::Trace(trace) => run_trace(trace),
         Command::Survey(survey) => run_survey(survey),
         Command::Rules(rules) => run_rules(&rules),
         Command::Init(init) => run_init(init),
         Command::Deck(deck) => run_deck(&deck),
+        Command::Schema(page) => run_schema(&page),
+        Command::Completions { shell, page } => print(&page, &completions(shell)),
+        Command::Manual(page) => manual().and_then(|text| print(&page, &text)),
     };
     match result {
         Ok(code) => code,
@@ -242,6 +292,38 @@ fn run_lint(lint: Lint) -> io::Result<u8> {
     output.finish()?;
     std::mem::forget(outcome);
     Ok(setting.exit_code)
+}
+
+fn run_changed(args: &Changed) -> io::Result<u8> {
+    let spinner = Spinner::new();
+    let tasks = changed::tasks(&Disk, &args.files, &spinner);
+    let format = match args.format {
+        Lines::Text => Format::Text,
+        Lines::Short => Format::Short,
+        Lines::Github => Format::Github,
+    };
+    let mut output = Output::open(None)?;
+    let look = output.look();
+    let mut worst = 0;
+    for task in &tasks {
+        let outcome = match (task.job(), task) {
+            (Some(job), _) => pipeline::lint(&Disk, &job, &spinner),
+            (None, Task::Deck(deck)) => {
+                let job = Job { decks: vec![deck.clone()], ..Job::default() };
+                pipeline::read_decks(&Disk, &job).1
+            }
+            (None, _) => continue,
+        };
+        let setting = Setting { base: pipeline::base(&Disk), exit_code: exit_code(&outcome, args.fail_on.severity()) };
+        worst = worst.max(setting.exit_code);
+        // A deck in order needs no words.
+        if task.job().is_some() || !outcome.report.diagnostics.is_empty() {
+            output.write(|out| write(&outcome, format, &setting, look, out))?;
+        }
+    }
+    spinner.finish();
+    output.finish()?;
+    Ok(worst)
 }
 
 /// A baseline that cannot be written is said on standard error; the report follows all the same.
@@ -389,4 +471,51 @@ fn run_deck(args: &DeckArgs) -> io::Result<u8> {
     output.write(|out| out.write_all(line.as_bytes()))?;
     output.finish()?;
     Ok(0)
+}
+
+fn print(page: &Page, text: &[u8]) -> io::Result<u8> {
+    let mut output = Output::open(page.out.as_deref())?;
+    output.write(|out| out.write_all(text))?;
+    output.finish()?;
+    Ok(0)
+}
+
+fn run_schema(page: &Page) -> io::Result<u8> {
+    let own = Job { decks: vec!["builtin:ldmos".into()], ..Job::default() };
+    let (deck, _) = pipeline::read_decks(&Disk, &own);
+    print(page, schema::schema(&deck.rules).as_bytes())
+}
+
+fn completions(shell: Shell) -> Vec<u8> {
+    let mut text = Vec::new();
+    clap_complete::generate(shell, &mut Cli::command(), "drainwise", &mut text);
+    text
+}
+
+/// One page: the program, then each command with its options.
+fn manual() -> io::Result<Vec<u8>> {
+    let mut text = Vec::new();
+    let mut whole = Cli::command();
+    whole.build();
+    let page = clap_mangen::Man::new(whole.clone());
+    page.render_title(&mut text)?;
+    page.render_name_section(&mut text)?;
+    page.render_synopsis_section(&mut text)?;
+    for command in whole.get_subcommands().filter(|command| command.get_name() != "help") {
+        let mut part = Vec::new();
+        let page = clap_mangen::Man::new(command.clone());
+        page.render_synopsis_section(&mut part)?;
+        page.render_description_section(&mut part)?;
+        page.render_options_section(&mut part)?;
+        writeln!(text, ".SH \"DRAINWISE {}\"", command.get_name().to_uppercase())?;
+        for line in String::from_utf8_lossy(&part).lines() {
+            match line.strip_prefix(".SH ") {
+                Some(title) => writeln!(text, ".SS {title}")?,
+                None => writeln!(text, "{line}")?,
+            }
+        }
+    }
+    page.render_extra_section(&mut text)?;
+    page.render_version_section(&mut text)?;
+    Ok(text)
 }

@@ -1,7 +1,7 @@
 //! What `drainwise init` writes: a starter deck for a netlist, with what was found there and what is left to fill in. Guesses
 //! are marked as such; the deck loads as it stands.
 
-use crate::deck::{builtin_names, load_decks};
+use crate::deck::{builtin_names, load_decks, schema};
 use crate::declared::Deck;
 use crate::design::{Element, Oddity};
 use crate::facts::{World, vocabulary::vocabulary};
@@ -75,7 +75,12 @@ fn process_of(files: &dyn Files, models: &[String]) -> Option<&'static str> {
 }
 
 fn write(world: World<'_>, netlist: &Path, process: Option<&str>) -> String {
-    let mut text = String::from("# A starter deck. Lines with `fill in` want your values; guesses are marked.\n");
+    // The first line is how YAML editors are told of a schema; they read nothing else of it.
+    let mut text = format!(
+        "# yaml-language-server: $schema={0}\n# (an editor wants that file beside this one: drainwise schema --out {0})\n",
+        schema::FILE
+    );
+    text.push_str("# A starter deck. Lines with `fill in` want your values; guesses are marked.\n");
     let _ = writeln!(text, "use: [builtin:{}]", process.unwrap_or("ldmos"));
     let name = netlist.file_name().map_or_else(String::new, |name| name.to_string_lossy().into_owned());
     let _ = writeln!(text, "netlists: [{}]", quoted(&name));

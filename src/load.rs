@@ -16,7 +16,7 @@ mod paths;
 mod text;
 
 pub use files::{Disk, Files, Memory};
-pub use paths::relative;
+pub use paths::{flat, relative};
 use text::Trouble;
 
 /// How deep files may include one another.

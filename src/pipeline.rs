@@ -221,6 +221,17 @@ pub struct Seen {
 
 /// The main job.
 pub fn lint(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Outcome {
+    lint_and(files, job, progress, |_, _| ())
+}
+
+/// The main job, with a look at what was computed while it is there; the report is not ordered yet. Where the job ends before, nobody
+/// looks.
+pub fn lint_and(
+    files: &dyn Files,
+    job: &Job,
+    progress: &dyn Progress,
+    look: impl FnOnce(World<'_>, &Report),
+) -> Outcome {
     let mut loaded = match read(files, job, progress) {
         Ok(loaded) => loaded,
         Err(outcome) => return *outcome,
@@ -232,7 +243,9 @@ pub fn lint(files: &dyn Files, job: &Job, progress: &dyn Progress) -> Outcome {
     loaded.diagnostics.extend(faults);
     let (sources, (mut report, could_not)) = with_world(loaded, job, progress, |world, seen| {
         progress.stage("asking the rules");
-        judge(world, seen, job)
+        let judged = judge(world, seen, job);
+        look(world, &judged.0);
+        judged
     });
     report.sort(&sources);
     let mut outcome = Outcome { sources, report, could_not };
@@ -261,9 +274,15 @@ fn judge(world: World<'_>, mut seen: Seen, job: &Job) -> (Report, bool) {
     diagnostics.extend(hygiene.into_iter().filter_map(|diagnostic| engine::adopt(diagnostic, &rules)));
     let judged = engine::judge(world, &rules);
     diagnostics.extend(judged.findings);
+    if world.roles.is_worn_out() {
+        summary
+            .not_looked_at
+            .push("roles of many devices: recognition gave up, since the design has too many structures".to_owned());
+    }
     if world.roles.unseen() > 0 {
         let (unseen, most) = (world.roles.unseen(), MOST_SURROUNDINGS);
-        let line = format!("roles of {unseen} instances: their cell stands in more than {most} different surroundings");
+        let line =
+            format!("roles of up to {unseen} instances of one cell, which stands in more than {most} surroundings");
         summary.not_looked_at.push(line);
     }
     diagnostics.extend(engine::hygiene(world.design, world.contexts, world.deck, &rules, summary.devices));
@@ -465,14 +484,25 @@ pub fn base(files: &dyn Files) -> Base {
     Base::new(root, here)
 }
 
+/// The deck that a netlist belongs to: the nearest `drainwise.yaml` upward.
+pub fn deck_of(files: &dyn Files, netlist: &Path) -> Option<PathBuf> {
+    let job = Job { netlists: vec![netlist.to_owned()], ..Job::default() };
+    nearest_deck(files, &job).into_iter().next()
+}
+
 /// The nearest `drainwise.yaml` upward from the first netlist, or from here.
 fn nearest_deck(files: &dyn Files, job: &Job) -> Vec<PathBuf> {
-    let start = job.netlists.first().and_then(|path| path.parent()).unwrap_or(Path::new("")).to_owned();
-    let mut folder = start;
+    let start = job.netlists.first().and_then(|path| path.parent()).unwrap_or(Path::new(""));
+    deck_above(files, start).into_iter().collect()
+}
+
+/// The `drainwise.yaml` in a folder or the nearest one above it.
+pub fn deck_above(files: &dyn Files, folder: &Path) -> Option<PathBuf> {
+    let mut folder = folder.to_owned();
     for _ in 0..64 {
         let candidate = folder.join("drainwise.yaml");
         if files.is_file(&candidate) {
-            return vec![candidate];
+            return Some(candidate);
         }
         folder = match folder.file_name() {
             Some(name) if name != ".." => folder.parent().map(Path::to_owned).unwrap_or_default(),
@@ -485,7 +515,7 @@ fn nearest_deck(files: &dyn Files, job: &Job) -> Vec<PathBuf> {
             break;
         }
     }
-    Vec::new()
+    None
 }
 
 /// The deck loader reads through the same door as the netlist loader.

@@ -1,7 +1,7 @@
 //! What `drainwise survey` shows: what is in a netlist, by the classes of its deck; rails found and rails that seem missing.
 
 use crate::declared::Class;
-use crate::design::{NetIx, Oddity};
+use crate::design::{DeviceIx, NetIx, Oddity};
 use crate::facts::{DeviceView, ROLES, World};
 use crate::graph::{Mark, PinTable, all_rails};
 use crate::load::Files;
@@ -160,6 +160,29 @@ fn undetermined(world: World<'_>) -> Vec<(String, &'static str)> {
     found
 }
 
+/// One device of a context, in each kind of surroundings.
+pub fn of_device(world: World<'_>, at: ReachIx, device: DeviceIx, class: &Class) -> Vec<SurveyDevice> {
+    let mut found = Vec::new();
+    if class.kind.is_mos() {
+        in_surroundings(DeviceView::new(world, at, device, class), class, &mut |seen| found.push(seen));
+    }
+    found
+}
+
+/// Looks at a transistor in each kind of surroundings that matters to what it does.
+fn in_surroundings(mut view: DeviceView<'_>, class: &Class, each: &mut dyn FnMut(SurveyDevice)) {
+    loop {
+        let seen = look_at(&view, class);
+        let must_look_above = view.must_look_above();
+        if !must_look_above {
+            each(seen);
+        }
+        if !view.next_surroundings() {
+            return;
+        }
+    }
+}
+
 fn look_at_devices(world: World<'_>, found: &mut Survey) {
     let walks = Rc::default();
     let mut counts: BTreeMap<&'static str, u64> = BTreeMap::new();
@@ -169,15 +192,8 @@ fn look_at_devices(world: World<'_>, found: &mut Survey) {
             let Some(class) = world.design.class(template, device).filter(|class| class.kind.is_mos()) else {
                 continue;
             };
-            let mut view = DeviceView::new(world, at, device, class).sharing(&walks);
-            loop {
-                let seen = look_at(&view, class);
-                if view.must_look_above() {
-                    if !view.next_surroundings() {
-                        break;
-                    }
-                    continue;
-                }
+            let view = DeviceView::new(world, at, device, class).sharing(&walks);
+            in_surroundings(view, class, &mut |seen| {
                 let roles = seen.roles.iter().map(|(role, _)| *role);
                 for role in roles.chain(seen.roles.is_empty().then_some(UNCLASSIFIED)) {
                     let count = counts.entry(role).or_default();
@@ -188,10 +204,7 @@ fn look_at_devices(world: World<'_>, found: &mut Survey) {
                 } else {
                     found.not_listed = found.not_listed.saturating_add(seen.instances);
                 }
-                if !view.next_surroundings() {
-                    break;
-                }
-            }
+            });
         }
     }
     let order = |role: &str| ROLES.iter().position(|known| *known == role);

@@ -105,7 +105,7 @@ fn all(world: World<'_>) -> Vec<NetReach> {
                 continue;
             }
             let path = format!("{prefix}{}", world.design.net_name(template, net));
-            found.extend((0..world.reach.modes.len()).map(|mode| one(world, at, mode, net, &path)));
+            found.extend(of_net(world, at, net, &path));
         }
         let below: Vec<_> = template.instance_indices().zip(&world.reach.get(at).children).collect();
         for (instance, &child) in below.into_iter().rev() {
@@ -117,6 +117,11 @@ fn all(world: World<'_>) -> Vec<NetReach> {
 
 fn tops(world: World<'_>) -> Vec<ReachIx> {
     world.reach.indices().filter(|&at| world.reach.get(at).parents.is_empty()).collect()
+}
+
+/// The reach of a net of a context in every mode, without chains.
+pub fn of_net(world: World<'_>, at: ReachIx, net: NetIx, path: &str) -> Vec<NetReach> {
+    (0..world.reach.modes.len()).map(|mode| one(world, at, mode, net, path)).collect()
 }
 
 fn one(world: World<'_>, at: ReachIx, mode: usize, net: NetIx, path: &str) -> NetReach {
@@ -176,7 +181,8 @@ fn find(world: World<'_>, at: ReachIx, path: &str) -> Option<(ReachIx, NetIx)> {
     None
 }
 
-fn chains(world: World<'_>, at: ReachIx, mode: usize, net: NetIx) -> Vec<Chain> {
+/// How the highest and the lowest voltage of a net against ground come about in a mode.
+pub fn chains(world: World<'_>, at: ReachIx, mode: usize, net: NetIx) -> Vec<Chain> {
     let make = |end, side| Chain {
         end,
         steps: chain(world.reach, at, mode, net, 0, side).into_iter().map(|step| shown(world, step)).collect(),

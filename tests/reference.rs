@@ -18,9 +18,10 @@ fn parts() -> Vec<(String, String)> {
     assert!(!outcome.could_not, "{:?}", outcome.report.diagnostics);
     let mut parts = vec![("rules".to_owned(), rule_table(&deck.rules)), ("names".to_owned(), name_tables())];
     for section in SECTIONS {
-        let mut table = "| key | what it holds |\n|---|---|\n".to_owned();
-        for (key, doc) in section.keys {
-            writeln!(table, "| `{key}` | {} |", doc.replace('|', "\\|")).unwrap();
+        let mut table = "| key | value | meaning |\n|---|---|---|\n".to_owned();
+        for key in section.keys {
+            let (name, value, doc) = (key.name, key.holds.in_words(), key.doc.replace('|', "\\|"));
+            writeln!(table, "| `{name}` | {value} | {doc} |").unwrap();
         }
         parts.push((format!("keys of {}", section.name.replace('`', "")), table));
     }

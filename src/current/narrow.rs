@@ -71,6 +71,10 @@ fn of_resistor<'r>(roles: &'r Roles<'r>, walks: &Walks<'r, Known>, at: ReachIx, 
     let context = roles.reach.contexts.get(roles.reach.get(at).context);
     let pins = roles.design().template(context.variant).device_pins(device);
     let (a, b) = (context.root(*pins.first()?), context.root(*pins.get(1)?));
+    let structure = roles.reach.get(at).context;
+    if !roles.may_be_held(structure, a) && !roles.may_be_held(structure, b) {
+        return None;
+    }
     let mut standing = Standing { anchor: at, path: Vec::new() };
     let mut surroundings = Surroundings::default();
     let mut all: Option<Held> = None;

@@ -20,10 +20,7 @@ fn waiver(checker: &mut Checker, node: &Node, rules: &[&str]) -> Option<Waiver> 
     if !matches!(node.shape, Shape::Map(_)) {
         return None;
     }
-    let missing: Vec<&str> = ["rule", "at", "reason"].into_iter().filter(|key| fields.get(key).is_none()).collect();
-    if !missing.is_empty() {
-        checker.error(node.span, format!("this waiver lacks {}", missing.join(" and ")));
-    }
+    checker.needs(node, &fields, &WAIVER, "waiver");
     let rule = fields.get("rule").and_then(|node| rule_named(checker, node, rules));
     let at = text(checker, &fields, "at");
     let reason = text(checker, &fields, "reason");

@@ -1,10 +1,10 @@
 //! Classes: the devices of a process, checked field by field.
 
-use super::keys::{BODY, CLASS, DRIFT, FINGERS, ON_STATE};
+use super::keys::{BODY, CLASS, DENSITY, DOPING, DRIFT, FINGERS, LENGTH, ON_STATE, POWER, SHARE, VOLTAGE};
 use super::node::{Entry, Node, Shape};
 use super::rail::quoted_net;
 use super::size::size;
-use super::value::{Checker, DENSITY, DOPING, Fields, LENGTH, POWER, SHARE, VOLTAGE};
+use super::value::{Checker, Fields};
 use crate::declared::{Class, Drift, Fingers, Kind, OnState, Rating, Tie, TieTarget};
 use crate::names::Glob;
 use crate::source::Span;

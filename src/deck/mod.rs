@@ -6,6 +6,7 @@
 //! YAML file that it came from; a deck with an error must not be used.
 
 mod accepted;
+pub mod at;
 mod class;
 pub mod keys;
 mod load;
@@ -16,6 +17,7 @@ pub mod pages;
 mod rail;
 mod ring;
 mod rule;
+pub mod schema;
 mod size;
 mod value;
 mod words;

@@ -1,9 +1,9 @@
 //! Modes, transitions and currents: how the circuit is operated.
 
-use super::keys::{CURRENTS, TRANSITION};
+use super::keys::{CURRENT, CURRENTS, RATE, TIME, TRANSITION};
 use super::node::{Entry, Node, Shape};
 use super::rail::{net_pattern, rails};
-use super::value::{CURRENT, Checker, RATE, TIME};
+use super::value::Checker;
 use crate::declared::{DeclaredCurrent, Mode, Transition};
 
 /// The modes of a map, in its order.
@@ -28,11 +28,7 @@ fn transition(checker: &mut Checker, node: &Node, modes: &[Mode]) -> Option<Tran
     if !matches!(node.shape, Shape::Map(_)) {
         return None;
     }
-    let missing: Vec<&str> =
-        TRANSITION.keys.iter().map(|(key, _)| *key).filter(|key| fields.get(key).is_none()).collect();
-    if !missing.is_empty() {
-        checker.error(node.span, format!("this transition lacks {}", missing.join(" and ")));
-    }
+    checker.needs(node, &fields, &TRANSITION, "transition");
     let from = fields.get("from").and_then(|node| mode_named(checker, node, modes));
     let to = fields.get("to").and_then(|node| mode_named(checker, node, modes));
     let takes = fields.get("takes").and_then(|node| checker.quantity(node, TIME));

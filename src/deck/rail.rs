@@ -1,7 +1,8 @@
 //! Rails: which nets a declaration means, and what the ends of its range are held against.
 
+use super::keys::VOLTAGE;
 use super::node::{Entry, Node, Shape};
-use super::value::{Checker, VOLTAGE, misfit, number_in};
+use super::value::{Checker, misfit, number_in};
 use crate::declared::{End, Rail};
 use crate::names::Glob;
 use crate::quantity::{Dim, parse_quantity};

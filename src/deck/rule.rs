@@ -1,7 +1,7 @@
 //! Rules: the program's own pages, changed by decks, and rules that teams write.
 
 use super::class::is_cleared;
-use super::keys::{EXAMPLES, RULE};
+use super::keys::{EXAMPLES, RULE, SEVERITIES};
 use super::node::{Entry, Node, Shape};
 use super::pages;
 use super::value::{Checker, Fields};
@@ -11,13 +11,6 @@ use crate::expr::{Template, Vocabulary};
 
 /// The words that rules about a subject may use.
 pub type Vocabularies<'a> = &'a dyn Fn(Subject) -> &'a dyn Vocabulary;
-
-const SEVERITIES: [(Severity, &str); 4] = [
-    (Severity::Error, "error"),
-    (Severity::Warning, "warning"),
-    (Severity::Note, "note"),
-    (Severity::Silent, "silent"),
-];
 
 /// The rules of a map, ordered by id. A rule that was cleared is left out.
 pub(crate) fn rules(checker: &mut Checker, node: &Node, classes: &[Class], vocabularies: Vocabularies) -> Vec<Rule> {
@@ -71,6 +64,7 @@ fn rule(
     let severity = severity(checker, &fields, "severity", Severity::Error);
     let unproven = self::severity(checker, &fields, "unproven", severity.min(Severity::Note));
     let say = template(checker, "say");
+    text(checker, &fields, "id");
     let rule = Rule {
         id: id.to_string(),
         place: entry.place,
@@ -105,7 +99,10 @@ fn well_named(checker: &mut Checker, entry: &Entry) -> Option<()> {
 }
 
 fn severity(checker: &mut Checker, fields: &Fields, key: &str, usual: Severity) -> Severity {
-    fields.get(key).and_then(|node| checker.word(node, "severity", &SEVERITIES)).unwrap_or(usual)
+    fields
+        .get(key)
+        .and_then(|node| checker.word(node, "severity", &SEVERITIES.map(|severity| (severity, severity.word()))))
+        .unwrap_or(usual)
 }
 
 fn text(checker: &mut Checker, fields: &Fields, key: &str) -> Option<String> {

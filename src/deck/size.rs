@@ -1,8 +1,8 @@
 //! How a class's sizes follow from the parameters of its cards.
 
-use super::keys::SIZE;
+use super::keys::{LENGTH, SIZE};
 use super::node::{Entry, Node};
-use super::value::{Checker, LENGTH, number_in};
+use super::value::{Checker, number_in};
 use crate::declared::Size;
 use crate::quantity::spice_number;
 

@@ -1,6 +1,6 @@
 //! Scalars get their meaning: texts, truth values, whole numbers, quantities with the dimension that their place asks for, ranges.
 
-use super::keys::Section;
+use super::keys::{Section, Wanted};
 use super::node::{Entry, Node, Shape, part_of};
 use crate::declared::Range;
 use crate::diag::Diagnostic;
@@ -33,24 +33,6 @@ impl<'t> Fields<'t> {
         self.entries.iter().find(|entry| entry.key == key && entry.value.shape != Shape::Empty)
     }
 }
-
-/// What kind of quantity a place asks for.
-#[derive(Clone, Copy)]
-pub(crate) struct Wanted {
-    dim: Dim,
-    words: &'static str,
-    example: &'static str,
-}
-
-pub(crate) const VOLTAGE: Wanted = Wanted { dim: Dim::VOLT, words: "a voltage", example: "5.5V" };
-pub(crate) const CURRENT: Wanted = Wanted { dim: Dim::AMPERE, words: "a current", example: "10uA" };
-pub(crate) const LENGTH: Wanted = Wanted { dim: Dim::METRE, words: "a length", example: "0.5um" };
-pub(crate) const TIME: Wanted = Wanted { dim: Dim::SECOND, words: "a time", example: "5ns" };
-pub(crate) const RATE: Wanted = Wanted { dim: Dim::HERTZ, words: "a frequency", example: "2MHz" };
-pub(crate) const POWER: Wanted = Wanted { dim: Dim::WATT, words: "a power", example: "500mW" };
-pub(crate) const DENSITY: Wanted = Wanted { dim: Dim::DENSITY, words: "a current per width", example: "3uA/um" };
-pub(crate) const DOPING: Wanted = Wanted { dim: Dim::DOPING, words: "a doping", example: "1e16/cm3" };
-pub(crate) const SHARE: Wanted = Wanted { dim: Dim::NONE, words: "a share of time", example: "1%" };
 
 /// Why a text is not the quantity that its place asks for.
 pub(crate) fn misfit(text: &str, wanted: Wanted) -> String {
@@ -127,12 +109,20 @@ impl Checker<'_> {
     pub(crate) fn fields<'t>(&mut self, node: &'t Node, section: &Section) -> Fields<'t> {
         let entries = self.map(node, section.name);
         for entry in entries {
-            if !section.keys.iter().any(|(key, _)| *key == entry.key) {
+            if !section.keys.iter().any(|key| key.name == entry.key) {
                 let message = format!("{} has no key `{}`", section.name, entry.key);
-                self.unknown(entry.place, message, &entry.key, section.keys.iter().map(|(key, _)| *key));
+                self.unknown(entry.place, message, &entry.key, section.keys.iter().map(|key| key.name));
             }
         }
         Fields { entries }
+    }
+
+    /// Complains about keys that a section cannot do without.
+    pub(crate) fn needs(&mut self, node: &Node, fields: &Fields, section: &Section, what: &str) {
+        let missing: Vec<&str> = section.needs.iter().copied().filter(|key| fields.get(key).is_none()).collect();
+        if !missing.is_empty() {
+            self.error(node.span, format!("this {what} lacks {}", missing.join(" and ")));
+        }
     }
 
     /// A scalar's text.

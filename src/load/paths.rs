@@ -9,7 +9,7 @@ pub(super) fn folder(path: &Path) -> PathBuf {
 }
 
 /// A path without `.`, and without `..` where a folder goes before it.
-pub(super) fn flat(path: &Path) -> PathBuf {
+pub fn flat(path: &Path) -> PathBuf {
     let mut out = PathBuf::new();
     for part in path.components() {
         match part {

@@ -19,7 +19,7 @@ use std::hash::Hash;
 use std::rc::Rc;
 
 /// At most so many surroundings of one device are looked at; the instances in the others are counted as not looked at.
-pub const MOST_SURROUNDINGS: usize = 4096;
+pub const MOST_SURROUNDINGS: usize = 64;
 
 /// Walks that know this many devices, or more of them than this, are given up for new ones: what they know costs memory.
 const MOST_KNOWN: usize = 100_000;
@@ -134,7 +134,7 @@ impl Surroundings {
     pub fn next(&mut self, ground: &Roles<'_>, now: Standing, above: bool) -> Option<Standing> {
         if above {
             let parents = &ground.reach.get(now.anchor).parents;
-            let room = MOST_SURROUNDINGS.saturating_sub(self.met);
+            let room = if ground.is_worn_out() { 0 } else { MOST_SURROUNDINGS.saturating_sub(self.met) };
             if parents.len() > room {
                 let seen: u64 = parents[..room].iter().map(|&(parent, _)| ground.reach.get(parent).count).sum();
                 self.cut = true;
@@ -424,8 +424,9 @@ impl<'w> Walker<'w> {
             |walker| &mut walker.touching,
             top,
             |walker| {
-                let mut found = Vec::new();
-                let complete = walker.gather(top, &mut found, &mut 0);
+                let (mut found, mut steps) = (Vec::new(), 0);
+                let complete = !walker.ground.is_worn_out() && walker.gather(top, &mut found, &mut steps);
+                walker.ground.works(steps as u64 + 1);
                 if !complete {
                     walker.crowded = Some(top);
                 }
