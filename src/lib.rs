@@ -7,7 +7,7 @@
 //! and elaborated by [`design`] into a hierarchy whose surroundings [`graph`] tells apart. [`reach`] works out which voltages each
 //! net can have. Rules ask all of that through [`facts`], and stand in decks ([`deck`], [`catalogue`]); [`engine`] asks them.
 //! [`pipeline`] is the whole program as one function; [`survey`], [`tracing`], [`init`] and [`reference`] are what the other
-//! commands show, [`cli`] the command line.
+//! commands show, [`serve`] talks to editors, [`cli`] is the command line.
 //!
 //! A module may only use modules above it in this list; `tests/layers.rs` holds the floors.
 #![warn(missing_docs)]
@@ -51,5 +51,7 @@ pub mod init;
 pub mod reference;
 pub mod survey;
 pub mod tracing;
+
+pub mod serve;
 
 pub mod cli;
