@@ -5,6 +5,7 @@
 mod output;
 mod progress;
 
+use crate::changed::{self, Task};
 use crate::deck::{load_decks, schema};
 use crate::diag::Severity;
 use crate::facts::vocabulary::vocabulary;
@@ -37,6 +38,8 @@ Exit codes: 0 nothing at or above --fail-on, 1 findings, 2 the job could not be 
 enum Command {
     /// Judges netlists by the rules of their decks
     Lint(Lint),
+    /// Judges the designs that changed files take part in, each once: for hooks that run before a commit
+    Changed(Changed),
     /// Shows which voltages a net can have, and the chain of devices that gives them
     Trace(Trace),
     /// Shows what is in a netlist: classes, unmatched models, rails found and missing
@@ -105,6 +108,30 @@ struct Lint {
     /// The day against which waivers are held, as 2027-03-01 (default: today, UTC)
     #[arg(long, value_name = "DATE", value_parser = date)]
     today: Option<Date>,
+}
+
+#[derive(Debug, Args)]
+struct Changed {
+    /// Netlists and decks that changed; each is judged with its nearest drainwise.yaml, or as part of the design that this names
+    #[arg(required = true)]
+    files: Vec<PathBuf>,
+    /// How to write the reports
+    #[arg(long, value_enum, default_value_t = Lines::Text)]
+    format: Lines,
+    /// Fail (exit code 1) if a finding is at least this grave
+    #[arg(long, value_enum, value_name = "LEVEL", default_value_t = Level::Error)]
+    fail_on: Level,
+}
+
+/// The formats of which several reports may follow one another.
+#[derive(Clone, Copy, Debug, ValueEnum)]
+enum Lines {
+    /// Pictures of the places, for people
+    Text,
+    /// One line a finding
+    Short,
+    /// Annotations of GitHub Actions, as lines of a job's output
+    Github,
 }
 
 #[derive(Debug, Args)]
@@ -227,6 +254,7 @@ pub fn run() -> u8 {
     };
     let result = match cli.command {
         Command::Lint(lint) => run_lint(lint),
+        Command::Changed(changed) => run_changed(&changed),
         Command::Trace(trace) => run_trace(trace),
         Command::Survey(survey) => run_survey(survey),
         Command::Rules(rules) => run_rules(&rules),
@@ -267,6 +295,38 @@ fn run_lint(lint: Lint) -> io::Result<u8> {
     output.finish()?;
     std::mem::forget(outcome);
     Ok(setting.exit_code)
+}
+
+fn run_changed(args: &Changed) -> io::Result<u8> {
+    let spinner = Spinner::new();
+    let tasks = changed::tasks(&Disk, &args.files, &spinner);
+    let format = match args.format {
+        Lines::Text => Format::Text,
+        Lines::Short => Format::Short,
+        Lines::Github => Format::Github,
+    };
+    let mut output = Output::open(None)?;
+    let look = output.look();
+    let mut worst = 0;
+    for task in &tasks {
+        let outcome = match (task.job(), task) {
+            (Some(job), _) => pipeline::lint(&Disk, &job, &spinner),
+            (None, Task::Deck(deck)) => {
+                let job = Job { decks: vec![deck.clone()], ..Job::default() };
+                pipeline::read_decks(&Disk, &job).1
+            }
+            (None, _) => continue,
+        };
+        let setting = Setting { base: pipeline::base(&Disk), exit_code: exit_code(&outcome, args.fail_on.severity()) };
+        worst = worst.max(setting.exit_code);
+        // A deck in order needs no words.
+        if task.job().is_some() || !outcome.report.diagnostics.is_empty() {
+            output.write(|out| write(&outcome, format, &setting, look, out))?;
+        }
+    }
+    spinner.finish();
+    output.finish()?;
+    Ok(worst)
 }
 
 /// A baseline that cannot be written is said on standard error; the report follows all the same.

@@ -274,9 +274,15 @@ fn judge(world: World<'_>, mut seen: Seen, job: &Job) -> (Report, bool) {
     diagnostics.extend(hygiene.into_iter().filter_map(|diagnostic| engine::adopt(diagnostic, &rules)));
     let judged = engine::judge(world, &rules);
     diagnostics.extend(judged.findings);
+    if world.roles.is_worn_out() {
+        summary
+            .not_looked_at
+            .push("roles of many devices: recognition gave up, since the design has too many structures".to_owned());
+    }
     if world.roles.unseen() > 0 {
         let (unseen, most) = (world.roles.unseen(), MOST_SURROUNDINGS);
-        let line = format!("roles of {unseen} instances: their cell stands in more than {most} different surroundings");
+        let line =
+            format!("roles of up to {unseen} instances of one cell, which stands in more than {most} surroundings");
         summary.not_looked_at.push(line);
     }
     diagnostics.extend(engine::hygiene(world.design, world.contexts, world.deck, &rules, summary.devices));
@@ -476,6 +482,12 @@ pub fn base(files: &dyn Files) -> Base {
     let Some(here) = files.here() else { return Base::default() };
     let root = here.ancestors().find(|folder| files.exists(&folder.join(".git"))).unwrap_or(&here).to_owned();
     Base::new(root, here)
+}
+
+/// The deck that a netlist belongs to: the nearest `drainwise.yaml` upward.
+pub fn deck_of(files: &dyn Files, netlist: &Path) -> Option<PathBuf> {
+    let job = Job { netlists: vec![netlist.to_owned()], ..Job::default() };
+    nearest_deck(files, &job).into_iter().next()
 }
 
 /// The nearest `drainwise.yaml` upward from the first netlist, or from here.

@@ -5,7 +5,7 @@
 //! `mutations.tsv`: name, old line, new line, expected rows. An old or new text may be several lines, parted by `\n`: each new line
 //! stands in place of its old one, what is over stands at the last, and old lines without a new one go. `none` as the
 //! expected rows says that the change is a sound one. Names that begin with `roles-` need what recognises structures and
-//! currents, and only have to be readable here.
+//! currents.
 
 // Helpers of a test may fail as loudly as the test itself.
 #![allow(clippy::unwrap_used, clippy::panic)]
@@ -33,7 +33,7 @@ struct Mutation {
 #[test]
 fn sound_circuits_are_left_in_peace_and_mistakes_are_found() {
     let mut faults = Vec::new();
-    let (mut run, mut sound_changes, mut later) = (0, 0, 0);
+    let (mut run, mut sound_changes, mut roles) = (0, 0, 0);
     let folders = topologies();
     for folder in &folders {
         let name = folder.file_name().unwrap().to_string_lossy().into_owned();
@@ -46,10 +46,7 @@ fn sound_circuits_are_left_in_peace_and_mistakes_are_found() {
             let copy = tempfile::tempdir().unwrap();
             let changed = mutated(folder, copy.path(), &mutation, &place);
             let found = violated(&place, &lint_in(&changed), &mut faults);
-            if mutation.name.starts_with("roles-") {
-                later += 1;
-                continue;
-            }
+            roles += usize::from(mutation.name.starts_with("roles-"));
             run += 1;
             if mutation.expected.is_empty() {
                 sound_changes += 1;
@@ -68,7 +65,7 @@ fn sound_circuits_are_left_in_peace_and_mistakes_are_found() {
         }
     }
     println!(
-        "{} topologies; {run} mutations run, {sound_changes} of them sound changes; {later} wait for roles and currents",
+        "{} topologies; {run} mutations run, {sound_changes} of them sound changes; {roles} need roles or currents",
         folders.len()
     );
     assert!(faults.is_empty(), "\n{}", faults.join("\n"));

@@ -9,6 +9,7 @@
 //! of the magnitude. A ratio leaves out what the drain's voltage adds (channel-length modulation): exact means as exact as a
 //! designer's own ratio. A reference or output with a resistor in its source gives bounds alone.
 
+mod limits;
 mod narrow;
 mod sums;
 
@@ -194,6 +195,10 @@ impl<'c, 'w> Currents<'c, 'w> {
             }
             let current = self.ask(Question { unit: other, by_nets_alone: true });
             let Some(mut current) = current else { continue };
+            // What bounds an output's current may be its load: the mirror would drive more, and drives the others with that.
+            if !current.exact && !mirror.references.contains(&other) {
+                continue;
+            }
             let ratio = own.1 / its;
             current.amps *= ratio;
             current.exact &= sources == Sources::Joined;

@@ -55,10 +55,10 @@ impl Currents<'_, '_> {
                 (-own * left).max(0.0)
             }
             // Those that run the channel's own way only take from the others.
-            all => {
-                let against = |part: &&Part| part.way != Some(own) || !part.current.exact;
-                all.iter().filter(against).map(|part| part.current.amps).sum()
+            all if all.iter().any(|part| part.way != Some(own)) => {
+                all.iter().filter(|part| part.way != Some(own)).map(|part| part.current.amps).sum()
             }
+            all => all.iter().map(|part| part.current.amps).sum(),
         };
         let exact = exact && (parts.len() == 1 || parts.iter().all(|part| part.way.is_some()));
         parts.sort_by(|a, b| b.current.amps.total_cmp(&a.current.amps));

@@ -3,7 +3,7 @@
 use super::finding::{in_cell, word};
 use super::fold::{Folded, Folds};
 use super::verdict::{Asked, ask};
-use crate::declared::{Rule, Subject};
+use crate::declared::{Kind, Rule, Subject};
 use crate::design::DeviceIx;
 use crate::diag::Diagnostic;
 use crate::facts::{DeviceView, Evidence, GroupView, World};
@@ -51,16 +51,16 @@ pub(super) fn judge(world: World<'_>, rules: &[&Rule], subject: Subject, asked: 
     folds.all.into_iter().filter_map(|folded| of_group(world, rules, subject, folded)).collect()
 }
 
-/// Whether a glance at its gate's net leaves it possible that a device belongs to such a structure.
+/// Whether a glance leaves it possible that a device belongs to such a structure.
 fn may_be(world: World<'_>, at: ReachIx, device: DeviceIx, subject: Subject) -> bool {
-    if subject != Subject::Mirror {
-        return true;
-    }
     let template = world.design.template(world.context(at).variant);
     let Some(class) = world.design.class(template, device) else { return false };
-    let Some(gate) = class.pin("g").and_then(|pin| template.device_pins(device).get(pin)) else { return false };
-    let gates = world.roles.gates(world.reach.get(at).context, *gate);
-    gates.shared && gates.reference
+    let net = |pin: &str| class.pin(pin).and_then(|pin| template.device_pins(device).get(pin)).copied();
+    let (context, n) = (world.reach.get(at).context, class.kind == Kind::Nmos);
+    match subject {
+        Subject::Mirror => net("g").is_some_and(|gate| world.roles.may_mirror(context, gate, n)),
+        _ => net("s").is_some_and(|source| world.roles.may_pair(context, source, n)),
+    }
 }
 
 fn group<'w>(subject: Subject, view: DeviceView<'w>) -> Result<GroupView<'w>, Box<DeviceView<'w>>> {

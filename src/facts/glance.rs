@@ -246,22 +246,29 @@ impl Glance<'_> {
         (self.upright(0, g, s).hi <= least).then_some(Truth::Yes)
     }
 
-    /// A gate's net that no other gate shares, or that nothing could make a reference's, belongs to no mirror; unless it is a bias.
+    /// A gate's net without a second gate or a possible reference belongs to no mirror; unless it is a bias.
     fn is_mirrored(&self) -> Option<Truth> {
         let gate = self.net(self.shape.g)?;
-        let Cells { world, at, here, .. } = self.around;
-        let gates = world.roles.gates(here.context, gate);
-        let rail = world.marks_of(at, gate).iter().any(|mark| matches!(mark, Mark::Rail(_)));
-        (!rail && !(gates.shared && gates.reference)).then_some(Truth::No)
+        let Cells { world, here, .. } = self.around;
+        let n = self.shape.class.kind == Kind::Nmos;
+        let rail = self.is_rail(gate) || self.modes().any(|mode| world.reach.is_rail(self.around.at, mode, gate));
+        (!rail && !world.roles.may_mirror(here.context, gate, n)).then_some(Truth::No)
     }
 
-    /// A pair's source is no rail, and a gain stage's drain is none.
+    /// A pair's source is no rail and bears a second one; a gain stage's drain is none and bears a load, its gate is none.
     fn is_amplifying(&self) -> Option<Truth> {
+        let (d, g, s) = (self.net(self.shape.d)?, self.net(self.shape.g)?, self.net(self.shape.s)?);
+        let Cells { world, here, .. } = self.around;
+        let (roles, at, n) = (world.roles, here.context, self.shape.class.kind == Kind::Nmos);
+        let pair = !self.is_rail(s) && roles.may_pair(at, s, n);
+        let held = self.modes().any(|mode| world.reach.is_rail(self.around.at, mode, s));
+        let based = held || self.is_rail(s) || roles.may_resist(at, s);
+        let gain = based && !self.is_rail(d) && !self.is_rail(g) && roles.may_gain(at, d, n);
+        (!pair && !gain).then_some(Truth::No)
+    }
+
+    fn is_rail(&self, net: NetIx) -> bool {
         let Cells { world, at, .. } = self.around;
-        let rail = |pin| {
-            let net = self.net(pin)?;
-            Some(world.marks_of(at, net).iter().any(|mark| matches!(mark, Mark::Rail(_))))
-        };
-        (rail(self.shape.d)? && rail(self.shape.s)?).then_some(Truth::No)
+        world.marks_of(at, net).iter().any(|mark| matches!(mark, Mark::Rail(_)))
     }
 }

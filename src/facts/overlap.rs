@@ -7,6 +7,7 @@ use crate::declared::{Kind, OnState, Transition};
 use crate::expr::Value;
 use crate::quantity::{Dim, show, show_percent};
 use crate::reach::Interval;
+use crate::roles::Touch;
 
 /// What a device does in one mode.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -92,7 +93,8 @@ impl DeviceView<'_> {
         for (mode, state) in states.iter().enumerate().filter(|(_, state)| state.on && state.high) {
             let density = self.density();
             let exact = density.is_some() && self.current().is_some_and(|current| current.exact);
-            if state.surely_on && state.surely_high || exact && self.works_all_the_time() {
+            let surely_on = state.surely_on || state.surely_high && self.pulls_on_resistors(mode);
+            if surely_on && state.surely_high || exact && self.works_all_the_time() {
                 self.note_mode(mode, state, density, limits);
                 self.note_current();
                 return Verdict::Broken;
@@ -107,6 +109,36 @@ impl DeviceView<'_> {
             }
         }
         answer
+    }
+
+    /// Whether its source hangs on rails by resistors alone, all of which its gate surely passes by more than a threshold: then it
+    /// conducts, wherever between its source settles.
+    fn pulls_on_resistors(&self, mode: usize) -> bool {
+        let own = self.unit();
+        let mut walker = self.walk().borrow_mut();
+        let Some(mos) = walker.mos(own) else { return false };
+        let Some(most) = self.class.threshold.map(|threshold| threshold.hi) else { return false };
+        if walker.is_rail(mos.s) || walker.leads_out(mos.s) {
+            return false;
+        }
+        let mut held = false;
+        for on in walker.each_on(mos.s).iter().filter(|on| on.unit != own) {
+            match on.touch {
+                Touch::Gate { .. } | Touch::Capacitor | Touch::Nothing => {}
+                Touch::Resistor => {
+                    let Some(far) = walker.other_end(on.unit, mos.s).filter(|&far| walker.is_rail(far)) else {
+                        return false;
+                    };
+                    let drive = walker.volts(mode, mos.g, far);
+                    held = if mos.n { drive.lo > most } else { drive.hi < -most };
+                    if !held {
+                        return false;
+                    }
+                }
+                _ => return false,
+            }
+        }
+        held
     }
 
     fn note_mode(&self, mode: usize, state: &ModeState, density: Option<f64>, limits: &OnState) {

@@ -109,6 +109,9 @@ impl<'w> DeviceView<'w> {
     fn unless_crowded(&self) -> Value {
         let walk = self.walk().borrow();
         match walk.crowded() {
+            Some(_) if self.world.roles.is_worn_out() => {
+                self.unknown("the design has so many structures that recognition gave up before this one")
+            }
             Some(net) => self.unknown(format!(
                 "more than {} pins stand on net `{}`, so that nobody looked at all of them",
                 crate::roles::MOST_PINS,
@@ -121,6 +124,17 @@ impl<'w> DeviceView<'w> {
     /// The path of a device that was met on the walk.
     pub fn path_of(&self, unit: Unit) -> String {
         self.walk().borrow().unit_path(unit)
+    }
+
+    /// How to call a device that was met on the walk: by its own name where it stands beside this one, else by its path.
+    fn name_of(&self, other: Unit) -> String {
+        let unit = self.unit();
+        let walk = self.walk().borrow();
+        if other.spot != unit.spot {
+            return walk.unit_path(other);
+        }
+        let template = self.design().template(walk.context(other.spot).variant);
+        self.design().device_name(template, other.device).to_owned()
     }
 
     /// The place of the name of a device that was met on the walk.
@@ -148,7 +162,7 @@ impl<'w> DeviceView<'w> {
             return Value::Bool(true);
         }
         let partners = match others.first() {
-            Some(&first) => format!("its {their} is {}{}", self.path_of(first), and_more(others.len() - 1)),
+            Some(&first) => format!("its {their} is {}{}", self.name_of(first), and_more(others.len() - 1)),
             None => {
                 let gate = self.class.pin("g").map_or("", |pin| self.net_text(pin));
                 format!("its gate is the bias `{gate}`, whose reference stands outside")
@@ -181,7 +195,7 @@ impl<'w> DeviceView<'w> {
             Role::Pair => "half of a differential pair",
             _ => "a common-source gain stage",
         };
-        let names: Vec<String> = with.iter().take(MOST_LABELS).map(|&unit| self.path_of(unit)).collect();
+        let names: Vec<String> = with.iter().take(MOST_LABELS).map(|&unit| self.name_of(unit)).collect();
         let partners = match role {
             Role::Pair => format!("it shares its source with {}", names.join(", ")),
             _ => format!("its drain is loaded by {}", names.join(", ")),
@@ -282,7 +296,7 @@ impl<'w> DeviceView<'w> {
         let Some(current) = self.current() else { return Vec::new() };
         let line = |step: &Step| {
             let amps = show(step.amps, Dim::AMPERE);
-            let name = step.unit.map(|unit| self.path_of(unit)).unwrap_or_default();
+            let name = step.unit.map(|unit| self.name_of(unit)).unwrap_or_default();
             let place = step.place.or_else(|| self.place_of(step.unit?));
             let words = match step.by {
                 By::Declared => format!("{amps} is declared here"),

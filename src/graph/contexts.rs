@@ -100,6 +100,23 @@ impl Contexts {
         (0..self.all.len() as u32).map(ContextIx)
     }
 
+    /// All contexts, each after those that it leads to (Kahn).
+    pub fn callees_first(&self) -> Vec<ContextIx> {
+        let mut open: Vec<u32> = self.all.iter().map(|context| context.children.len() as u32).collect();
+        let mut ready: Vec<ContextIx> = self.indices().filter(|at| open[at.0 as usize] == 0).collect();
+        let mut order = Vec::with_capacity(open.len());
+        while let Some(at) = ready.pop() {
+            order.push(at);
+            for &(above, _) in &self.get(at).parents {
+                open[above.0 as usize] -= 1;
+                if open[above.0 as usize] == 0 {
+                    ready.push(above);
+                }
+            }
+        }
+        order
+    }
+
     /// What a net is known as.
     pub fn marks_of(&self, at: ContextIx, net: NetIx) -> &[Mark] {
         self.marks.of(self.get(at).mark_set(net))

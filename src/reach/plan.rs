@@ -108,7 +108,7 @@ impl Plans {
     pub(super) fn new(ground: Ground<'_>) -> Plans {
         let mut plans = Plans { all: Vec::new() };
         plans.all.resize_with(ground.contexts.all.len(), Plan::default);
-        for at in callees_first(ground.contexts) {
+        for at in ground.contexts.callees_first() {
             let plan = Maker::new(ground, at).make(&plans);
             plans.all[at.0 as usize] = plan;
         }
@@ -118,22 +118,6 @@ impl Plans {
     pub(super) fn get(&self, at: ContextIx) -> &Plan {
         &self.all[at.0 as usize]
     }
-}
-
-fn callees_first(contexts: &Contexts) -> Vec<ContextIx> {
-    let mut open: Vec<u32> = contexts.all.iter().map(|context| context.children.len() as u32).collect();
-    let mut ready: Vec<ContextIx> = contexts.indices().filter(|at| open[at.0 as usize] == 0).collect();
-    let mut order = Vec::with_capacity(open.len());
-    while let Some(at) = ready.pop() {
-        order.push(at);
-        for &(above, _) in &contexts.get(at).parents {
-            open[above.0 as usize] -= 1;
-            if open[above.0 as usize] == 0 {
-                ready.push(above);
-            }
-        }
-    }
-    order
 }
 
 struct Maker<'m> {

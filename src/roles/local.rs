@@ -1,5 +1,6 @@
 //! What recognition looks up again and again: for each context what stands on which net, for each rail whether it is a supply.
 
+use super::summary::{self, Bits, Summary};
 use crate::declared::Deck;
 use crate::design::{Design, Element, NetIx};
 use crate::graph::{ContextIx, Mark, PinTable, RailSlot};
@@ -11,6 +12,11 @@ use std::sync::atomic::{AtomicU64, Ordering};
 /// Nets with more pins than this (in one cell, or in all) are not walked: no structure of the kind that is looked for has as many.
 pub const MOST_PINS: usize = 1000;
 
+/// All questions of a run together walk at most so many pins, and so many for each pin of a context: the work grows with the design, whatever
+/// its structure.
+const LEAST_WORK: u64 = 2_000_000;
+const WORK_PER_PIN: u64 = 4;
+
 /// The ground of recognition: nothing in it is computed before somebody asks.
 pub struct Roles<'r> {
     /// Voltages, with the design and its contexts.
@@ -18,16 +24,10 @@ pub struct Roles<'r> {
     pub(super) terminals: Vec<Terminals>,
     locals: Vec<OnceLock<Local>>,
     supplies: OnceLock<HashSet<RailSlot>>,
+    summary: OnceLock<Summary>,
     unseen: AtomicU64,
-}
-
-/// Which gates stand on a net of a context, as far as its own devices say.
-#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
-pub struct Gates {
-    /// Two or more of one polarity.
-    pub shared: bool,
-    /// A device whose drain may lead to its gate: one with both on the net, or something that a chain could pass through.
-    pub reference: bool,
+    work: AtomicU64,
+    most_work: u64,
 }
 
 /// What stands on the nets of one context. Nets are roots throughout.
@@ -35,17 +35,9 @@ pub(super) struct Local {
     pub(super) pins: PinTable,
     /// Boundary nets and their positions, sorted by net; of several positions on one net, the first.
     positions: Vec<(NetIx, u32)>,
-    /// For each net, the marks below.
-    flags: Vec<u8>,
+    /// Nets on which bodies or sources of the cell's own devices stand.
+    supplies: Vec<bool>,
 }
-
-const N_GATE: u8 = 1;
-const N_GATES: u8 = 2;
-const P_GATE: u8 = 4;
-const P_GATES: u8 = 8;
-const DIODE: u8 = 16;
-const PASSES: u8 = 32;
-const SUPPLIES: u8 = 64;
 
 impl Local {
     /// The boundary position of a net.
@@ -55,7 +47,7 @@ impl Local {
 
     /// Whether bodies or sources of the cell's own devices stand on a net.
     pub(super) fn supplies(&self, net: NetIx) -> bool {
-        self.flags[net.0 as usize] & SUPPLIES != 0
+        self.supplies[net.0 as usize]
     }
 }
 
@@ -65,7 +57,19 @@ impl<'r> Roles<'r> {
         let mut locals = Vec::new();
         locals.resize_with(reach.contexts.all.len(), OnceLock::new);
         let terminals = terminals(reach.design);
-        Roles { reach, terminals, locals, supplies: OnceLock::new(), unseen: AtomicU64::new(0) }
+        let pins: usize =
+            reach.contexts.all.iter().map(|context| reach.design.template(context.variant).pins.len()).sum();
+        let most_work = LEAST_WORK + WORK_PER_PIN * pins as u64;
+        Roles {
+            reach,
+            terminals,
+            locals,
+            supplies: OnceLock::new(),
+            summary: OnceLock::new(),
+            unseen: AtomicU64::new(0),
+            work: AtomicU64::new(0),
+            most_work,
+        }
     }
 
     /// The design.
@@ -83,6 +87,15 @@ impl<'r> Roles<'r> {
         self.unseen.load(Ordering::Relaxed)
     }
 
+    /// Whether so many pins were walked that recognition gives up: what is asked from then on is unknown.
+    pub fn is_worn_out(&self) -> bool {
+        self.work.load(Ordering::Relaxed) >= self.most_work
+    }
+
+    pub(super) fn works(&self, pins: u64) {
+        self.work.fetch_add(pins, Ordering::Relaxed);
+    }
+
     pub(super) fn leave_unseen(&self, instances: u64) {
         self.unseen.fetch_max(instances, Ordering::Relaxed);
     }
@@ -97,57 +110,52 @@ impl<'r> Roles<'r> {
         let mut positions: Vec<(NetIx, u32)> = template.boundary().map(|net| context.root(net)).zip(0..).collect();
         positions.sort_unstable();
         positions.dedup_by_key(|&mut (net, _)| net);
-        let mut flags = vec![0; template.nets.len()];
+        let mut supplies = vec![false; template.nets.len()];
         for device in template.devices() {
-            let pins = template.device_pins(device);
-            let mut raise = |pin: u8, flag: u8| {
-                if let Some(&net) = pins.get(pin as usize) {
-                    flags[context.root(net).0 as usize] |= flag;
-                }
-            };
             let kind = template.types[device.0 as usize];
-            match self.terminals[kind.0 as usize] {
-                Terminals::Mos { d, g, s, b, n, .. } => {
-                    raise(s, SUPPLIES);
-                    b.into_iter().for_each(|b| raise(b, SUPPLIES));
-                    let (one, two) = if n { (N_GATE, N_GATES) } else { (P_GATE, P_GATES) };
-                    let (drain, source) = (context.root(pins[d as usize]), context.root(pins[s as usize]));
-                    let gate = context.root(pins[g as usize]);
-                    let on_gate = &mut flags[gate.0 as usize];
-                    *on_gate |= if *on_gate & one != 0 { two } else { one };
-                    if gate == drain || gate == source {
-                        flags[gate.0 as usize] |= DIODE;
-                    }
-                    // A cascode's drain, or a follower's source, may bring a drain back to this net.
-                    for (net, other) in [(drain, source), (source, drain)] {
-                        if context.mark_set(other) == crate::graph::MarkSet(0) {
-                            flags[net.0 as usize] |= PASSES;
-                        }
-                    }
-                    flags[source.0 as usize] |= PASSES;
+            if let Terminals::Mos { s, b, .. } = self.terminals[kind.0 as usize] {
+                let pins = template.device_pins(device);
+                for pin in [Some(s), b].into_iter().flatten() {
+                    supplies[context.root(pins[pin as usize]).0 as usize] = true;
                 }
-                Terminals::Through { a, b, resistor: true } => {
-                    raise(a, PASSES);
-                    raise(b, PASSES);
-                }
-                _ => {}
             }
         }
-        Local { pins: PinTable::rooted(template, &|net| context.root(net), MOST_PINS), positions, flags }
+        Local { pins: PinTable::rooted(template, &|net| context.root(net), MOST_PINS), positions, supplies }
     }
 
-    /// What gates stand on a net of a context, by a glance that costs nothing: enough to leave most nets alone. A net that leads
-    /// out of the cell or into an instance may have more.
-    pub fn gates(&self, at: ContextIx, net: NetIx) -> Gates {
-        let (local, context) = (self.local(at), self.reach.contexts.get(at));
-        let root = context.root(net);
-        let flags = local.flags[root.0 as usize];
-        let elsewhere = local.position(root).is_some()
-            || local.pins.on(root).any(|pin| matches!(pin, crate::graph::Pin::Instance(..)));
-        Gates {
-            shared: elsewhere || flags & (N_GATES | P_GATES) != 0,
-            reference: elsewhere || flags & (DIODE | PASSES) != 0,
-        }
+    fn bits(&self, at: ContextIx, net: NetIx) -> Bits {
+        let root = self.reach.contexts.get(at).root(net);
+        self.summary.get_or_init(|| Summary::new(self)).of(at, root)
+    }
+
+    /// Whether a device may belong to a mirror with its reference in the netlist, by a glance at its gate's net. `n`: its polarity.
+    pub fn may_mirror(&self, at: ContextIx, gate: NetIx, n: bool) -> bool {
+        let wanted = summary::of(n, summary::GATES | summary::REFERENCE);
+        self.bits(at, gate) & wanted == wanted
+    }
+
+    /// Whether a device may be half of a pair, by a glance at its source's net.
+    pub fn may_pair(&self, at: ContextIx, source: NetIx, n: bool) -> bool {
+        self.bits(at, source) & summary::of(n, summary::SOURCES) != 0
+    }
+
+    /// Whether a device may be a common-source stage, by a glance at its drain's net: something may load it, or stand on it as a cascode.
+    pub fn may_gain(&self, at: ContextIx, drain: NetIx, n: bool) -> bool {
+        let loads =
+            summary::RESISTOR | summary::CURRENT | summary::of(!n, summary::DRAIN) | summary::of(n, summary::SOURCE);
+        self.bits(at, drain) & loads != 0
+    }
+
+    /// Whether resistors may stand on a net.
+    pub fn may_resist(&self, at: ContextIx, net: NetIx) -> bool {
+        self.bits(at, net) & summary::RESISTOR != 0
+    }
+
+    /// Whether all that pulls a net may have a known current: channels or sources, and nothing that conducts in a way of its own.
+    pub fn may_be_held(&self, at: ContextIx, net: NetIx) -> bool {
+        let bits = self.bits(at, net);
+        let pulls = summary::of(true, summary::DRAIN) | summary::of(false, summary::DRAIN) | summary::CURRENT;
+        bits & pulls != 0 && bits & summary::OTHER == 0
     }
 
     /// Whether bodies or sources stand on some net that this declaration names.

@@ -22,11 +22,12 @@ mod local;
 mod mirror;
 mod pair;
 mod sense;
+mod summary;
 mod switch;
 mod walk;
 
 pub use drive::Use;
-pub use local::{Gates, MOST_PINS, Roles};
+pub use local::{MOST_PINS, Roles};
 pub use mirror::{Member, Mirror};
 pub use pair::Pair;
 pub use walk::{

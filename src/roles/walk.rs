@@ -11,6 +11,7 @@ use super::{Role, Use};
 use crate::declared::{Class, Kind};
 use crate::design::{DeviceIx, Element, InstanceIx, NetIx, Sizes};
 use crate::graph::{Context, Mark, Pin};
+use crate::names::Sym;
 use crate::reach::{Interval, ReachIx, Terminals};
 use hashbrown::{HashMap, HashSet};
 use std::cell::RefCell;
@@ -18,7 +19,7 @@ use std::hash::Hash;
 use std::rc::Rc;
 
 /// At most so many surroundings of one device are looked at; the instances in the others are counted as not looked at.
-pub const MOST_SURROUNDINGS: usize = 4096;
+pub const MOST_SURROUNDINGS: usize = 64;
 
 /// Walks that know this many devices, or more of them than this, are given up for new ones: what they know costs memory.
 const MOST_KNOWN: usize = 100_000;
@@ -133,7 +134,7 @@ impl Surroundings {
     pub fn next(&mut self, ground: &Roles<'_>, now: Standing, above: bool) -> Option<Standing> {
         if above {
             let parents = &ground.reach.get(now.anchor).parents;
-            let room = MOST_SURROUNDINGS.saturating_sub(self.met);
+            let room = if ground.is_worn_out() { 0 } else { MOST_SURROUNDINGS.saturating_sub(self.met) };
             if parents.len() > room {
                 let seen: u64 = parents[..room].iter().map(|&(parent, _)| ground.reach.get(parent).count).sum();
                 self.cut = true;
@@ -189,6 +190,9 @@ pub(super) struct Found<T> {
     crowded: Option<Net>,
 }
 
+/// A device and its width, metres.
+type Width = (Unit, f64);
+
 /// A walk from one context.
 pub struct Walker<'w> {
     /// What it looks up.
@@ -207,7 +211,7 @@ pub struct Walker<'w> {
     pub(super) gates: HashMap<(Net, bool), Found<Rc<super::mirror::Gates>>>,
     pub(super) beside: HashMap<(Net, Net, bool), Found<Rc<super::mirror::Beside>>>,
     pub(super) mirrors: HashMap<(Net, Net, bool), Found<Rc<super::mirror::Group>>>,
-    pub(super) widest: HashMap<(Net, Net, u32), Found<Option<(Unit, f64)>>>,
+    pub(super) widest: HashMap<(Net, Net, u32), Found<Option<Width>>>,
 }
 
 impl<'w> Walker<'w> {
@@ -420,8 +424,9 @@ impl<'w> Walker<'w> {
             |walker| &mut walker.touching,
             top,
             |walker| {
-                let mut found = Vec::new();
-                let complete = walker.gather(top, &mut found, &mut 0);
+                let (mut found, mut steps) = (Vec::new(), 0);
+                let complete = !walker.ground.is_worn_out() && walker.gather(top, &mut found, &mut steps);
+                walker.ground.works(steps as u64 + 1);
                 if !complete {
                     walker.crowded = Some(top);
                 }
@@ -553,6 +558,12 @@ impl<'w> Walker<'w> {
     pub fn class(&self, unit: Unit) -> Option<&'w Class> {
         let template = self.ground.design().template(self.context(unit.spot).variant);
         self.ground.design().class(template, unit.device)
+    }
+
+    /// The model on a device's card.
+    pub fn model(&self, unit: Unit) -> Option<Sym> {
+        let template = self.ground.design().template(self.context(unit.spot).variant);
+        self.ground.design().device_type(template, unit.device).model
     }
 
     /// A MOS transistor with its nets; none where the device is none.

@@ -206,6 +206,12 @@ impl Builder {
         self.plain(format!("d{n} {a} {k} zg5"));
     }
 
+    /// Only on nets that a resistor holds: what floats with a capacitor on it looks driven.
+    pub(crate) fn cap(&mut self, a: &str, b: &str) {
+        let n = self.number();
+        self.plain(format!("c{n} {a} {b} 1p"));
+    }
+
     pub(crate) fn npn(&mut self, c: &str, b: &str, e: &str) {
         let n = self.number();
         self.plain(format!("q{n} {c} {b} {e} qn"));

@@ -18,7 +18,9 @@ mod analog;
 mod bench;
 mod builder;
 mod compare;
+mod limited;
 mod logic;
+mod narrowed;
 mod patterns;
 mod power;
 mod rails;
@@ -147,6 +149,8 @@ fn reaches_hold(circuits: u64, memory: bool) -> Option<Figures> {
         Ok(reaches) => {
             let escapes = compare::compare(case, &reaches, figures);
             compare::widths(case, Some(&reaches), figures);
+            let file = |end: &str| folder.join(format!("c{}.{end}", case.seed));
+            narrowed::count(case, &reaches, &file("sp"), &file("yaml"), figures);
             if escapes == 0 && figures.trouble.is_empty() {
                 tidy(case.seed, &folder);
             }

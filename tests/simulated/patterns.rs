@@ -3,7 +3,7 @@
 use crate::builder::{Builder, Pol};
 use crate::rails::{self, DomainKind};
 use crate::rng::Rng;
-use crate::{analog, logic, power};
+use crate::{analog, limited, logic, power};
 
 /// Which domains a pattern may stand in.
 #[derive(Clone, Copy, PartialEq)]
@@ -63,6 +63,12 @@ const PATTERNS: &[Pattern] = &[
     pattern("shift-clamped", 5, Place::Floating, power::shift_clamped),
     pattern("shift-mirror", 4, Place::Floating, power::shift_mirror),
     pattern("bridge", 4, Place::Floating, power::bridge),
+    pattern("degenerated", 7, Place::Any, limited::degenerated),
+    pattern("degenerated-floating", 6, Place::Floating, limited::degenerated),
+    pattern("opposed", 6, Place::Any, limited::opposed),
+    pattern("sink", 8, Place::Any, limited::sink),
+    pattern("fed", 4, Place::Solid, limited::fed),
+    pattern("lopsided", 4, Place::Any, limited::lopsided),
     pattern("stray-resistor", 4, Place::Any, stray_resistor),
     pattern("stray-diode", 3, Place::Any, stray_diode),
     pattern("stray-mos", 5, Place::Any, stray_mos),

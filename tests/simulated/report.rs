@@ -22,6 +22,8 @@ pub(crate) fn total(parts: impl Iterator<Item = Figures>) -> Figures {
         sum.escapes.extend(p.escapes);
         sum.widths.extend(p.widths);
         sum.naive.extend(p.naive);
+        sum.capped += p.capped;
+        sum.narrowed.extend(p.narrowed);
         sum.trouble.extend(p.trouble);
     }
     sum
@@ -50,6 +52,14 @@ pub(crate) fn print(f: &Figures) -> f64 {
     let of = |list: &[(&str, f64)]| compare::median(&mut list.iter().map(|w| w.1).collect::<Vec<_>>());
     println!("width over simulated width, median: {:.2} of {} nets", of(&f.widths), f.widths.len());
     println!("  (from supply to supply it would be {:.2} of {} nets)", of(&f.naive), f.naive.len());
+    let half = |of: fn(&(f64, f64)) -> f64| compare::median(&mut f.narrowed.iter().map(of).collect::<Vec<_>>());
+    println!("nets that currents cap: {}", f.capped);
+    println!(
+        "  their width over simulated width, median of {}: {:.2} with the caps, {:.2} without",
+        f.narrowed.len(),
+        half(|w| w.0),
+        half(|w| w.1)
+    );
     by_pattern(f);
     of(&f.widths)
 }
@@ -157,7 +167,7 @@ mod tests {
             assert!((5..=60).contains(&b.devices), "circuit {seed}: {} devices", b.devices);
             kinds.extend(b.nets.iter().map(|n| n.kind));
         }
-        assert_eq!(kinds.len(), 35, "{kinds:?}");
+        assert_eq!(kinds.len(), 41, "{kinds:?}");
     }
 
     #[test]

@@ -9,10 +9,10 @@ use std::fmt::Write as _;
 /// The deck's classes. Their models are `n5_s`, `n5_f` and so on: a slow and a fast corner inside one threshold range.
 const CLASSES: &str = "\
 classes:
-  n5: {kind: nmos, models: ['n5_*'], pins: [d, g, s, b], threshold: 0.6V..0.9V, size: {unit: um, width: w, length: l}}
-  p5: {kind: pmos, models: ['p5_*'], pins: [d, g, s, b], threshold: 0.6V..1.0V, size: {unit: um, width: w, length: l}}
-  n60: {kind: nmos, models: ['n60_*'], pins: [d, g, s, b], threshold: 0.7V..1.1V, high_voltage: true, size: {unit: um, width: w, length: l}}
-  p60: {kind: pmos, models: ['p60_*'], pins: [d, g, s, b], threshold: 0.7V..1.2V, high_voltage: true, size: {unit: um, width: w, length: l}}
+  n5: {kind: nmos, models: ['n5_*'], pins: [d, g, s, b], threshold: 0.6V..0.9V, size: {width: w, length: l}}
+  p5: {kind: pmos, models: ['p5_*'], pins: [d, g, s, b], threshold: 0.6V..1.0V, size: {width: w, length: l}}
+  n60: {kind: nmos, models: ['n60_*'], pins: [d, g, s, b], threshold: 0.7V..1.1V, high_voltage: true, size: {width: w, length: l}}
+  p60: {kind: pmos, models: ['p60_*'], pins: [d, g, s, b], threshold: 0.7V..1.2V, high_voltage: true, size: {width: w, length: l}}
   zg5: {kind: diode, models: [zg5], pins: [a, k], clamp: -0.9V..5.5V}
   dj: {kind: diode, models: [dj], pins: [a, k]}
   rpoly: {kind: resistor, models: [rpoly], pins: [a, b]}
