@@ -15,7 +15,7 @@ use crate::report::text::Look;
 use crate::report::{Setting, github, gitlab, json, markdown, sarif, short, text};
 use crate::source::SourceMap;
 use crate::waiver::{Date, read_date};
-use crate::{init, reference, survey, tracing};
+use crate::{init, reference, serve, survey, tracing};
 use clap::{Args, CommandFactory, Parser, Subcommand, ValueEnum};
 use clap_complete::Shell;
 use output::Output;
@@ -61,6 +61,8 @@ enum Command {
     },
     /// Prints the manual page
     Manual(Page),
+    /// Talks to an editor: a language server on standard input and output
+    Serve,
 }
 
 #[derive(Debug, Args)]
@@ -261,6 +263,7 @@ pub fn run() -> u8 {
         Command::Schema(page) => run_schema(&page),
         Command::Completions { shell, page } => print(&page, &completions(shell)),
         Command::Manual(page) => manual().and_then(|text| print(&page, &text)),
+        Command::Serve => serve::serve(io::stdin(), &mut io::stdout().lock()),
     };
     match result {
         Ok(code) => code,

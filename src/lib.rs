@@ -5,9 +5,10 @@
 //! rules; [`report`] writes finished diagnostics for people and machines, after [`waiver`] has marked those that someone
 //! accepted. Decks declare classes, rails and rules ([`declared`]); netlists say what is connected ([`netlist`]), read by [`load`]
 //! and elaborated by [`design`] into a hierarchy whose surroundings [`graph`] tells apart. [`reach`] works out which voltages each
-//! net can have, [`roles`] what each transistor does in its circuit, [`current`] what flows through it. Rules ask all of that through [`facts`], and stand in decks ([`deck`], [`catalogue`]); [`engine`] asks them.
-//! [`pipeline`] is the whole program as one function; [`changed`], [`survey`], [`tracing`], [`init`] and [`reference`] are what the other
-//! commands show, [`cli`] the command line.
+//! net can have, [`roles`] what each transistor does in its circuit, [`current`] what flows through it. Rules ask all of that
+//! through [`facts`], and stand in decks ([`deck`], [`catalogue`]); [`engine`] asks them. [`pipeline`] is the whole program as one
+//! function; [`changed`], [`survey`], [`tracing`], [`init`] and [`reference`] are what the other commands show, [`serve`] talks to
+//! editors, [`cli`] is the command line.
 //!
 //! A module may only use modules above it in this list; `tests/layers.rs` holds the floors.
 #![warn(missing_docs)]
@@ -52,5 +53,7 @@ pub mod init;
 pub mod reference;
 pub mod survey;
 pub mod tracing;
+
+pub mod serve;
 
 pub mod cli;

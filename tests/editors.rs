@@ -5,7 +5,8 @@ use std::fs;
 use std::path::Path;
 use std::process::{Command, Output};
 
-const COMMANDS: [&str; 9] = ["lint", "trace", "survey", "rules", "init", "deck", "schema", "completions", "manual"];
+const COMMANDS: [&str; 10] =
+    ["lint", "trace", "survey", "rules", "init", "deck", "schema", "completions", "manual", "serve"];
 
 fn drainwise(arguments: &[&str], folder: &Path) -> Output {
     Command::new(env!("CARGO_BIN_EXE_drainwise")).args(arguments).current_dir(folder).output().unwrap()

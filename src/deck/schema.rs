@@ -4,7 +4,7 @@
 //! say (nets, pins and names in expressions) is left to the checker.
 
 use super::builtin_names;
-use super::keys::{DECK, Holds, Key, Named, SECTIONS, Section};
+use super::keys::{DECK, Holds, Key, Named, SECTIONS, Section, Wanted};
 use crate::declared::Rule;
 use crate::quantity::Dim;
 use serde_json::{Map, Value, json};
@@ -86,22 +86,29 @@ fn of_value(holds: Holds, rules: &[Rule]) -> Value {
             "items": {"type": ["string", "number", "boolean", "null"]},
         }),
         Holds::Truth => json!({"enum": [true, false, "true", "false", null]}),
-        Holds::Count => json!({"type": ["integer", "string", "null"], "minimum": 1, "pattern": r"^\+?0*[1-9]\d*$"}),
-        Holds::Unit => json!({"type": ["string", "null"], "pattern": r"m\s*$"}),
-        Holds::Day => json!({"type": ["string", "null"], "pattern": r"^\d{4}-\d{2}-\d{2}$"}),
+        Holds::Count => written(
+            json!({"type": ["integer", "string", "null"], "minimum": 1}),
+            r"^\+?0*[1-9]\d*$",
+            "a whole number from 1",
+        ),
+        Holds::Unit => written(json!({"type": ["string", "null"]}), r"m\s*$", "um, nm or m"),
+        Holds::Day => written(json!({"type": ["string", "null"]}), r"^\d{4}-\d{2}-\d{2}$", "a day as 2027-03-01"),
         Holds::Word(words) => {
             let words: Vec<Value> = words().into_iter().map(Value::from).chain([Value::Null]).collect();
             json!({"enum": words})
         }
-        Holds::Quantity(wanted) if wanted.dim == Dim::NONE => json!({
-            "type": ["string", "number", "null"],
-            "exclusiveMinimum": 0,
-            "pattern": format!(r"^\s*\+?{NUMBER}({UNIT})?\s*$"),
-        }),
-        Holds::Quantity(_) => json!({"type": ["string", "null"], "pattern": format!(r"^\s*\+?{NUMBER}{UNIT}$")}),
-        Holds::Range(_) => {
+        Holds::Quantity(wanted) if wanted.dim == Dim::NONE => {
+            let kinds = json!({"type": ["string", "number", "null"], "exclusiveMinimum": 0});
+            written(kinds, &format!(r"^\s*\+?{NUMBER}({UNIT})?\s*$"), &such_as(wanted))
+        }
+        Holds::Quantity(wanted) => {
+            written(json!({"type": ["string", "null"]}), &format!(r"^\s*\+?{NUMBER}{UNIT}$"), &such_as(wanted))
+        }
+        Holds::Range(wanted) => {
             let end = format!(r"\s*[+-]?{NUMBER}{UNIT}");
-            json!({"type": ["string", "null"], "pattern": format!(r"^({end}|{end}\s*\.\.({end})?|\s*\.\.{end})\s*$")})
+            let pattern = format!(r"^({end}|{end}\s*\.\.({end})?|\s*\.\.{end})\s*$");
+            let words = format!("{}, or a range `a..b` of two", such_as(wanted));
+            written(json!({"type": ["string", "null"]}), &pattern, &words)
         }
         // Of bare numbers, 0 alone is a voltage.
         Holds::Rail => json!({"type": ["string", "number", "boolean", "null"], "minimum": 0, "maximum": 0}),
@@ -113,6 +120,18 @@ fn of_value(holds: Holds, rules: &[Rule]) -> Value {
         }),
         Holds::Map(named, below) => of_map(named, of_value(*below, rules), rules),
     }
+}
+
+/// A scalar that is written in a certain way. That editors show words instead of the pattern is a convention of theirs.
+fn written(mut kinds: Value, pattern: &str, words: &str) -> Value {
+    kinds["pattern"] = pattern.into();
+    kinds["patternErrorMessage"] = format!("{words} is needed here").into();
+    kinds
+}
+
+/// A kind of quantity with an example.
+fn such_as(wanted: Wanted) -> String {
+    format!("{} such as {}", wanted.words, wanted.example)
 }
 
 fn of_map(named: Named, below: Value, rules: &[Rule]) -> Value {
