@@ -1,9 +1,13 @@
 //! Diode-connected devices.
 
 use super::{Net, Touch, Unit, Walker};
+use hashbrown::HashSet;
 
 /// How many devices may stand between a drain and its gate.
 const LONGEST_CHAIN: usize = 4;
+
+/// How many nets are looked at for one chain: the resistors of an extracted netlist make meshes.
+const MOST_NETS: usize = 64;
 
 /// **diode-connected**: the gate's net is the drain's; or it is reached from the drain through a chain of channels of the same polarity
 /// (each entered at its source), resistors or a follower (entered at its gate, its drain on a rail), none of whose inner
@@ -21,7 +25,8 @@ pub(super) fn diode_connected(walker: &mut Walker<'_>, unit: Unit) -> Option<Vec
         return None;
     }
     let mut ways: Vec<(Net, Vec<Unit>)> = vec![(mos.d, Vec::new())];
-    let mut seen = vec![mos.d];
+    let mut seen: HashSet<Net> = HashSet::new();
+    seen.insert(mos.d);
     while let Some((here, way)) = ways.pop() {
         for on in walker.each_on(here).iter() {
             if on.unit == unit || way.contains(&on.unit) {
@@ -33,9 +38,8 @@ pub(super) fn diode_connected(walker: &mut Walker<'_>, unit: Unit) -> Option<Vec
             if walker.same(next, mos.g) {
                 return Some(longer);
             }
-            let known = seen.iter().any(|&net| walker.same(net, next));
-            if longer.len() < LONGEST_CHAIN && !known && !walker.is_rail(next) {
-                seen.push(next);
+            let open = longer.len() < LONGEST_CHAIN && seen.len() < MOST_NETS && !walker.is_rail(next);
+            if open && seen.insert(next) {
                 ways.push((next, longer));
             }
         }

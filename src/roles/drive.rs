@@ -23,8 +23,9 @@ pub enum Use {
 /// process and temperature, signals come to a rail (common practice, no source).
 const STEADY: f64 = 0.5;
 
-/// How far drivers of drivers are followed.
+/// How far drivers of drivers are followed, and how many nets are looked at for one question.
 const DEEPEST: usize = 8;
+const MOST_NETS: usize = 64;
 
 impl Walker<'_> {
     /// What a net is used for.
@@ -103,7 +104,7 @@ impl Walker<'_> {
     fn driven_fully(&mut self, net: Net, depth: usize) -> bool {
         let net = if self.is_rail(net) { net } else { self.climb(net) };
         // On the way back to itself a net drives nothing; what was seen once for this question is not seen again.
-        if depth >= DEEPEST || self.undriven.contains(&net) {
+        if depth >= DEEPEST || self.undriven.len() >= MOST_NETS || self.undriven.contains(&net) {
             return false;
         }
         let found = self.once(

@@ -38,6 +38,9 @@ pub(super) fn of(n: bool, bit: Bits) -> Bits {
 /// How far a chain from a drain is followed inside one cell.
 const LONGEST: usize = 4;
 
+/// How many nets are looked at for one device.
+const MOST_NETS: usize = 64;
+
 /// The bits of all nets of all contexts.
 pub(super) struct Summary {
     all: Vec<Vec<Bits>>,
@@ -139,7 +142,11 @@ impl Summary {
             if self.of(at, net) & on == 0 || is_rail(roles, context, net) {
                 continue;
             }
-            if length == LONGEST || local.position(net).is_some() || local.pins.is_crowded(net) {
+            if length == LONGEST
+                || seen.len() > MOST_NETS
+                || local.position(net).is_some()
+                || local.pins.is_crowded(net)
+            {
                 return true;
             }
             for pin in local.pins.on(net) {

@@ -391,7 +391,8 @@ impl<'w> Walker<'w> {
 
     /// Whether two nets are one.
     pub fn same(&self, a: Net, b: Net) -> bool {
-        a == b || self.lift(a) == self.lift(b)
+        // What is one net outside is one inside as well: contexts tell joined ports apart.
+        if a.spot == b.spot { a.net == b.net } else { self.lift(a) == self.lift(b) }
     }
 
     /// Whether a net is a declared rail, ground, or held by a source to one.
