@@ -11,7 +11,7 @@ const MOST_NETS: usize = 64;
 
 /// **diode-connected**: the gate's net is the drain's; or it is reached from the drain through a chain of channels of the same polarity
 /// (each entered at its source), resistors or a follower (entered at its gate, its drain on a rail), none of whose inner
-/// nets is a rail. So the reference of a cascode, wide-swing or buffered mirror is found.
+/// nets is a rail or a port of the top. So the reference of a cascode, wide-swing or buffered mirror is found.
 ///
 /// Where a device that shares gate and source has its gate straight on its own drain, that one is meant and no other: in a
 /// Wilson mirror the input's drain too leads to the common gate, through the output's cascode.
@@ -21,7 +21,7 @@ pub(super) fn diode_connected(walker: &mut Walker<'_>, unit: Unit) -> Option<Vec
         return Some(Vec::new());
     }
     // A gate that nothing but gates and capacitors stand on is driven from elsewhere.
-    if walker.is_rail(mos.d) || straight_beside(walker, unit) {
+    if walker.is_rail(mos.d) || walker.leads_out(mos.d) || straight_beside(walker, unit) {
         return None;
     }
     let mut ways: Vec<(Net, Vec<Unit>)> = vec![(mos.d, Vec::new())];
@@ -38,7 +38,10 @@ pub(super) fn diode_connected(walker: &mut Walker<'_>, unit: Unit) -> Option<Vec
             if walker.same(next, mos.g) {
                 return Some(longer);
             }
-            let open = longer.len() < LONGEST_CHAIN && seen.len() < MOST_NETS && !walker.is_rail(next);
+            let open = longer.len() < LONGEST_CHAIN
+                && seen.len() < MOST_NETS
+                && !walker.is_rail(next)
+                && !walker.leads_out(next);
             if open && seen.insert(next) {
                 ways.push((next, longer));
             }

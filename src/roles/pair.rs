@@ -25,7 +25,8 @@ impl Pair {
 /// **pair**: devices of one polarity with their sources on one net that is no rail, in two groups of different gates and different drains,
 /// and the only other paths from that net lead to a current: a mirror output, a current source, a resistor to a rail, or a
 /// channel whose gate is a bias or a supply. So a multiplexer is no pair. The halves may differ in class: that is a mistake
-/// in a pair, not another circuit. One gate may be steady (a reference); two that both are make no pair.
+/// in a pair, not another circuit. A half whose gate is on the other's drain, or that is an inverter's lower device, makes none: several
+/// logic gates on a ground with a resistor look like that. One gate may be steady (a reference); two that both are make no pair.
 ///
 /// The left side is the one whose device was drawn first.
 pub(super) fn pair(walker: &mut Walker<'_>, unit: Unit) -> Option<Pair> {
@@ -59,6 +60,11 @@ pub(super) fn pair(walker: &mut Walker<'_>, unit: Unit) -> Option<Pair> {
     if tail.is_empty() || !apart {
         return None;
     }
+    let crossed = walker.same(*left_gate, *right_drain) || walker.same(*right_gate, *left_drain);
+    let logic = left.iter().chain(right).any(|&half| is_inverter(walker, half));
+    if crossed || logic {
+        return None;
+    }
     let steady = |walker: &mut Walker<'_>, gate: Net| matches!(walker.use_of(gate), Use::Supply | Use::Bias);
     if steady(walker, *left_gate) && steady(walker, *right_gate) {
         return None;
@@ -77,4 +83,11 @@ fn brings_a_current(walker: &mut Walker<'_>, unit: Unit, touch: Touch, net: Net,
         }
         _ => false,
     }
+}
+
+/// Whether a device of the other polarity shares gate and drain with it.
+fn is_inverter(walker: &mut Walker<'_>, unit: Unit) -> bool {
+    let Some(mos) = walker.mos(unit) else { return false };
+    let above = walker.units(mos.d, |touch| touch == Touch::Drain { n: !mos.n });
+    above.into_iter().any(|other| walker.mos(other).is_some_and(|other| walker.same(other.g, mos.g)))
 }

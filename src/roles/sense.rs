@@ -5,7 +5,8 @@ use super::{Mos, Role, Touch, Unit, Walker};
 /// How many times wider the measured device is at least (common practice, no source).
 const MANY: f64 = 10.0;
 
-/// **sense**: shares class, gate and one of drain and source with a device many times its width that is no mirror reference.
+/// **sense**: shares class, gate and one of drain and source (not both: that is a part of the same device) with a device many times
+/// its width that is no mirror reference.
 pub(super) fn sense(walker: &mut Walker<'_>, unit: Unit) -> Option<Vec<Unit>> {
     let mos = walker.working(unit)?;
     if super::drive::use_of_rail(walker, mos.g) == Some(super::Use::Supply) {
@@ -16,7 +17,10 @@ pub(super) fn sense(walker: &mut Walker<'_>, unit: Unit) -> Option<Vec<Unit>> {
     let at_source = super::mirror::widest(walker, &mos, class);
     let at_drain = widest_at_drain(walker, unit, &mos, class);
     let wide = |(other, width): (Unit, f64)| (other != unit && width >= own * MANY).then_some(other);
-    let found: Vec<Unit> = at_source.and_then(wide).into_iter().chain(at_drain.and_then(wide)).collect();
+    let found = at_source.and_then(wide).into_iter().chain(at_drain.and_then(wide));
+    let apart =
+        |other: &Unit| walker.mos(*other).is_some_and(|wide| walker.same(wide.d, mos.d) != walker.same(wide.s, mos.s));
+    let found: Vec<Unit> = found.filter(apart).collect();
     if found.is_empty() || walker.plays(unit, Role::MirrorOutput) || walker.plays(unit, Role::MirrorReference) {
         return None;
     }
