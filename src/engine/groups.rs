@@ -59,7 +59,7 @@ fn may_be(world: World<'_>, at: ReachIx, device: DeviceIx, subject: Subject) -> 
     let (context, n) = (world.reach.get(at).context, class.kind == Kind::Nmos);
     match subject {
         Subject::Mirror => net("g").is_some_and(|gate| world.roles.may_mirror(context, gate, n)),
-        _ => net("s").is_some_and(|source| world.roles.may_pair(context, source, n)),
+        _ => [net("s"), net("d")].into_iter().flatten().any(|source| world.roles.may_pair(context, source, n)),
     }
 }
 

@@ -258,13 +258,17 @@ impl Glance<'_> {
     /// A pair's source is no rail and bears a second one; a gain stage's drain is none and bears a load, its gate is none.
     fn is_amplifying(&self) -> Option<Truth> {
         let (d, g, s) = (self.net(self.shape.d)?, self.net(self.shape.g)?, self.net(self.shape.s)?);
+        let either = !self.shape.class.asymmetric && self.may_amplify(s, g, d);
+        (!either && !self.may_amplify(d, g, s)).then_some(Truth::No)
+    }
+
+    fn may_amplify(&self, d: NetIx, g: NetIx, s: NetIx) -> bool {
         let Cells { world, here, .. } = self.around;
         let (roles, at, n) = (world.roles, here.context, self.shape.class.kind == Kind::Nmos);
         let pair = !self.is_rail(s) && roles.may_pair(at, s, n);
         let held = self.modes().any(|mode| world.reach.is_rail(self.around.at, mode, s));
         let based = held || self.is_rail(s) || roles.may_resist(at, s);
-        let gain = based && !self.is_rail(d) && !self.is_rail(g) && roles.may_gain(at, d, n);
-        (!pair && !gain).then_some(Truth::No)
+        pair || based && !self.is_rail(d) && !self.is_rail(g) && roles.may_gain(at, d, n)
     }
 
     fn is_rail(&self, net: NetIx) -> bool {

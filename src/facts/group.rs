@@ -18,7 +18,7 @@ pub struct GroupView<'w> {
     evidence: RefCell<Evidence>,
 }
 
-/// A mirror's names for its devices: the output that stands for it, and its (first) reference.
+/// A mirror's names for its devices: the output that stands for it, and its reference (of several, one of another class goes first).
 pub const MIRROR: [&str; 2] = ["out", "ref"];
 
 /// A pair's names for its devices. The tail is left out where it is no device of a class.
@@ -29,8 +29,12 @@ impl<'w> GroupView<'w> {
     pub fn mirror(view: DeviceView<'w>) -> Result<GroupView<'w>, Box<DeviceView<'w>>> {
         let unit = view.unit();
         let mirror = view.walk().borrow_mut().mirror(unit);
-        let reference =
-            mirror.filter(|mirror| mirror.member == Member::Output).and_then(|m| m.references.first().copied());
+        let references = mirror.filter(|mirror| mirror.member == Member::Output).map(|mirror| mirror.references);
+        // Of several references the one that fits the output worst, and of those the first by its path, stands for all.
+        let reference = references.into_iter().flatten().min_by_key(|&reference| {
+            let walk = view.walk().borrow();
+            (walk.class(reference).is_some_and(|class| class.name == view.class.name), walk.unit_path(reference))
+        });
         match reference.and_then(|unit| view.beside(unit)) {
             Some(reference) => Ok(GroupView::of(vec![(MIRROR[0], view), (MIRROR[1], reference)])),
             None => Err(Box::new(view)),

@@ -14,6 +14,7 @@ mod back_to_back;
 mod cascode;
 mod diode;
 mod drive;
+mod ends;
 mod follower;
 mod gain;
 mod idle;

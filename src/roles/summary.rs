@@ -1,13 +1,14 @@
 //! What may stand on each net of each cell, above and below it, in a few bits: enough to leave most devices alone.
 //!
 //! Bits are gathered from the leaves up, then from the tops down, once for each context. They promise too much at times (a bit
-//! may come from one caller of several), never too little, but for symmetric devices that are drawn the wrong way round and whose
-//! body does not show it.
+//! may come from one caller of several), never too little. A symmetric device that works the other way round in one surroundings of
+//! several has the bits of both.
 
 use super::local::Roles;
 use crate::design::{DeviceIx, Element, NetIx, Template};
 use crate::graph::{Context, ContextIx, Mark, Pin};
 use crate::reach::Terminals;
+use hashbrown::HashSet;
 
 /// Bits of a net; those of p-channel devices stand [`P`] places higher than those of n-channel ones.
 pub(super) type Bits = u32;
@@ -51,10 +52,12 @@ impl Summary {
     pub(super) fn new(roles: &Roles<'_>) -> Summary {
         let contexts = roles.reach.contexts;
         let order = contexts.callees_first();
-        let own = contexts.indices().map(|at| own_bits(roles, at)).collect();
+        let turned = turned(roles);
+        let own = contexts.indices().map(|at| own_bits(roles, at, &turned)).collect();
         let mut summary = Summary { all: own };
         summary.spread(roles, &order);
-        let references: Vec<Vec<(NetIx, Bits)>> = contexts.indices().map(|at| summary.references(roles, at)).collect();
+        let references: Vec<Vec<(NetIx, Bits)>> =
+            contexts.indices().map(|at| summary.references(roles, at, &turned)).collect();
         for (at, found) in references.iter().enumerate() {
             for &(net, bit) in found {
                 summary.all[at][net.0 as usize] |= bit;
@@ -103,13 +106,17 @@ impl Summary {
     }
 
     /// The gates' nets of devices that may be diode-connected.
-    fn references(&self, roles: &Roles<'_>, at: ContextIx) -> Vec<(NetIx, Bits)> {
+    fn references(&self, roles: &Roles<'_>, at: ContextIx, turned: &Turned) -> Vec<(NetIx, Bits)> {
         let context = roles.reach.contexts.get(at);
         let template = roles.design().template(context.variant);
         let mut found = Vec::new();
         for device in template.devices() {
             let Some(mos) = mos(roles, context, template, device) else { continue };
             if mos.d == mos.s {
+                continue;
+            }
+            if turned.contains(&(at, device)) {
+                found.push((mos.g, of(mos.n, REFERENCE)));
                 continue;
             }
             let on = of(mos.n, SOURCE | FOLLOWER) | RESISTOR;
@@ -203,7 +210,44 @@ fn is_rail(roles: &Roles<'_>, context: &Context, net: NetIx) -> bool {
     marks.iter().any(|mark| matches!(mark, Mark::Rail(_)))
 }
 
-fn own_bits(roles: &Roles<'_>, at: ContextIx) -> Vec<Bits> {
+/// What only voltages tell, in some surroundings: devices that work the other way round than they are drawn, and such as have their drain on
+/// a net that something holds, and their source on none.
+#[derive(Default)]
+struct Turned {
+    devices: HashSet<(ContextIx, DeviceIx)>,
+    followers: HashSet<(ContextIx, DeviceIx)>,
+}
+
+impl Turned {
+    fn contains(&self, device: &(ContextIx, DeviceIx)) -> bool {
+        self.devices.contains(device)
+    }
+}
+
+fn turned(roles: &Roles<'_>) -> Turned {
+    let mut found = Turned::default();
+    for at in roles.reach.indices() {
+        let structure = roles.reach.get(at).context;
+        let context = roles.reach.contexts.get(structure);
+        let template = roles.design().template(context.variant);
+        for device in template.devices() {
+            let Some(mos) = mos(roles, context, template, device) else { continue };
+            if !is_rail(roles, context, mos.s)
+                && !is_rail(roles, context, mos.d)
+                && (0..roles.reach.modes.len()).any(|mode| roles.reach.is_rail(at, mode, mos.d))
+            {
+                found.followers.insert((structure, device));
+            }
+            let open = super::ends::drawn(roles, structure, context, device) == super::ends::Drawn::Open;
+            if open && super::ends::is_turned(roles, at, device) {
+                found.devices.insert((structure, device));
+            }
+        }
+    }
+    found
+}
+
+fn own_bits(roles: &Roles<'_>, at: ContextIx, turned: &Turned) -> Vec<Bits> {
     let context = roles.reach.contexts.get(at);
     let template = roles.design().template(context.variant);
     let mut bits = vec![0; template.nets.len()];
@@ -214,7 +258,13 @@ fn own_bits(roles: &Roles<'_>, at: ContextIx) -> Vec<Bits> {
             }
             add(&mut bits[mos.d.0 as usize], of(mos.n, DRAIN));
             add(&mut bits[mos.s.0 as usize], of(mos.n, SOURCE));
-            let follows = is_rail(roles, context, mos.d) && !is_rail(roles, context, mos.s);
+            let mut follows = is_rail(roles, context, mos.d) && !is_rail(roles, context, mos.s);
+            if turned.contains(&(at, device)) {
+                add(&mut bits[mos.s.0 as usize], of(mos.n, DRAIN));
+                add(&mut bits[mos.d.0 as usize], of(mos.n, SOURCE));
+                follows = true;
+            }
+            follows |= turned.followers.contains(&(at, device));
             add(&mut bits[mos.g.0 as usize], of(mos.n, if follows { GATE | FOLLOWER } else { GATE }));
             continue;
         }

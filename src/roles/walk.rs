@@ -8,7 +8,7 @@
 
 use super::local::{MOST_PINS, Roles};
 use super::{Role, Use};
-use crate::declared::{Class, Kind};
+use crate::declared::Class;
 use crate::design::{DeviceIx, Element, InstanceIx, NetIx, Sizes};
 use crate::graph::{Context, Mark, Pin};
 use crate::names::Sym;
@@ -519,39 +519,10 @@ impl<'w> Walker<'w> {
             return (true, false);
         }
         let class = self.class(unit);
-        let symmetric = class.is_none_or(|class| !class.asymmetric);
-        let turned =
-            symmetric && (self.is_drawn_backwards(unit, drain, source) || self.works_backwards(unit, drain, source));
+        let turned = super::ends::is_turned(self.ground, self.spot(unit.spot).at, unit.device);
         let depletion = class.and_then(|class| class.threshold).is_some_and(|threshold| threshold.lo < 0.0);
         let idle = !depletion && context.same(gate, if turned { drain } else { source });
         (idle, turned)
-    }
-
-    /// Whether a body stands on the drawn drain, and not on the drawn source: extracted netlists name the two in any order.
-    fn is_drawn_backwards(&self, unit: Unit, drain: NetIx, source: NetIx) -> bool {
-        let context = self.context(unit.spot);
-        let pins = self.ground.design().template(context.variant).device_pins(unit.device);
-        let at = self.ground.reach.get(self.spot(unit.spot).at).context;
-        let (_, Terminals::Mos { b: Some(b), .. }) = self.ground.element(at, unit.device) else { return false };
-        let body = pins[b as usize];
-        context.same(body, drain) && !context.same(body, source)
-    }
-
-    /// Whether the drawn drain of a device never stands on the far side of its source in any mode, and stands on the near one.
-    fn works_backwards(&self, unit: Unit, drain: NetIx, source: NetIx) -> bool {
-        let reach = self.ground.reach;
-        let at = self.spot(unit.spot).at;
-        let n = self.class(unit).is_none_or(|class| class.kind != Kind::Pmos);
-        let mut some = false;
-        for mode in 0..reach.modes.len() {
-            let drop = reach.between(at, mode, drain, source);
-            let drop = if n { drop } else { drop.negated() };
-            if drop.hi > 1e-6 {
-                return false;
-            }
-            some |= drop.lo < -1e-6;
-        }
-        some
     }
 
     /// The class of a device.
