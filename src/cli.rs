@@ -3,6 +3,7 @@
 //! 0: nothing at or above `--fail-on`; 1: findings; 2: the job could not be done. A closed pipe changes none of these.
 
 mod output;
+mod pages;
 mod progress;
 
 use crate::changed::{self, Task};
@@ -261,8 +262,8 @@ pub fn run() -> u8 {
         Command::Init(init) => run_init(init),
         Command::Deck(deck) => run_deck(&deck),
         Command::Schema(page) => run_schema(&page),
-        Command::Completions { shell, page } => print(&page, &completions(shell)),
-        Command::Manual(page) => manual().and_then(|text| print(&page, &text)),
+        Command::Completions { shell, page } => print(&page, &pages::completions(&mut Cli::command(), shell)),
+        Command::Manual(page) => pages::manual(Cli::command()).and_then(|text| print(&page, &text)),
         Command::Serve => serve::serve(io::stdin(), &mut io::stdout().lock()),
     };
     match result {
@@ -487,38 +488,4 @@ fn run_schema(page: &Page) -> io::Result<u8> {
     let own = Job { decks: vec!["builtin:ldmos".into()], ..Job::default() };
     let (deck, _) = pipeline::read_decks(&Disk, &own);
     print(page, schema::schema(&deck.rules).as_bytes())
-}
-
-fn completions(shell: Shell) -> Vec<u8> {
-    let mut text = Vec::new();
-    clap_complete::generate(shell, &mut Cli::command(), "drainwise", &mut text);
-    text
-}
-
-/// One page: the program, then each command with its options.
-fn manual() -> io::Result<Vec<u8>> {
-    let mut text = Vec::new();
-    let mut whole = Cli::command();
-    whole.build();
-    let page = clap_mangen::Man::new(whole.clone());
-    page.render_title(&mut text)?;
-    page.render_name_section(&mut text)?;
-    page.render_synopsis_section(&mut text)?;
-    for command in whole.get_subcommands().filter(|command| command.get_name() != "help") {
-        let mut part = Vec::new();
-        let page = clap_mangen::Man::new(command.clone());
-        page.render_synopsis_section(&mut part)?;
-        page.render_description_section(&mut part)?;
-        page.render_options_section(&mut part)?;
-        writeln!(text, ".SH \"DRAINWISE {}\"", command.get_name().to_uppercase())?;
-        for line in String::from_utf8_lossy(&part).lines() {
-            match line.strip_prefix(".SH ") {
-                Some(title) => writeln!(text, ".SS {title}")?,
-                None => writeln!(text, "{line}")?,
-            }
-        }
-    }
-    page.render_extra_section(&mut text)?;
-    page.render_version_section(&mut text)?;
-    Ok(text)
 }

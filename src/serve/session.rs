@@ -18,7 +18,8 @@ use std::path::{Path, PathBuf};
 use std::sync::mpsc::Sender;
 
 /// The usual endings of netlists.
-const ENDINGS: [&str; 12] = ["sp", "spi", "spice", "cir", "ckt", "net", "cdl", "lib", "sub", "subckt", "inc", "mod"];
+const ENDINGS: [&str; 14] =
+    ["sp", "spi", "spice", "cir", "ckt", "net", "cdl", "lib", "sub", "subckt", "ngspice", "hsp", "inc", "mod"];
 /// Languages that netlists are called by editors.
 const LANGUAGES: [&str; 3] = ["spice", "netlist", "cdl"];
 /// The name of decks that are found by themselves.
