@@ -3,10 +3,11 @@
 
 use crate::deck::{builtin_names, load_decks, schema};
 use crate::declared::Deck;
-use crate::design::{Element, Oddity};
+use crate::design::{Element, NetIx, Oddity};
 use crate::facts::{World, vocabulary::vocabulary};
 use crate::graph::PinTable;
 use crate::load::Files;
+use crate::netlist::tree::CellIx;
 use crate::pipeline::{self, Decks, Job, Outcome, Progress};
 use crate::reach::ReachIx;
 use crate::source::SourceMap;
@@ -122,13 +123,22 @@ fn classes(world: World<'_>, text: &mut String) {
         } else {
             usual_pins(kind, pins)
         };
-        let _ = writeln!(
-            text,
-            "  {}: {{kind: {kind}, pins: {names}}}   # {guess}; fill in high_voltage, size, ratings …",
-            quoted(name)
-        );
+        let lower = name.to_ascii_lowercase();
+        let high = matches!(kind, "nmos" | "pmos") && HIGH_VOLTAGE.iter().any(|word| lower.contains(word));
+        let (more, missing) = match high {
+            true => (", high_voltage: true, asymmetric: true", "size, ratings, threshold …"),
+            false => ("", "high_voltage, size, ratings …"),
+        };
+        let name = quoted(name);
+        let _ = writeln!(text, "  {name}: {{kind: {kind}, pins: {names}{more}}}   # {guess}; fill in {missing}");
     }
 }
+
+/// What models of drain-extended transistors are often called (common practice, no source).
+const HIGH_VOLTAGE: &[&str] = &["ldn", "ldp", "ldmos", "hvn", "hvp", "dmos"];
+
+/// What ground is often called, whatever stands before it (common practice, no source).
+const GROUNDS: &[&str] = &["gnd", "vss"];
 
 /// The number of terminals on the first card with this model.
 fn pins_of(world: World<'_>, model: crate::names::Sym) -> usize {
@@ -195,13 +205,22 @@ fn rails(world: World<'_>, text: &mut String) {
         let context = world.context(at);
         let template = world.design.template(context.variant);
         let pins = PinTable::new(template);
-        for net in template.boundary().map(|net| context.root(net)) {
+        // A flat netlist may name its pins in comments only.
+        let interface = world.design.tree.interface.iter().filter(|_| template.cell == Some(CellIx(0)));
+        let named = interface.filter_map(|pin| template.nets.iter().position(|&net| net == pin.name));
+        let named = named.map(|net| NetIx(net as u32));
+        for net in template.boundary().chain(named).map(|net| context.root(net)) {
             let name = world.design.net_name(template, net);
-            let line = format!(
-                "  # {}: 0V..5V   # fill in{}",
-                quoted(name),
-                if world.reach.carries(at, net) { "" } else { " (an input or output)" }
-            );
+            if (0..world.reach.modes.len()).any(|mode| world.reach.is_rail(at, mode, net)) {
+                // A source holds it: it needs no declaration.
+                continue;
+            }
+            let lower = name.to_ascii_lowercase();
+            let line = match (GROUNDS.iter().any(|word| lower.ends_with(word)), world.reach.carries(at, net)) {
+                (true, true) => format!("  {}: 0V   # a guess by its name", quoted(name)),
+                (_, true) => format!("  # {}: 0V..5V   # fill in", quoted(name)),
+                (_, false) => format!("  # {}: 0V..5V   # fill in (an input or output)", quoted(name)),
+            };
             if name != "0" && !lines.iter().any(|(_, other)| *other == line) {
                 lines.push((if world.reach.carries(at, net) { pins.count(net) + 1_000_000 } else { 0 }, line));
             }

@@ -6,7 +6,7 @@ use super::{Mos, Role, Touch, Unit, Walker};
 const MANY: f64 = 10.0;
 
 /// **sense**: shares class, gate and one of drain and source (not both: that is a part of the same device) with a device many times
-/// its width that is no mirror reference.
+/// its width that is no mirror reference. No member of a latch: its gate is not the measured device's alone.
 pub(super) fn sense(walker: &mut Walker<'_>, unit: Unit) -> Option<Vec<Unit>> {
     let mos = walker.working(unit)?;
     if super::drive::use_of_rail(walker, mos.g) == Some(super::Use::Supply) {
@@ -21,7 +21,8 @@ pub(super) fn sense(walker: &mut Walker<'_>, unit: Unit) -> Option<Vec<Unit>> {
     let apart =
         |other: &Unit| walker.mos(*other).is_some_and(|wide| walker.same(wide.d, mos.d) != walker.same(wide.s, mos.s));
     let found: Vec<Unit> = found.filter(apart).collect();
-    if found.is_empty() || walker.plays(unit, Role::MirrorOutput) || walker.plays(unit, Role::MirrorReference) {
+    let other = [Role::MirrorOutput, Role::MirrorReference, Role::Latch];
+    if found.is_empty() || other.into_iter().any(|role| walker.plays(unit, role)) {
         return None;
     }
     Some(found)
