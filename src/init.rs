@@ -217,7 +217,7 @@ fn rails(world: World<'_>, text: &mut String) {
             }
             let lower = name.to_ascii_lowercase();
             let line = match (GROUNDS.iter().any(|word| lower.ends_with(word)), world.reach.carries(at, net)) {
-                (true, true) => format!("  {}: 0V   # a guess by its name", quoted(name)),
+                (true, _) => format!("  {}: 0V   # a guess by its name", quoted(name)),
                 (_, true) => format!("  # {}: 0V..5V   # fill in", quoted(name)),
                 (_, false) => format!("  # {}: 0V..5V   # fill in (an input or output)", quoted(name)),
             };
